@@ -71,7 +71,7 @@ type Second struct {
 
 // Course is several strings under one key.
 type Course struct {
-	Strings int  // 1 to 3
+	Strings Span // 1 to 3, rounded
 	Cents   Span // from the lowest of them to the highest, 0 to 50
 }
 
