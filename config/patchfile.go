@@ -91,13 +91,12 @@ func (t table) tuning() Tuning {
 	sub, _ := t.sub("tuning")
 	sub.known()
 	sub.number("a4", &tuning.A4)
-	if cents := sub.list("cents"); cents != nil && copy(tuning.Cents[:], cents) < len(tuning.Cents) || len(cents) > len(tuning.Cents) {
+	cents, ok := sub.list("cents")
+	if ok && len(cents) != len(tuning.Cents) {
 		k, _ := sub.key("tuning.cents")
 		sub.bad("cents", fmt.Sprintf("%d numbers", len(cents)), k.Allowed(), "write twelve, C's first")
-	} else if cents == nil && sub.emptyList("cents") {
-		k, _ := sub.key("tuning.cents")
-		sub.bad("cents", "no numbers", k.Allowed(), "write twelve, C's first")
 	}
+	copy(tuning.Cents[:], cents)
 	return tuning
 }
 

@@ -87,7 +87,8 @@ func (t table) midi() MIDI {
 			sub.bad("inputs", quote(input), "parts of port names, or paths", "write [] for every keyboard")
 		}
 	}
-	for _, n := range sub.list("channels") {
+	channels, _ := sub.list("channels")
+	for _, n := range channels {
 		channel := int(n)
 		if slices.Contains(midi.Channels, channel) {
 			sub.bad("channels", fmt.Sprintf("%d twice", channel), "each channel once", "take one out")

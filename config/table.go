@@ -263,30 +263,31 @@ func (t table) span(name string, to *Span) {
 	}
 }
 
-// list reads a list of numbers, whole ones where the form says so.
-func (t table) list(name string) []float64 {
+// list reads a list of numbers, whole ones where the form says so; ok tells
+// that it is set.
+func (t table) list(name string) (numbers []float64, ok bool) {
 	v, k, ok := t.value(name)
 	if !ok {
-		return nil
+		return nil, false
 	}
 	list, ok := v.([]any)
 	if !ok {
 		t.wrong(k, v)
-		return nil
+		return nil, false
 	}
-	numbers := make([]float64, len(list))
+	numbers = make([]float64, len(list))
 	for i, one := range list {
 		n, ok := numeric(one)
 		if _, whole := one.(int64); !ok || k.Form == Wholes && !whole {
 			t.wrong(k, v)
-			return nil
+			return nil, false
 		}
 		if !t.within(k, one, n) {
-			return nil
+			return nil, false
 		}
 		numbers[i] = n
 	}
-	return numbers
+	return numbers, true
 }
 
 // text reads a Text or a Choice; ok tells that the value is set.
