@@ -192,13 +192,44 @@ func TestBodyAtItsEdges(t *testing.T) {
 			t.Errorf("%s: not the string alone", name)
 		}
 	}
-	long := compileBody(config.Body{Mix: 1, Impulse: stairwell(3, 8000)}, 8000)
-	left, right := make([]float32, 20000), make([]float32, 20000)
+}
+
+// An impulse response that is too long ends at 2 s, and without a click.
+func TestLongImpulseFades(t *testing.T) {
+	const rate, end = 8000, 16000
+	steady := &config.Sample{Rate: rate, Data: make([]float32, 3*rate)}
+	for i := range steady.Data {
+		steady.Data[i] = 1
+	}
+	left, right := make([]float32, end+rate), make([]float32, end+rate)
 	left[0] = 1
-	newBodyState(long).process(left, right)
-	for i, v := range left[16000:] {
-		if math.Abs(float64(v)) > 1e-9 {
-			t.Fatalf("a response of 3 s still sounds at frame %d; want an end at 2 s", 16000+i)
+	newBodyState(compileBody(config.Body{Mix: 1, Impulse: steady}, rate)).process(left, right)
+	full := math.Abs(float64(left[rate]))
+	for i, v := range left[1:] {
+		if step := math.Abs(float64(v - left[i])); step > 0.02*full {
+			t.Fatalf("frame %d: a step of %.3f of the whole; want at most 0.02", i+1, step/full)
+		}
+		if i+1 >= end && math.Abs(float64(v)) > 1e-9 {
+			t.Fatalf("frame %d: %v; want silence", i+1, v)
+		}
+	}
+}
+
+// A body's own loudness does not move the balance that mix sets.
+func TestMixIsOfEqualParts(t *testing.T) {
+	const mix = 0.3
+	soft, loud := config.Body{Mix: mix, Modes: lampRoom}, config.Body{Mix: mix}
+	for _, m := range lampRoom {
+		m.Level += 12
+		loud.Modes = append(loud.Modes, m)
+	}
+	a, b := compileBody(soft, 48000), compileBody(loud, 48000)
+	if math.Abs(a.direct/b.direct-1) > 1e-9 {
+		t.Errorf("12 dB more in every mode: the string alone goes from %v to %v; want no change", a.direct, b.direct)
+	}
+	for i := range a.modes {
+		if math.Abs(a.modes[i].gain/b.modes[i].gain-1) > 1e-9 {
+			t.Errorf("12 dB more in every mode: mode %d goes from %v to %v; want no change", i, a.modes[i].gain, b.modes[i].gain)
 		}
 	}
 }
