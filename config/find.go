@@ -170,7 +170,7 @@ func (p Place) read() ([]byte, error) {
 type errTooLarge struct{ limit int64 }
 
 func (e errTooLarge) Error() string {
-	return fmt.Sprintf("is larger than %d kB; this is probably another file", e.limit>>10)
+	return fmt.Sprintf("is larger than %d kB; check that it is the right one", e.limit>>10)
 }
 
 // readUpTo reads an ordinary file whole. The error does not name the file.

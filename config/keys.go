@@ -170,7 +170,9 @@ func (k Key) heading() string {
 }
 
 // plain writes a number as a player would.
-func plain(v float64) string { return strconv.FormatFloat(v, 'g', -1, 64) }
+func plain(v float64) string {
+	return strings.TrimPrefix(strconv.FormatFloat(v, 'g', -1, 64), "+")
+}
 
 // words lists quoted words with "or" before the last.
 func words(list []string) string {

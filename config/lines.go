@@ -34,7 +34,9 @@ func indexLines(text string) lineIndex {
 			return index
 		}
 		if first[0] == '[' && len(keys) > 0 {
-			table = header(keys[len(keys)-1], strings.HasPrefix(first, "[["), counts)
+			key := keys[len(keys)-1]
+			table = header(key, strings.HasPrefix(first, "[["), counts)
+			index.add(strings.Join(key, "."), i+1) // the array as a whole
 			index.add(table, i+1)
 			keys = nil
 		}

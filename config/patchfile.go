@@ -44,7 +44,7 @@ func (p Place) patch() (*Patch, error) {
 //
 // As LoadPatch.
 func ParsePatch(path string, text []byte) (*Patch, error) {
-	s := &source{path: path, keys: PatchKeys()}
+	s := &source{path: path, kind: "patch", keys: PatchKeys(), strange: RigKeys()}
 	top, ok := s.parse(text)
 	if !ok {
 		return nil, s.problems.err()
@@ -66,7 +66,7 @@ func ParsePatch(path string, text []byte) (*Patch, error) {
 	p.Body = top.body()
 	p.Controls = top.controls()
 	if len(s.problems) > 0 {
-		return nil, s.problems.sorted()
+		return nil, s.problems.sorted(path)
 	}
 	return p, nil
 }

@@ -65,10 +65,10 @@ func (ps Problems) err() error {
 	return ps
 }
 
-// sorted puts each file's problems in the order of their lines, the files in
-// the order in which they were met.
-func (ps Problems) sorted() Problems {
-	met := map[string]int{}
+// sorted puts each file's problems in the order of their lines, those of the
+// file itself first, then those of others in the order in which they were met.
+func (ps Problems) sorted(path string) Problems {
+	met := map[string]int{path: 0}
 	for _, p := range ps {
 		if _, ok := met[p.Path]; !ok {
 			met[p.Path] = len(met)

@@ -41,7 +41,7 @@ func LoadRig(name string) (*Rig, error) {
 //
 // As LoadRig.
 func ParseRig(path string, text []byte) (*Rig, error) {
-	s := &source{path: path, keys: RigKeys()}
+	s := &source{path: path, kind: "rig", keys: RigKeys(), strange: PatchKeys()}
 	top, ok := s.parse(text)
 	if !ok {
 		return nil, s.problems.err()
@@ -56,7 +56,7 @@ func ParseRig(path string, text []byte) (*Rig, error) {
 	r.MIDI = top.midi()
 	r.Set = top.set()
 	if len(s.problems) > 0 {
-		return nil, s.problems.sorted()
+		return nil, s.problems.sorted(path)
 	}
 	return r, nil
 }
@@ -117,6 +117,10 @@ func (t table) set() []*Patch {
 			sub.say("", `patch is missing; write patch = "name.toml"`)
 		}
 		if !sub.text("patch", &name) {
+			continue
+		}
+		if strings.TrimSpace(name) == "" {
+			sub.bad("patch", quote(name), "a patch's name", "write one, or take the [[set]] out")
 			continue
 		}
 		place, err := search.find(name)

@@ -103,7 +103,7 @@ func decodeSample(data []byte) (*Sample, error) {
 		return nil, errors.New("holds no sound; record it again")
 	}
 	if frames > longestSample*rate {
-		return nil, fmt.Errorf("lasts %.1f s; allowed is up to %d s; cut it", float64(frames)/float64(rate), longestSample)
+		return nil, fmt.Errorf("lasts too long; allowed is up to %d s; cut it", longestSample)
 	}
 	s := &Sample{Rate: rate, Data: make([]float32, frames)}
 	scale := 1 / float64(int64(1)<<(bits-1))

@@ -16,8 +16,10 @@ import (
 type source struct {
 	path     string
 	keys     []Key
-	lines    lineIndex
+	strange  []Key // of the other kind of file
+	kind     string
 	problems Problems
+	lines    lineIndex
 }
 
 // table is a table of a source. Its readers set what the file says and leave
@@ -38,7 +40,7 @@ func (s *source) parse(text []byte) (top table, ok bool) {
 	}
 	values := map[string]any{}
 	if _, err := toml.Decode(string(text), &values); err != nil {
-		s.syntax(err)
+		s.syntax(string(text), err)
 		return table{}, false
 	}
 	s.lines = indexLines(string(text))
@@ -62,23 +64,40 @@ func brokenLine(text []byte) int {
 }
 
 // syntax notes what the TOML library found.
-func (s *source) syntax(err error) {
+func (s *source) syntax(text string, err error) {
 	broken, ok := err.(toml.ParseError)
 	if !ok {
 		s.note(0, "", err.Error())
 		return
 	}
-	line, text := broken.Position.Line, strings.TrimSuffix(broken.Message, ".")
-	if name, ok := between(text, "Key '", "' has already been defined"); ok {
+	// The library's own line is the next one where a line ends too soon.
+	at := min(max(broken.Position.Start, 0), len(text))
+	line := 1 + strings.Count(text[:at], "\n")
+	found := strings.TrimSuffix(broken.Message, ".")
+	if name, ok := between(found, "Key '", "' has already been defined"); ok {
 		s.note(line, name, "stands here a second time; keep one of them")
 		return
 	}
-	if name, ok := between(text, "Key '", "' was already created"); ok {
+	if name, ok := between(found, "Key '", "' was already created"); ok {
 		s.note(line, name, "is one table above and a list of tables here; write all its headings alike, with one pair of brackets or two")
 		return
 	}
-	text = strings.ReplaceAll(text, `'\x00'`, "the line's end")
-	s.note(line, broken.LastKey, text+`; write key = value, with "quotes" round text and a point in numbers`)
+	found = strings.NewReplacer(`'\x00'`, "the file's end", `'\n'`, "the line's end").Replace(found)
+	do := `write key = value, with "quotes" round text and a point in numbers`
+	switch {
+	case strings.Contains(found, "NULL bytes"):
+		found, do = "not UTF-8 text", "save the file as UTF-8 in your editor"
+	case strings.Contains(found, "out of range for"):
+		found, _, _ = strings.Cut(found, " is out of range for")
+		found, do = "found "+found+", which is too large for any key", "write a smaller number"
+	case strings.Contains(found, "control characters"):
+		found, do = "holds a character that no keyboard types", "delete the line and write it again"
+	case strings.Contains(found, "to end table name") || strings.Contains(found, "end of table"):
+		do = "close the heading with as many brackets as it opens with"
+	case strings.Contains(found, "cannot contain newlines"):
+		found, do = "the text has no end on its line", "close it with a quote"
+	}
+	s.note(line, broken.LastKey, found+"; "+do)
 }
 
 // between is what stands after one text and before another.
@@ -380,6 +399,14 @@ func (t table) guess(name string) string {
 			return "did you mean " + k.heading() + "?"
 		}
 		return fmt.Sprintf("did you mean %q?", near)
+	}
+	for _, k := range t.strange {
+		if t.name == "" && k.Name == name && (k.Form == Table || k.Form == Array) {
+			return "this one is no " + t.kind + "'s; name a " + t.kind + " file here, or take the table out"
+		}
+	}
+	if k, ok := t.key(name); ok && k.Form == Table {
+		return "it is a table of its own: " + k.heading()
 	}
 	if len(elsewhere) > 0 {
 		headings := make([]string, len(elsewhere))
