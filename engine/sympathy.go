@@ -1,0 +1,227 @@
+package engine
+
+import "tautwire/voice"
+
+// sympathy is the sounding along of undamped strings: those of held keys, and
+// those of all the patch's keys while the damper pedal is down. Each is
+// driven by the bridge's motion less its own key's part, for what that does is the
+// played string's own sound. What they sound goes to the mix and never back to
+// the bridge, so no gain can make them unstable.
+//
+// It is bounded: one string a key, from lowestSympathy to highestSympathy, and those
+// that are silent on a bridge at rest are not computed.
+type sympathy struct {
+	strings [highestSympathy - lowestSympathy + 1]sympathetic
+	live    int // strings that are computed
+	held    [128]float32
+
+	bridge [voice.Grid]float32      // the motion of all played strings
+	own    [128][voice.Grid]float32 // each key's part in it
+	owned  [128]bool                // whether own holds anything
+	drive  [voice.Grid]float32
+	out    [voice.Grid]float32
+	peak   float32 // of the bridge since the last step
+	tuning [128]float64
+}
+
+const (
+	// The keys of a piano. Lower ones hardly speak through a bridge, higher ones
+	// have no dampers there.
+	lowestSympathy  = 21
+	highestSympathy = 108
+	// A bridge below this moves nothing that could be heard: -120 dBFS.
+	bridgeAtRest = 1e-6
+	// sympathySoftening is the part of the way that a damper goes per step of the grid
+	// in lifting off the bridge's motion, so that neither end of it clicks.
+	sympathySoftening = 0.1
+)
+
+// sympathetic is one key's string.
+type sympathetic struct {
+	voice        *voice.Voice
+	patch        *Compiled
+	live, fading bool
+	damp, cents  float64
+	from, to     float32 // coupling at the start and the end of the step
+	left, right  float32
+}
+
+func (s *sympathy) init(rate float64) {
+	for i := range s.strings {
+		s.strings[i].voice = voice.NewVoice(rate)
+	}
+	for key := range s.tuning {
+		s.tuning[key] = -1
+	}
+}
+
+func (s *sympathy) reset() {
+	for i := range s.strings {
+		s.strings[i].stop()
+	}
+	s.live, s.peak = 0, 0
+	clear(s.owned[:])
+}
+
+// silence fades all strings within 2 ms.
+func (s *sympathy) silence() {
+	for i := range s.strings {
+		s.strings[i].fade()
+	}
+}
+
+func (s *sympathy) needed(patch *Compiled) bool { return patch.resonance > 0 || s.live > 0 }
+
+// step wakes, damps and retires strings, on a multiple of voice.Grid.
+func (s *sympathy) step(channels *[16]channel, patch *Compiled, pan *panTable) {
+	if !s.needed(patch) {
+		return
+	}
+	pedal := 0.0
+	var held keySet
+	for i := range channels {
+		c := &channels[i]
+		pedal = max(pedal, c.damper)
+		for half := range held {
+			held[half] |= c.down[half] | c.caught[half]
+		}
+	}
+	moving := s.peak > bridgeAtRest
+	s.peak = 0
+	s.live = 0
+	for i := range s.strings {
+		key := uint8(lowestSympathy + i)
+		lifted := pedal
+		if held.has(key) {
+			lifted = 1
+		}
+		s.strings[i].step(key, lifted, moving, patch, pan)
+		if s.strings[i].live {
+			s.strings[i].tune(key, s.tuning[key])
+			s.live++
+		}
+	}
+}
+
+func (s *sympathetic) step(key uint8, lifted float64, moving bool, patch *Compiled, pan *panTable) {
+	own := &patch.keys[key]
+	if !s.live {
+		if lifted == 0 || !moving || own.coupling == 0 {
+			return
+		}
+		s.start(own, patch, pan)
+	}
+	s.from = s.to
+	if s.patch != patch {
+		s.fade()
+	}
+	if s.fading {
+		s.to = 0
+	} else {
+		s.to += sympathySoftening * (own.coupling*float32(lifted) - s.to)
+		if damp := (1 - lifted) * (1 - lifted); damp != s.damp {
+			s.damp = damp
+			s.voice.Damp(damp)
+		}
+	}
+	driven := moving && (lifted > 0 || s.to > own.coupling*1e-3)
+	if s.voice.Silent() && !driven || !sane(s.voice.Energy()) {
+		s.stop()
+	}
+}
+
+// start lays the string ready without a stroke.
+func (s *sympathetic) start(own *compiledKey, patch *Compiled, pan *panTable) {
+	s.voice.Reset()
+	s.voice.Strike(own.design, 0, 0)
+	s.voice.Damp(0)
+	s.patch, s.live, s.fading = patch, true, false
+	s.damp, s.cents, s.from, s.to = 0, 0, 0, 0
+	s.left, s.right = pan.gains(0.5 + own.pan)
+}
+
+func (s *sympathetic) fade() {
+	if s.live && !s.fading {
+		s.fading = true
+		s.voice.Fade()
+	}
+}
+
+func (s *sympathetic) stop() {
+	if s.live {
+		s.voice.Reset()
+	}
+	s.patch, s.live, s.fading = nil, false, false
+	s.from, s.to = 0, 0
+}
+
+func (s *sympathetic) tune(key uint8, tuning float64) {
+	cents := 0.0
+	if tuning >= 0 {
+		cents = 100 * (tuning - s.patch.keys[key].pitch)
+	}
+	if cents != s.cents {
+		s.cents = cents
+		s.voice.Tune(cents)
+	}
+}
+
+// hear adds a played string's part to the bridge.
+func (s *sympathy) hear(key uint8, out []float32, from, to float32, ramp []float32) {
+	own := s.own[key][:len(out)]
+	if !s.owned[key] {
+		s.owned[key] = true
+		clear(own)
+	}
+	bridge := s.bridge[:len(out)]
+	ramp = ramp[:len(out)]
+	step := to - from
+	for i, y := range out {
+		part := float32(y * (from + float32(step*ramp[i])))
+		own[i] += part
+		bridge[i] += part
+	}
+}
+
+// add sounds the strings along for n frames and adds them to the mix.
+func (s *sympathy) add(left, right, ramp []float32) {
+	n := len(left)
+	bridge := s.bridge[:n]
+	for _, x := range bridge {
+		s.peak = max(s.peak, abs(x))
+	}
+	if s.live > 0 {
+		for i := range s.strings {
+			if s.strings[i].live {
+				s.add1(&s.strings[i], lowestSympathy+i, left, right, ramp)
+			}
+		}
+	}
+	clear(bridge)
+	clear(s.owned[:])
+}
+
+func (s *sympathy) add1(string *sympathetic, key int, left, right, ramp []float32) {
+	n := len(left)
+	bridge, drive, out := s.bridge[:n], s.drive[:n], s.out[:n]
+	right, ramp = right[:n], ramp[:n]
+	step := string.to - string.from
+	if s.owned[key] {
+		own := s.own[key][:n]
+		for i, x := range bridge {
+			drive[i] = (x - own[i]) * (string.from + float32(step*ramp[i]))
+		}
+	} else {
+		for i, x := range bridge {
+			drive[i] = x * (string.from + float32(step*ramp[i]))
+		}
+	}
+	string.voice.Render(out, drive)
+	for i, y := range out {
+		if !sane(float64(y)) {
+			continue
+		}
+		left[i] += float32(y * string.left)
+		right[i] += float32(y * string.right)
+	}
+}
