@@ -93,16 +93,29 @@ func NewPlayer(instrument Instrument, rate int) *Player {
 		stack:      make([]byte, panicStack),
 	}
 	p.reporter, _ = instrument.(Reporter)
-	p.Begin()
+	p.begin()
 	return p
 }
 
 // Begin forgets the times of the callbacks so far. The output's owner calls it before
 // each start of its stream.
 func (p *Player) Begin() {
+	p.enter()
+	defer p.busy.Store(false)
+	p.begin()
+}
+
+func (p *Player) begin() {
 	p.dll.Unlock()
 	p.last = 0
 	p.sinceSlow, p.sinceLate = xrunMemory, xrunMemory
+}
+
+// enter keeps the callback out, waiting for one that is inside. For owners only.
+func (p *Player) enter() {
+	for !p.busy.CompareAndSwap(false, true) {
+		runtime.Gosched()
+	}
 }
 
 // Period renders one period: it overwrites out, interleaved stereo. It allocates nothing
@@ -165,16 +178,18 @@ func (p *Player) Restart() {
 	if p.health.Load() != failed {
 		return
 	}
+	p.enter()
 	defer func() {
 		if reason := recover(); reason != nil {
 			p.keep(reason)
 			p.health.Store(silenced)
 		}
+		p.busy.Store(false)
 	}()
 	if r, ok := p.instrument.(Resetter); ok {
 		r.Reset()
 	}
-	p.Begin()
+	p.begin()
 	p.health.Store(well)
 }
 
