@@ -1,89 +1,313 @@
+// Package voice is the sound of one key: its strings, from the stroke to silence.
+//
+// A Maker compiles a Spec, physical units and all, into a Design; a Voice
+// strikes it and renders it. The package is pure arithmetic: no clock, no lock, no I/O, and no
+// allocation once a Voice is made.
+//
+// The string is the digital waveguide of Karplus and Strong, "Digital
+// Synthesis of Plucked-String and Drum Timbres", Computer Music Journal 7(2), 1983, as
+// extended by Jaffe and Smith in the same issue and by Välimäki, Huopaniemi,
+// Karjalainen, Jánosy, "Physical Modeling of Plucked String Instruments with Application to
+// Real-Time Sound Synthesis", JAES 44(5), 1996.
 package voice
 
 import "math"
 
-// Grid is the number of frames between control steps. Chunks given to Render
-// never cross a multiple of it, counted from the stream's start.
-const Grid = 32
+// maxLoops is a course of three strings in two polarizations each.
+const maxLoops = 6
 
-// Design is a Spec compiled for a rate; it never changes afterwards.
-type Design struct {
-	spec Spec
-	rate float64
-}
+// strokes is how many excitations of a string may overlap.
+const strokes = 2
 
-// NewDesign compiles spec for a sample rate in Hz.
-func NewDesign(spec Spec, rate float64) *Design { return &Design{spec: spec, rate: rate} }
-
-// Voice is one sounding key.
+// Voice is the strings of one key, sounding. It is used from one goroutine.
 type Voice struct {
-	line         []float32
-	w, m         int
-	gain, damp   float32
-	energy       float64
-	quiet, burst int
-	rnd          uint64
-	rate         float64
-	level        float32
-	d            *Design
-	fade         float32
-	fading       bool
+	maker *Maker
+	line  []float32
+
+	design  *Design
+	loops   [maxLoops]loop
+	strokes [maxLoops][strokes]stroke
+	fresh   bool // strung, and not yet rendered
+
+	phase int // frames of the present control step that are done
+
+	cents  float64 // from the design's pitch, asked for
+	palm   float64 // 0 to 1
+	dark   float64 // 0 to 1
+	energy float64
+	leak   float64 // of the energy, a frame
+
+	fading bool
+	fade   float32
+
+	e, y [Grid]float32
 }
 
-// NewVoice allocates a voice for a sample rate in Hz.
-func NewVoice(rate float64) *Voice {
-	return &Voice{line: make([]float32, 1<<16), rate: rate, quiet: 1 << 30, fade: 1}
+// NewVoice allocates a voice and all the memory that it will ever need: one
+// string sounds down to lowest (Hz), several share the same lines.
+func (m *Maker) NewVoice(lowest float64) *Voice {
+	return newVoice(m, int(2*m.rate/lowest)+16*Grid)
 }
 
+func newVoice(m *Maker, frames int) *Voice {
+	return &Voice{maker: m, line: make([]float32, frames)}
+}
+
+// Fit puts a design's strings on the voice, at rest and undamped, with no stroke.
+func (v *Voice) Fit(d *Design) {
+	v.design = d
+	slot := len(v.line) / len(d.strings)
+	for i, s := range d.strings {
+		v.loops[i].tune(d.modes[s.mode], v.maker.ip, v.line[i*slot:(i+1)*slot], d.pitch*octaves(s.cents))
+		for j := range v.strokes[i] {
+			v.strokes[i][j] = stroke{}
+		}
+	}
+	const hear = 0.02 // s
+	v.leak = 1 / (v.maker.rate * max(hear, 2/d.pitch))
+	v.fresh, v.phase, v.energy, v.fading, v.fade = true, 0, 0, false, 1
+	v.cents, v.palm, v.dark = 0, 0, 0
+}
+
+// Strike sets the strings going with a velocity above 0 to 127. A voice that
+// still sounds with the same design rings on, undamped, and the stroke adds to its
+// vibration; otherwise it is strung anew. The seed picks the noise of a burst.
 func (v *Voice) Strike(d *Design, velocity float64, seed uint64) {
-	v.d = d
-	v.m = int(math.Round(v.rate / d.spec.Frequency))
-	v.gain = float32(math.Pow(10, -3/(d.spec.Frequency*d.spec.Decay)))
-	v.burst, v.rnd, v.quiet, v.fading, v.fade, v.damp = v.m, seed|1, 0, false, 1, 1
-	v.level = float32(math.Pow(velocity/127, 2))
-}
-func (v *Voice) Tune(cents float64) {}
-func (v *Voice) Damp(amount float64) {
-	x := (1/v.d.spec.Release - 1/v.d.spec.Decay) * amount
-	v.damp = float32(math.Pow(10, -3*x/v.d.spec.Frequency))
-}
-func (v *Voice) Mute(amount float64)            {}
-func (v *Voice) Touch(node int, amount float64) {}
-func (v *Voice) Brighten(amount float64)        {}
-func (v *Voice) Fade()                          { v.fading = true }
-func (v *Voice) Energy() float64                { return v.energy }
-func (v *Voice) Silent() bool                   { return v.quiet > v.m+Grid }
-func (v *Voice) Reset() {
-	clear(v.line)
-	v.quiet, v.energy = 1<<30, 0
-}
-func (v *Voice) Render(out, drive []float32) {
-	const mask = 1<<16 - 1
-	for i := range out {
-		y := v.gain * v.damp * 0.5 * (v.line[(v.w-v.m)&mask] + v.line[(v.w-v.m-1)&mask])
-		if v.burst > 0 {
-			v.burst--
-			v.rnd = v.rnd*6364136223846793005 + 1442695040888963407
-			y += v.level * (float32(v.rnd>>40)/(1<<23) - 1) * 0.5
+	if v.design != d || v.Silent() {
+		v.Fit(d)
+	}
+	v.Damp(0)
+	for i := range d.strings {
+		l := &v.loops[i]
+		s := &v.strokes[i][0]
+		if other := &v.strokes[i][1]; !s.over() && (other.over() || other.frame > s.frame) {
+			s = other
 		}
-		if drive != nil {
-			y += drive[i]
+		// each plane and string has a noise of its own: shared, they would cancel
+		s.start(&d.shape, v.maker.ip, l.glide.aim, v.maker.rate, velocity, mix64(seed)+uint64(i)*0xd1342543de82ef95)
+	}
+	if d.shape.kind == Noise {
+		v.even(velocity)
+	}
+}
+
+// even gives a short burst of noise, whose peak is a matter of chance, the peak
+// that its velocity asks for.
+func (v *Voice) even(velocity float64) {
+	const short = 0.025 // s; in a longer burst chance evens out by itself
+	d := v.design
+	if d.shape.length > short {
+		return
+	}
+	frames := int(d.shape.length*v.maker.rate) + taps
+	var trial [maxLoops]stroke
+	for i := range d.strings {
+		trial[i] = *v.latest(i)
+	}
+	peak := 0.0
+	for range frames {
+		sum := 0.0
+		for i, s := range d.strings {
+			sum += float64(s.mix) * trial[i].next()
 		}
-		v.line[v.w&mask] = y
-		v.w++
-		if y > 1e-6 || y < -1e-6 {
-			v.quiet = 0
-		} else {
-			v.quiet++
-		}
-		if v.fading {
-			v.fade = max(0, v.fade-1/float32(0.002*v.rate))
-			y *= v.fade
-			if v.fade == 0 {
-				v.quiet = 1 << 30
+		peak = max(peak, math.Abs(sum))
+	}
+	if peak == 0 {
+		return
+	}
+	hard := velocity / 127
+	for i := range d.strings {
+		v.latest(i).gain = float32(fullLevel * hard * hard / peak)
+	}
+}
+
+// latest is the stroke of loop i that began last.
+func (v *Voice) latest(i int) *stroke {
+	a, b := &v.strokes[i][0], &v.strokes[i][1]
+	if a.shape == nil || (b.shape != nil && b.frame < a.frame) {
+		return b
+	}
+	return a
+}
+
+// Tune moves the strings to a pitch, cents from the design's own. A sounding
+// string glides there without a click; a string not yet heard is simply tuned. What the
+// line or the rate cannot hold is clamped, and sounds true at the clamp.
+func (v *Voice) Tune(cents float64) {
+	if v.design == nil {
+		return
+	}
+	v.cents = cents
+	v.retune()
+}
+
+// retune gives each string its pitch, with the tension of the present energy.
+func (v *Voice) retune() {
+	cents := v.cents
+	if d := v.design; d.tension > 0 && d.hardest > 0 {
+		cents += d.tension * min(1, v.energy/d.hardest)
+	}
+	for i, s := range v.design.strings {
+		l := &v.loops[i]
+		f0 := l.hold(v.design.pitch * octaves(cents+s.cents))
+		if v.fresh && f0 != l.glide.aim {
+			damped := l.damped
+			l.tune(l.mode, l.ip, l.line, f0)
+			l.damped = damped
+			for j := range v.strokes[i] {
+				if st := &v.strokes[i][j]; st.shape != nil {
+					st.echo = st.shape.position * v.maker.rate / f0
+				}
 			}
 		}
-		v.energy += (float64(y*y) - v.energy) * 1e-4
-		out[i] = y
+		l.glide.aim = f0
 	}
+}
+
+// Damp lays the damper on: 0 lets ring, 1 makes T60 the design's release, more
+// is faster in proportion. It takes hold over some 5 ms.
+func (v *Voice) Damp(amount float64) {
+	if v.design == nil {
+		return
+	}
+	for i := range v.design.strings {
+		v.loops[i].damped.aim = amount * v.design.release
+	}
+}
+
+// Mute lays the palm on the strings by the bridge, 0 to 1: short and dull.
+func (v *Voice) Mute(amount float64) {
+	v.palm = min(1, max(0, amount))
+	v.dullen()
+}
+
+// Darken takes the treble from the strings, 0 to 1, and leaves the fundamental its decay.
+func (v *Voice) Darken(amount float64) {
+	v.dark = min(1, max(0, amount))
+	v.dullen()
+}
+
+// dullen moves the strings' law towards the muted one's.
+func (v *Voice) dullen() {
+	if v.design == nil {
+		return
+	}
+	for i := range v.design.strings {
+		g := &v.loops[i].glide
+		g.palmAim, g.darkAim = v.palm, max(v.palm, v.dark)
+	}
+}
+
+// Touch lays a finger on the strings at 1/node of their length, node 2 to 8,
+// 0 to 1 firm: only the partials that rest there ring on, each at its decay.
+func (v *Voice) Touch(node int, amount float64) {
+	const firmest = 0.15 // of a partial in the middle of its swing, taken twice a trip
+	if v.design == nil {
+		return
+	}
+	for i := range v.design.strings {
+		d := &v.loops[i].damped
+		d.node, d.fingerAim = max(node, 2), min(1, max(0, amount))*firmest
+	}
+}
+
+// Fade brings the voice to silence over 2 ms, for another note to take it.
+func (v *Voice) Fade() { v.fading = true }
+
+// Reset takes the strings off: the voice is silent at once.
+func (v *Voice) Reset() { v.design, v.energy = nil, 0 }
+
+// Energy is the mean square of what the voice lately put out.
+func (v *Voice) Energy() float64 { return v.energy }
+
+// Render writes len(out) frames, mono. drive, nil or as long, is a force on
+// the bridge that the strings feel. What a call renders does not depend on how the
+// stream is cut into calls.
+func (v *Voice) Render(out, drive []float32) {
+	if v.design == nil {
+		clear(out)
+		return
+	}
+	v.fresh = false
+	for len(out) > 0 {
+		if v.phase == 0 {
+			v.control()
+		}
+		n := min(len(out), Grid-v.phase)
+		var d []float32
+		if drive != nil {
+			d, drive = drive[:n], drive[n:]
+		}
+		v.chunk(out[:n], d)
+		out = out[n:]
+		v.phase = (v.phase + n) % Grid
+	}
+}
+
+// control prepares the next Grid frames.
+func (v *Voice) control() {
+	if v.design.tension > 0 {
+		v.retune()
+	}
+	for i := range v.design.strings {
+		l := &v.loops[i]
+		l.control()
+		for j := range v.strokes[i] {
+			if s := &v.strokes[i][j]; !s.over() {
+				s.follow(l.glide.pitch)
+			}
+		}
+	}
+}
+
+// chunk renders frames that lie within one control step.
+func (v *Voice) chunk(out, drive []float32) {
+	clear(out)
+	y := v.y[:len(out)]
+	for i, s := range v.design.strings {
+		e := v.e[:len(out)]
+		clear(e)
+		copy(e, drive)
+		for j := range v.strokes[i] {
+			v.strokes[i][j].render(e)
+		}
+		v.loops[i].render(y, e)
+		for k, x := range y {
+			out[k] += float32(s.mix * x)
+		}
+	}
+	if v.fading {
+		v.fadeOut(out)
+	}
+	for _, x := range out {
+		v.energy += (float64(x)*float64(x) - v.energy) * v.leak
+	}
+}
+
+func (v *Voice) fadeOut(out []float32) {
+	const fadeTime = 0.002 // s
+	step := float32(1 / (fadeTime * v.maker.rate))
+	for i := range out {
+		v.fade = max(0, v.fade-step)
+		out[i] *= v.fade
+	}
+}
+
+// Silent says that the strings are below -120 dBFS with no stroke under way:
+// the voice may be used for another key.
+func (v *Voice) Silent() bool {
+	if v.design == nil || v.fading && v.fade <= 0 {
+		return true
+	}
+	for i := range v.design.strings {
+		if !v.loops[i].atRest() {
+			return false
+		}
+		for j := range v.strokes[i] {
+			if !v.strokes[i][j].over() {
+				return false
+			}
+		}
+	}
+	return true
 }

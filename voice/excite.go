@@ -1,0 +1,315 @@
+package voice
+
+import "math"
+
+// fullLevel is the peak of a note struck with velocity 127, -12 dBFS: room for
+// a chord before a limiter has to act.
+const fullLevel = 0.25
+
+// noiseRate is the rate (Hz) at which noise is made, whatever the output's
+// rate, so that one stroke has the same partials at every rate.
+const noiseRate = 48000
+
+// shape is an Excitation compiled for one key.
+type shape struct {
+	kind     Kind
+	position float64 // part of the string's length
+	length   float64 // s until the source has nothing more to give
+	width    float64 // s: standard deviation of a plucked corner, or a hammer's contact
+	open     float64 // Hz: the low-pass of the hardest stroke; 0 is none
+	touch    float64
+	cycle    []float32 // one period of a tone, with its first sample again at the end
+	pitch    float64   // Hz of a tone
+	sample   []float32
+	rate     float64 // Hz of the sample
+	gain     float64 // makes the hardest stroke fullLevel loud
+}
+
+// newShape compiles an excitation for a fundamental f0 (Hz).
+func newShape(x Excitation, f0 float64) shape {
+	s := shape{kind: x.Kind, position: min(max(x.Position, 0), 0.5), touch: x.Touch, gain: 1}
+	period := 1 / f0
+	switch x.Kind {
+	case Pluck:
+		s.width = least(0.0009*math.Pow(0.018, x.Hardness), 0.12*period)
+		s.length = 10 * s.width
+	case Strike:
+		s.width = least(0.005*math.Pow(0.05, x.Hardness), 0.9*period)
+		s.length = 2 * s.width
+	case Tone:
+		s.length = orPeriod(x.Length, period)
+		s.pitch = f0 * max(x.Ratio, 0.01)
+		s.cycle = newCycle(x.Wave, s.pitch)
+		s.open = openness(x.Hardness, f0)
+	case Sample:
+		s.sample, s.rate = x.Sample, x.SampleRate
+		s.length = float64(len(x.Sample)) / max(1, x.SampleRate)
+		s.open = openness(x.Hardness, f0)
+	default:
+		s.length = orPeriod(x.Length, period)
+		s.open = openness(x.Hardness, f0)
+	}
+	return s
+}
+
+func orPeriod(length, period float64) float64 {
+	if length <= 0 {
+		return period
+	}
+	return length
+}
+
+// least is a minimum without a corner.
+func least(a, b float64) float64 { return 1 / math.Sqrt(1/(a*a)+1/(b*b)) }
+
+// openness is the low-pass (Hz) of a burst: from felt to plectrum.
+func openness(hardness, f0 float64) float64 {
+	return max(500*math.Pow(44, hardness), 1.5*f0)
+}
+
+// newCycle is a period of a wave with no partial above 18 kHz when it sounds
+// at pitch (Hz).
+func newCycle(w Wave, pitch float64) []float32 {
+	const size = 2048
+	highest := min(max(int(18000/pitch), 1), size/8)
+	out := make([]float32, size+1)
+	for i := range out {
+		phase := 2 * math.Pi * float64(i) / size
+		var v float64
+		switch w {
+		case Triangle:
+			for n, sign := 1, 1.0; n <= highest; n, sign = n+2, -sign {
+				v += sign * 8 / (math.Pi * math.Pi) * math.Sin(float64(n)*phase) / float64(n*n)
+			}
+		case Saw:
+			for n := 1; n <= highest; n++ {
+				v += 2 / math.Pi * math.Sin(float64(n)*phase) / float64(n)
+			}
+		default:
+			v = math.Sin(phase)
+		}
+		out[i] = float32(v)
+	}
+	return out
+}
+
+// stroke is one excitation under way on one loop: the source's force at the
+// point of the stroke, and its echo from the bridge a part of the period
+// later, which takes out the partials that rest there.
+type stroke struct {
+	shape *shape
+	ip    *interpolator
+	rate  float64
+	frame int
+	last  int // the frame at which it is over
+	gain  float32
+	width float64 // s, as the velocity has it
+	echo  float64 // delay of the echo, samples
+	dEcho float64
+
+	now, back noiseCursor
+
+	low        bool
+	b, c1, c2  float64 // low-pass that opens with the velocity
+	y1, y2     float64
+	block, x1  float64 // a high-pass a fourth of the fundamental: no force on the string's mean
+	blocked    float64
+	blockScale float64
+}
+
+// start begins a stroke of a velocity (above 0 to 127) on a string at f0 (Hz).
+func (s *stroke) start(sh *shape, ip *interpolator, f0, rate, velocity float64, seed uint64) {
+	*s = stroke{shape: sh, ip: ip, rate: rate}
+	hard := min(1, max(0, velocity/127))
+	s.gain = float32(sh.gain * hard * hard) // 40 log10(v/127) dB: General MIDI 2
+	s.width = sh.width
+	if sh.kind == Strike {
+		s.width *= math.Pow(max(hard, 0.01), -0.25*sh.touch)
+	}
+	s.echo = sh.position * rate / f0
+	s.now, s.back = noiseCursor{seed: seed}, noiseCursor{seed: seed}
+	s.openLow(f0, hard)
+	const quarter = 0.25
+	s.block = math.Exp(-2 * math.Pi * quarter * f0 / rate)
+	s.blockScale = (1 + s.block) / 2
+	tail := 12 / (1 - s.block)
+	s.last = int((sh.length+s.width-sh.width)*rate + s.echo + tail + 1)
+}
+
+// openLow sets the low-pass that opens with the velocity: Jaffe and Smith's
+// dynamics filter (Computer Music Journal 7(2), 1983), with the fundamental's
+// level kept. One analog pole, as two digital ones that match its power at
+// three frequencies, so that it is the same at every rate.
+func (s *stroke) openLow(f0, hard float64) {
+	const octaves = 5 // from the hardest stroke to the softest, at full touch
+	const lightest = 20000
+	corner := s.shape.open
+	if corner == 0 {
+		corner = lightest
+	}
+	corner = max(corner*math.Exp2(-octaves*s.shape.touch*(1-hard)), f0)
+	if corner > 0.95*lightest {
+		return
+	}
+	xOf := func(f float64) float64 { return 1 - math.Cos(2*math.Pi*f/s.rate) }
+	fa, fb := min(corner, 5000), min(12000, 0.4*s.rate)
+	xa, xb := xOf(fa), xOf(fb)
+	ya, yb := fa*fa/(corner*corner), fb*fb/(corner*corner)
+	p2 := max(0, (yb/xb-ya/xa)/(xb-xa))
+	p1 := ya/xa - p2*xa
+	if p1 < 0 {
+		p1, p2 = ya/xa, 0
+	}
+	t := factor(1, p1, p2)
+	s.low, s.c1, s.c2 = true, t.c1, t.c2
+	s.b = (1 + t.c1 + t.c2) * math.Sqrt(1+f0*f0/(corner*corner))
+}
+
+// follow moves the echo with the string's pitch (Hz) over the next Grid frames.
+func (s *stroke) follow(f0 float64) {
+	s.dEcho = (s.shape.position*s.rate/f0 - s.echo) / Grid
+}
+
+func (s *stroke) over() bool { return s.shape == nil || s.frame >= s.last }
+
+// render adds len(e) frames of force to e.
+func (s *stroke) render(e []float32) {
+	if s.over() {
+		return
+	}
+	for i := range e {
+		e[i] += s.gain * float32(s.next())
+	}
+}
+
+func (s *stroke) next() float64 {
+	t := float64(s.frame)
+	x := s.source(t, &s.now)
+	if s.shape.position > 0 {
+		x -= s.source(t-s.echo, &s.back)
+	}
+	s.frame++
+	s.echo += s.dEcho
+	if s.low {
+		y := float64(s.b*x) - float64(s.c1*s.y1) - float64(s.c2*s.y2)
+		s.y2, s.y1 = s.y1, y
+		x = y
+	}
+	s.blocked = float64(s.block*s.blocked) + float64(s.blockScale*(x-s.x1))
+	s.x1 = x
+	return s.blocked
+}
+
+// source is the force t frames after the stroke; t need not be whole.
+func (s *stroke) source(t float64, cursor *noiseCursor) float64 {
+	sec := t / s.rate
+	if sec < 0 {
+		return 0
+	}
+	sh := s.shape
+	switch sh.kind {
+	case Pluck:
+		return corner((sec - 5*s.width) / s.width)
+	case Strike:
+		if sec >= 2*s.width {
+			return 0
+		}
+		return 0.5 - 0.5*math.Cos(math.Pi*sec/s.width)
+	case Sample:
+		return s.recorded(sec * sh.rate)
+	case Tone:
+		if sec >= sh.length {
+			return 0
+		}
+		return (1 - sec/sh.length) * sh.wave(sec)
+	default:
+		if sec >= sh.length {
+			return 0
+		}
+		return (1 - sec/sh.length) * cursor.at(sec*noiseRate, s.ip)
+	}
+}
+
+// corner is a step as a finger of Gaussian width leaves it: what is left when
+// the static force on a displaced string is let go.
+func corner(x float64) float64 {
+	switch {
+	case x < -5:
+		return 0
+	case x > 6:
+		return 1
+	}
+	return 0.5 * math.Erfc(-x/math.Sqrt2)
+}
+
+// wave is a tone's value, a time (s) after its start.
+func (s *shape) wave(sec float64) float64 {
+	turns := sec * s.pitch
+	p := (turns - math.Floor(turns)) * float64(len(s.cycle)-1)
+	i := min(int(p), len(s.cycle)-2)
+	a, b := float64(s.cycle[i]), float64(s.cycle[i+1])
+	return a + (p-float64(i))*(b-a)
+}
+
+// recorded is the sample at a place between its frames.
+func (s *stroke) recorded(place float64) float64 {
+	whole := int(place)
+	part := (place - float64(whole)) * rows
+	row := int(part)
+	h := &s.ip.table[row]
+	sum := float32(0)
+	for i, k := range h {
+		// a delay reads back, a place reads on: the taps are mirrored
+		if j := whole + i - center; j >= 0 && j < len(s.shape.sample) {
+			sum += float32(k * s.shape.sample[j])
+		}
+	}
+	return float64(sum)
+}
+
+// noiseCursor reads white noise at places that grow, though not by whole
+// steps. Sample k of a seed's noise is a hash of the two, so any place can be
+// read at any time: the echo needs no memory of what went before.
+type noiseCursor struct {
+	seed   uint64
+	whole  int
+	filled bool
+	window [taps]float32
+}
+
+func (c *noiseCursor) at(place float64, ip *interpolator) float64 {
+	whole := int(place)
+	switch {
+	case c.filled && whole == c.whole:
+	case c.filled && whole == c.whole+1:
+		copy(c.window[:], c.window[1:])
+		c.window[taps-1] = white(c.seed, whole+taps-1-center)
+	default:
+		for i := range c.window {
+			c.window[i] = white(c.seed, whole+i-center)
+		}
+	}
+	c.whole, c.filled = whole, true
+	row := int((place - float64(whole)) * rows)
+	h := &ip.table[row]
+	sum := float32(0)
+	for i, k := range h {
+		sum += float32(k * c.window[i])
+	}
+	return float64(sum)
+}
+
+// white is sample k of a seed's noise, even over -1 to 1: the finalizer of
+// Steele, Lea, Flood, "Fast Splittable Pseudorandom Number Generators", OOPSLA 2014.
+func white(seed uint64, k int) float32 {
+	if k < 0 {
+		return 0
+	}
+	return float32(int64(mix64(seed+uint64(k)*0x9e3779b97f4a7c15))>>40) / (1 << 23)
+}
+
+func mix64(z uint64) uint64 {
+	z = (z ^ z>>30) * 0xbf58476d1ce4e5b9
+	z = (z ^ z>>27) * 0x94d049bb133111eb
+	return z ^ z>>31
+}
