@@ -95,12 +95,17 @@ func oneLine(text string) string {
 
 // quote shows a text from a file, shortened where it is long.
 func quote(text string) string {
-	return `"` + oneLine(shorten(text)) + `"`
+	return `"` + oneLine(shorten(text, shownValue)) + `"`
 }
 
+// How much of a file's own words a message shows, in letters.
+const (
+	shownValue   = 60
+	shownProblem = 400
+)
+
 // shorten cuts a long text for a message.
-func shorten(text string) string {
-	const shown = 60
+func shorten(text string, shown int) string {
 	if r := []rune(text); len(r) > shown {
 		return string(r[:shown]) + "..."
 	}

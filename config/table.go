@@ -97,7 +97,7 @@ func (s *source) syntax(text string, err error) {
 	case strings.Contains(found, "cannot contain newlines"):
 		found, do = "the text has no end on its line", "close it with a quote"
 	}
-	s.note(line, broken.LastKey, found+"; "+do)
+	s.note(line, broken.LastKey, shorten(found, 2*shownValue)+"; "+do)
 }
 
 // between is what stands after one text and before another.
@@ -112,7 +112,12 @@ func between(text, before, after string) (string, bool) {
 
 // note keeps a problem.
 func (s *source) note(line int, key, text string) {
-	s.problems = append(s.problems, &Problem{Path: s.path, Line: line, Key: key, Text: text})
+	s.problems = append(s.problems, &Problem{
+		Path: s.path,
+		Line: line,
+		Key:  shorten(key, shownValue),
+		Text: shorten(text, shownProblem),
+	})
 }
 
 // key is what the format says of a name.
@@ -467,7 +472,7 @@ func describe(v any) string {
 			}
 			parts = append(parts, describe(one))
 		}
-		return shorten("[" + strings.Join(parts, ", ") + "]")
+		return shorten("[" + strings.Join(parts, ", ") + "]", shownValue)
 	}
 	return "something else"
 }
