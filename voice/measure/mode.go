@@ -1,6 +1,7 @@
 package measure
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 	"math/cmplx"
@@ -49,7 +50,8 @@ func Partial[S Sample](signal []S, rate, near, spacing float64) (Mode, error) {
 // order of frequency: the strings of a course, the two planes of a string. Two modes
 // that differ only in frequency should do so by a few tenths of a cycle over the signal or more.
 // The signal must hold at least three periods of bandwidth, and other partials should be
-// at least a bandwidth away.
+// at least a bandwidth away. A long signal narrows the band: what is more than 60 cycles over
+// the whole signal away from near is not seen.
 //
 // # Errors
 //
@@ -83,7 +85,7 @@ func find[S Sample](signal []S, rate, near, spacing, keep float64, count int) ([
 		if modes == nil {
 			continue
 		}
-		worst := slices.MaxFunc(modes, func(a, b Mode) int { return compare(a.Sigma, b.Sigma) }).Sigma
+		worst := slices.MaxFunc(modes, func(a, b Mode) int { return cmp.Compare(a.Sigma, b.Sigma) }).Sigma
 		if worst < least || best == nil {
 			best, least = modes, worst
 		}
@@ -92,16 +94,6 @@ func find[S Sample](signal []S, rate, near, spacing, keep float64, count int) ([
 		return nil, fmt.Errorf("measure: fewer than %d modes within %g Hz of %g Hz; is the signal silent, or another pitch?", count, spacing/2, near)
 	}
 	return best, nil
-}
-
-func compare(a, b float64) int {
-	switch {
-	case a < b:
-		return -1
-	case a > b:
-		return 1
-	}
-	return 0
 }
 
 // lengths proposes how much of the signal to look at: all of it, and, where the
@@ -142,12 +134,17 @@ func lengths[S Sample](signal []S, rate, near, spacing float64) []int {
 	return slices.Compact(n)
 }
 
+// longest signal, in window lengths, that inBand works on with a window as short
+// as the bandwidth asks.
+const longest = 16
+
 // inBand looks at the whole signal it is given; nil if it finds too few modes.
 func inBand[S Sample](signal []S, rate, near, spacing, keep float64, count int) []Mode {
 	length := len(signal) / 4
 	if keep > 0 {
-		// At 2 bins from the middle the window is 5 dB down.
-		length = min(length, int(4*rate/keep))
+		// The longest window that is little down at the edges, but no more
+		// points than can be worked on in a fraction of a second.
+		length = max(min(length, int(4*rate/keep)), len(signal)/longest)
 	}
 	b := newBand(signal, 2*math.Pi*near/rate, length)
 	f := fitModes(b.points)
@@ -171,21 +168,21 @@ func inBand[S Sample](signal []S, rate, near, spacing, keep float64, count int) 
 		all = append(all, found{Mode{
 			Frequency: hz,
 			T60:       -math.Log(1000) / (real(s) * rate),
-			Level:     20 * math.Log10(cmplx.Abs(a)),
+			Level:     dB(cmplx.Abs(a)),
 			Phase:     cmplx.Phase(a),
-			Residual:  20 * math.Log10(f.rest*math.Sqrt(float64(len(b.points))/energy)),
+			Residual:  dB(f.rest * math.Sqrt(float64(len(b.points))/energy)),
 			Sigma:     f.sigma[k] / perHz,
 		}, energy})
 	}
 	if len(all) < count {
 		return nil
 	}
-	slices.SortFunc(all, func(a, b found) int { return compare(b.energy, a.energy) })
+	slices.SortFunc(all, func(a, b found) int { return cmp.Compare(b.energy, a.energy) })
 	modes := make([]Mode, count)
 	for i := range modes {
 		modes[i] = all[i].Mode
 	}
-	slices.SortFunc(modes, func(a, b Mode) int { return compare(a.Frequency, b.Frequency) })
+	slices.SortFunc(modes, func(a, b Mode) int { return cmp.Compare(a.Frequency, b.Frequency) })
 	return modes
 }
 
