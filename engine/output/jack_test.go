@@ -5,9 +5,11 @@ import (
 	"math"
 	"os"
 	"os/exec"
+	"slices"
 	"strings"
 	"sync"
 	"sync/atomic"
+	"syscall"
 	"testing"
 	"time"
 
@@ -77,6 +79,7 @@ func eventually(t *testing.T, what string, met func() bool) {
 type jackServer struct {
 	name    string
 	command *exec.Cmd
+	log     string
 }
 
 func startJack(t *testing.T, rate, period int) *jackServer {
@@ -86,28 +89,45 @@ func startJack(t *testing.T, rate, period int) *jackServer {
 			t.Fatalf("%v: run the tests by make test, which installs the packages they need", err)
 		}
 	}
-	s := &jackServer{name: fmt.Sprintf("tautwire-%d-%s", os.Getpid(), strings.ToLower(t.Name()))}
+	s := &jackServer{
+		name: fmt.Sprintf("tautwire-%d-%d", os.Getpid(), engine.Now()%1e9),
+		log:  t.TempDir() + "/jackd.log",
+	}
 	t.Setenv("JACK_DEFAULT_SERVER", s.name)
 	s.start(t, rate, period)
-	t.Cleanup(s.kill)
+	t.Cleanup(func() { s.end(syscall.SIGTERM) })
 	return s
 }
 
 func (s *jackServer) start(t *testing.T, rate, period int) {
 	t.Helper()
+	log, err := os.Create(s.log)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer log.Close()
 	s.command = exec.Command("jackd", "-n", s.name, "-r", "-d", "dummy",
 		"-r", fmt.Sprint(rate), "-p", fmt.Sprint(period))
+	s.command.Stdout, s.command.Stderr = log, log
 	if err := s.command.Start(); err != nil {
 		t.Fatal(err)
 	}
-	eventually(t, "the JACK server starts", func() bool {
-		ports, _ := exec.Command("jack_lsp", "-s", s.name).Output()
-		return strings.Contains(string(ports), "system:playback_2")
-	})
+	deadline := time.Now().Add(20 * time.Second)
+	for {
+		ports, _ := exec.Command("jack_lsp", "-s", s.name).CombinedOutput()
+		if strings.Contains(string(ports), "system:playback_2") {
+			return
+		}
+		if time.Now().After(deadline) {
+			text, _ := os.ReadFile(s.log)
+			t.Fatalf("the JACK server does not start within 20 s; jack_lsp says\n%s\nand jackd\n%s", ports, text)
+		}
+		time.Sleep(50 * time.Millisecond)
+	}
 }
 
-func (s *jackServer) kill() {
-	s.command.Process.Kill()
+func (s *jackServer) end(signal os.Signal) {
+	s.command.Process.Signal(signal)
 	s.command.Wait()
 }
 
@@ -157,7 +177,7 @@ func TestJackPlaysAtTheServersRateAndPeriod(t *testing.T) {
 	if rate != 48000 {
 		t.Errorf("recorded at %d Hz", rate)
 	}
-	if hz := crossings(samples, rate); math.Abs(hz-1000) > 2 {
+	if hz := pitch(samples, rate); math.Abs(hz-1000) > 2 {
 		t.Errorf("JACK heard %.2f Hz, want 1000", hz)
 	}
 
@@ -174,10 +194,10 @@ func TestJackPlaysAtTheServersRateAndPeriod(t *testing.T) {
 		last = m.Start
 		window.Add(&m)
 	}
-	// The dummy driver sleeps by the clock; what it loses by waking late it does not
-	// always make up for, hence not below by much, and never above.
+	// The dummy driver sleeps by the clock. On a busy machine it wakes late and leaves
+	// periods out, so the rate may be below, and is never above.
 	measured := float64(frames-128) * 1e9 / float64(last-first)
-	if measured < 0.8*48000 || measured > 1.01*48000 {
+	if measured < 0.5*48000 || measured > 1.02*48000 {
 		t.Errorf("%.0f frames per second", measured)
 	}
 	t.Logf("%.1f frames/s, %d callbacks, render p50 %d ns, p99 %d ns, wake p99 %d us, xruns %v, scheduling %+v, latency %v",
@@ -203,7 +223,7 @@ func TestJackServerThatGoesIsWaitedFor(t *testing.T) {
 	}
 	eventually(t, "sound", func() bool { return instrument.frames.Load() > 4800 })
 
-	server.kill()
+	server.end(syscall.SIGTERM)
 	eventually(t, "the loss is told", func() bool { _, ok := told.find(Lost); return ok })
 	// The instrument goes on unheard.
 	before := instrument.frames.Load()
@@ -240,7 +260,7 @@ func TestJackStopsWhileItsServerIsGone(t *testing.T) {
 	if err := out.Start(); err != nil {
 		t.Fatal(err)
 	}
-	server.kill()
+	server.end(syscall.SIGKILL)
 	eventually(t, "the loss is told", func() bool { _, ok := told.find(Lost); return ok })
 	begin := time.Now()
 	if err := out.Stop(); err != nil {
@@ -276,18 +296,23 @@ func TestJackPanicIsFollowedByAFreshStart(t *testing.T) {
 	eventually(t, "sound again", func() bool { return instrument.frames.Load() > before+4800 })
 }
 
-// crossings tells the frequency of a tone by its rising zero crossings.
-func crossings(samples []float64, rate int) float64 {
-	var first, last float64
-	n := -1
+// pitch tells the frequency of a tone by the median time between its rising zero
+// crossings, which the gaps of a busy machine's xruns don't move.
+func pitch(samples []float64, rate int) float64 {
+	var times []float64
+	last := math.NaN()
 	for i := 1; i < len(samples); i++ {
 		if samples[i-1] < 0 && samples[i] >= 0 {
-			last = float64(i) - samples[i]/(samples[i]-samples[i-1])
-			if n < 0 {
-				first = last
+			at := float64(i) - samples[i]/(samples[i]-samples[i-1])
+			if !math.IsNaN(last) {
+				times = append(times, at-last)
 			}
-			n++
+			last = at
 		}
 	}
-	return float64(n) * float64(rate) / (last - first)
+	if len(times) == 0 {
+		return 0
+	}
+	slices.Sort(times)
+	return float64(rate) / times[len(times)/2]
 }
