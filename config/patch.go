@@ -1,3 +1,6 @@
+// Package config reads patch and rig files: TOML to checked values. It has the
+// built-in patches, too. PatchKeys and RigKeys say what each key is
+// and what a player hears; Problems is what is told of a file that is wrong.
 package config
 
 // Span is a number of a zone: its value at the zone's lowest key and at its

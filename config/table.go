@@ -472,7 +472,7 @@ func describe(v any) string {
 			}
 			parts = append(parts, describe(one))
 		}
-		return shorten("[" + strings.Join(parts, ", ") + "]", shownValue)
+		return shorten("["+strings.Join(parts, ", ")+"]", shownValue)
 	}
 	return "something else"
 }
