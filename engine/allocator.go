@@ -38,7 +38,7 @@ type slot struct {
 	energy float64 // at the last step of the grid, as heard
 
 	// What the voice was last told.
-	cents, damp, mute, node, bright float64
+	cents, damp, mute, node, dark float64
 
 	// Gains at the start of this step of the grid and at its end.
 	from, to gains
@@ -58,9 +58,12 @@ const (
 	// youth is how long a new note is not taken for a quiet one, s: its energy
 	// has yet to build up.
 	youth = 0.02
+	// lowestPlayed is how low a bend can bring a single string, Hz: the lowest key
+	// of a piano by four octaves.
+	lowestPlayed = 1.5
 )
 
-func newAllocator(rate float64, strings int) allocator {
+func newAllocator(maker *voice.Maker, strings int) allocator {
 	n := strings + spareStrings
 	a := allocator{
 		slots: make([]slot, n),
@@ -69,7 +72,7 @@ func newAllocator(rate float64, strings int) allocator {
 		limit: strings,
 	}
 	for i := range a.slots {
-		a.slots[i].voice = voice.NewVoice(rate)
+		a.slots[i].voice = maker.NewVoice(lowestPlayed)
 		a.free[i] = int16(n - 1 - i)
 	}
 	return a
@@ -209,7 +212,7 @@ func (s *slot) settle(patch *Compiled, channel, key uint8) {
 	unknown := math.NaN()
 	s.patch, s.design = patch, patch.keys[key].design
 	s.channel, s.key = channel, key
-	s.cents, s.damp, s.mute, s.node, s.bright = unknown, unknown, unknown, unknown, unknown
+	s.cents, s.damp, s.mute, s.node, s.dark = unknown, unknown, unknown, unknown, unknown
 }
 
 // leave makes the slot its key's string no longer.
@@ -249,9 +252,9 @@ func (s *slot) tell(channels *[16]channel, wave float64) {
 		s.node = c.node
 		s.voice.Touch(s.patch.controls.NodeAt, c.node)
 	}
-	if bright := max(-1, c.brightness-softBrightness*s.soft); bright != s.bright {
-		s.bright = bright
-		s.voice.Brighten(bright)
+	if dark := min(1, c.darkness+float64(softDarkness*s.soft)); dark != s.dark {
+		s.dark = dark
+		s.voice.Darken(dark)
 	}
 }
 

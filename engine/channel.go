@@ -26,9 +26,9 @@ const (
 	vibratoRate  = 5.5  // Hz
 	vibratoDepth = 50.0 // cents either way, at 127
 
-	// A soft pedal takes this part of the velocity, and this much brightness.
-	softVelocity   = 0.3
-	softBrightness = 0.4
+	// A soft pedal takes this part of the velocity, and adds this much darkness.
+	softVelocity = 0.3
+	softDarkness = 0.3
 )
 
 // channel is what one MIDI channel's controllers and keys say now.
@@ -44,15 +44,16 @@ type channel struct {
 	damper      float64 // 0 up to 1 down
 	sostenuto   bool
 	soft        float64 // 0 to 1
-	brightness  float64 // -1 to +1
+	darkness    float64 // 0 to 1
 	mute, node  float64 // 0 to 1
 
 	down   keySet // keys that are held
 	caught keySet // keys that the sostenuto pedal holds
 
 	keyPressure [128]float32 // 0 to 127
-	// lift is how firmly the damper falls on each key that was let go, 0 to 1.
-	lift [128]float32
+	// fall is how firmly the damper falls on each key that was let go: 1 is the
+	// patch's own release, 2 twice as fast.
+	fall [128]float32
 	// tuning is each key's pitch in semitones above key 0; negative is the patch's.
 	tuning [128]float32
 	// string is the slot that sounds each key, or none.
@@ -75,7 +76,7 @@ func (c *channel) init() {
 	for key := range c.string {
 		c.string[key] = none
 		c.tuning[key] = -1
-		c.lift[key] = 1
+		c.fall[key] = 1
 	}
 }
 
@@ -110,7 +111,7 @@ func (c *channel) control(number uint8, value float32, patch *Compiled) {
 	case controlSoft:
 		c.soft = float64(value) / fullValue
 	case controlBrightness:
-		c.brightness = min(1, (float64(value)-64)/63)
+		c.darkness = max(0, (64-float64(value))/64)
 	default:
 		c.gesture(int(number), float64(value)/fullValue, patch)
 	}
@@ -136,22 +137,23 @@ func (c *channel) setSostenuto(on bool) {
 	c.sostenuto = on
 }
 
-// release notes how a key was let go. A release velocity below 64 lets
-// the damper down less firmly; 0 is what keyboards send that do not measure it.
+// release notes how a key was let go. A release velocity of 64 is the patch's own
+// release, and so is 0, which keyboards send that do not measure it.
 func (c *channel) release(key uint8, velocity float32) {
 	c.down.remove(key)
-	c.lift[key] = 1
-	if velocity > 0 && velocity < 64 {
-		c.lift[key] = gentlestLift + (1-gentlestLift)*velocity/64
+	c.fall[key] = 1
+	if velocity > 0 {
+		c.fall[key] = gentlestFall + (1-gentlestFall)*min(velocity, fullValue)/64
 	}
 }
 
-const gentlestLift = 0.25
+// gentlestFall is how firmly the damper falls on a key that is let go very slowly.
+const gentlestFall = 0.25
 
 func (c *channel) releaseAll() {
 	c.down.clear()
-	for key := range c.lift {
-		c.lift[key] = 1
+	for key := range c.fall {
+		c.fall[key] = 1
 	}
 }
 
@@ -169,14 +171,14 @@ func (c *channel) reset() {
 // undamped reports whether the key itself or the sostenuto holds its damper up.
 func (c *channel) undamped(key uint8) bool { return c.down.has(key) || c.caught.has(key) }
 
-// damping is the amount of a key's damper that is on its string, 0 to 1. The pedal
-// lifts it by degrees; the square gives the felt's last touch more of the way.
+// damping is the amount of a key's damper that is on its string: 0 none, 1 the patch's
+// release. The pedal lifts it by degrees; the square gives the felt's last touch more of the way.
 func (c *channel) damping(key uint8) float64 {
 	if c.undamped(key) {
 		return 0
 	}
 	up := 1 - c.damper
-	return up * up * float64(c.lift[key])
+	return up * up * float64(c.fall[key])
 }
 
 // cents is the pitch of a key from the patch's own, without vibrato.

@@ -14,6 +14,7 @@ import (
 type Compiled struct {
 	title    string
 	rate     int
+	maker    *voice.Maker
 	keys     [128]compiledKey
 	controls config.Controls
 	body     *compiledBody // nil is the string alone
@@ -50,7 +51,13 @@ func Compile(p *config.Patch, rate int) (*Compiled, error) {
 	if rate < minRate || rate > maxRate {
 		return nil, fmt.Errorf("patch %s: sample rate %d Hz; allowed %d to %d", p.Path, rate, minRate, maxRate)
 	}
-	c := &Compiled{title: p.Title, rate: rate, controls: p.Controls, body: compileBody(p.Body, rate)}
+	c := &Compiled{
+		title:    p.Title,
+		rate:     rate,
+		maker:    voice.NewMaker(float64(rate)),
+		controls: p.Controls,
+		body:     compileBody(p.Body, rate),
+	}
 	if p.Resonance.On {
 		c.resonance = float32(amplitude(p.Resonance.Level))
 	}
@@ -60,7 +67,7 @@ func Compile(p *config.Patch, rate int) (*Compiled, error) {
 	for i := range p.Zones {
 		z := &p.Zones[i]
 		for key := max(z.Low, 0); key <= min(z.High, 127); key++ {
-			if err := c.keys[key].compile(p, z.At(key), rate); err != nil {
+			if err := c.keys[key].compile(p, z.At(key), c.maker); err != nil {
 				return nil, fmt.Errorf("patch %s: zone %d: %w", p.Path, i+1, err)
 			}
 			c.keys[key].coupling *= c.resonance
@@ -76,13 +83,13 @@ func (c *Compiled) Title() string { return c.title }
 // Rate is the sample rate in Hz that the patch was compiled for.
 func (c *Compiled) Rate() int { return c.rate }
 
-func (k *compiledKey) compile(p *config.Patch, v config.Values, rate int) error {
+func (k *compiledKey) compile(p *config.Patch, v config.Values, maker *voice.Maker) error {
 	frequency := p.Tuning.A4 * math.Exp2((k.pitch-69)/12)
 	spec, err := specOf(v, frequency)
 	if err != nil {
 		return err
 	}
-	k.design = voice.NewDesign(spec, float64(rate))
+	k.design = maker.Design(spec)
 	k.gain = float32(amplitude(p.Level + v.Level))
 	k.pan = v.Pan / 2
 	// One trip round the loop loses this part of the amplitude. Driven in tune for

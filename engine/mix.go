@@ -14,6 +14,8 @@ func (e *Engine) mix(n int) {
 	if !allSane(left) || !allSane(right) {
 		e.cure(n)
 		e.sum(left, right, ramp)
+		e.scrub(left)
+		e.scrub(right)
 	}
 	if e.sympathy.needed(e.stage.patch) {
 		e.resonate(left, right, ramp)
@@ -77,6 +79,16 @@ func (e *Engine) cure(n int) {
 	}
 }
 
+// scrub keeps from the body, which would never forget it, what is still no number.
+func (e *Engine) scrub(x []float32) {
+	for i, v := range x {
+		if v-v != 0 {
+			x[i] = 0
+			e.counts.cured.Add(1)
+		}
+	}
+}
+
 // insane is the amplitude beyond which a string has run away: +80 dBFS.
 const insane = 1e4
 
@@ -85,7 +97,7 @@ func sane(x float64) bool { return x < insane && x > -insane }
 
 func allSane(x []float32) bool {
 	for _, v := range x {
-		if !(v < insane && v > -insane) {
+		if !sane(float64(v)) {
 			return false
 		}
 	}

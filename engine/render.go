@@ -117,7 +117,7 @@ func New(c *Compiled, o Options) *Engine {
 		queue:     NewQueue(QueueLength),
 		dll:       NewDLL(rate),
 		stage:     &stage{patch: c, body: newBodyState(c.body)},
-		strings:   newAllocator(rate, o.Voices),
+		strings:   newAllocator(c.maker, o.Voices),
 		pan:       newPanTable(),
 		glideStep: glideCoefficient(rate, voice.Grid),
 		limiter:   newLimiter(rate),
@@ -128,7 +128,7 @@ func New(c *Compiled, o Options) *Engine {
 	for i := range e.channels {
 		e.channels[i].init()
 	}
-	e.sympathy.init(rate)
+	e.sympathy.init(c.maker)
 	e.vibrato.init(rate, voice.Grid)
 	e.meters.init(rate)
 	e.counts.program.Store(-1)

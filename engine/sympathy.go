@@ -29,6 +29,9 @@ const (
 	// have no dampers there.
 	lowestSympathy  = 21
 	highestSympathy = 108
+	// lowestDriven is how low a sympathetic string can sound, Hz; several of a
+	// course share the room.
+	lowestDriven = 6
 	// A bridge below this moves nothing that could be heard: -120 dBFS.
 	bridgeAtRest = 1e-6
 	// sympathySoftening is the part of the way that a damper goes per step of the grid
@@ -46,9 +49,9 @@ type sympathetic struct {
 	left, right  float32
 }
 
-func (s *sympathy) init(rate float64) {
+func (s *sympathy) init(maker *voice.Maker) {
 	for i := range s.strings {
-		s.strings[i].voice = voice.NewVoice(rate)
+		s.strings[i].voice = maker.NewVoice(lowestDriven)
 	}
 	for key := range s.tuning {
 		s.tuning[key] = -1
@@ -132,9 +135,7 @@ func (s *sympathetic) step(key uint8, lifted float64, moving bool, patch *Compil
 
 // start lays the string ready without a stroke.
 func (s *sympathetic) start(own *compiledKey, patch *Compiled, pan *panTable) {
-	s.voice.Reset()
-	s.voice.Strike(own.design, 0, 0)
-	s.voice.Damp(0)
+	s.voice.Fit(own.design)
 	s.patch, s.live, s.fading = patch, true, false
 	s.damp, s.cents, s.from, s.to = 0, 0, 0, 0
 	s.left, s.right = pan.gains(0.5 + own.pan)

@@ -177,8 +177,9 @@ func (s *stroke) render(e []float32) {
 	if s.over() {
 		return
 	}
-	for i := range e {
-		e[i] += s.gain * float32(s.next())
+	// not beyond its end, or how the stream is cut would be heard
+	for i := range e[:min(len(e), s.last-s.frame)] {
+		e[i] += float32(s.gain * float32(s.next()))
 	}
 }
 

@@ -129,11 +129,11 @@ func (l *loop) settle() {
 
 // keep is how many past samples a trip can reach.
 func (l *loop) keep() int {
+	// A finger in the middle reads half a trip further back. It may come at any
+	// time, and must find the same then however the stream has been cut.
+	const reach = 1.5
 	d := l.glide.s[2]
-	if l.damped.finger > 0 || l.damped.fingerAim > 0 {
-		d *= 1 + 1/float64(l.damped.node)
-	}
-	return int(d) + taps + 2*Grid
+	return int(reach*d) + taps + 2*Grid
 }
 
 // need is how much of the slot to use: enough that the line is seldom moved,
@@ -449,15 +449,13 @@ func (l *loop) slide() {
 
 // listen keeps account of how long the line has been silent.
 func (l *loop) listen(out []float32) {
-	loudest := float32(0)
 	for _, y := range out {
-		loudest = max(loudest, y, -y)
+		l.quiet++
+		if y > silence || y < -silence {
+			l.quiet = 0
+		}
 	}
-	if loudest > silence {
-		l.quiet = 0
-	} else if l.quiet < math.MaxInt32/2 {
-		l.quiet += len(out)
-	}
+	l.quiet = min(l.quiet, math.MaxInt32/2)
 }
 
 // atRest says that the whole line is below silence.
