@@ -30,8 +30,8 @@ func stairwell(seconds float64, rate int) *config.Sample {
 	return s
 }
 
-// bodies are of every kind, by name.
-func bodies(mix float64) map[string]config.Body {
+// testBodies are of every kind, by name.
+func testBodies(mix float64) map[string]config.Body {
 	return map[string]config.Body{
 		"modes":      {Mix: mix, Modes: lampRoom},
 		"long modes": {Mix: mix, Modes: []config.Mode{{Frequency: 150, T60: 5}, {Frequency: 440, T60: 3, Level: 6}, {Frequency: 2000, T60: 1}}},
@@ -116,7 +116,7 @@ func widen(x []float32) []float64 {
 }
 
 func TestBodyIsTheSameHoweverCut(t *testing.T) {
-	for name, b := range bodies(0.6) {
+	for name, b := range testBodies(0.6) {
 		c := compileBody(b, 48000)
 		wantLeft, wantRight := noiseFrames(30000, 8)
 		newBodyState(c).process(wantLeft, wantRight)
@@ -150,7 +150,7 @@ func TestMixIsEvenInLoudness(t *testing.T) {
 		}
 	}
 	for _, mix := range []float64{0.05, 0.25, 0.5, 0.75, 1} {
-		for name, b := range bodies(mix) {
+		for name, b := range testBodies(mix) {
 			if name == "long modes" {
 				continue // silent but at three frequencies: as loud as the keys that meet them
 			}
@@ -240,7 +240,7 @@ func TestMixIsOfEqualParts(t *testing.T) {
 func TestBodyIsStable(t *testing.T) {
 	const rate = 8000
 	tiny := float32(math.Ldexp(1, -126))
-	all := bodies(1)
+	all := testBodies(1)
 	all["opposed"] = config.Body{Mix: 0.5, Impulse: &config.Sample{Rate: rate, Data: []float32{-1}}}
 	for name, b := range all {
 		s := newBodyState(compileBody(b, rate))
@@ -275,7 +275,7 @@ func TestBodyIsStable(t *testing.T) {
 }
 
 func TestBodyAllocatesNothing(t *testing.T) {
-	for name, b := range bodies(0.5) {
+	for name, b := range testBodies(0.5) {
 		s := newBodyState(compileBody(b, 48000))
 		left, right := noiseFrames(1024, 8)
 		if n := testing.AllocsPerRun(8, func() { s.process(left, right) }); n != 0 {
