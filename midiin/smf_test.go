@@ -97,6 +97,13 @@ func shifts(t int64, by float32) (events []engine.Event) {
 	return events
 }
 
+// A file's sensing byte must not start a watch on the reader's own clock.
+func TestEscaped(t *testing.T) {
+	if got := escaped([]byte{0xFE, 0x90, 0xF8, 0x3C, 0x40, 0xFF}); string(got) != "\x90\x3C\x40" {
+		t.Errorf("kept % X", got)
+	}
+}
+
 // Nothing is rounded on the way: at 7 ticks to a beat a tick is no whole number of ns.
 func TestParseSMFAddsNoError(t *testing.T) {
 	track := strings.Repeat("01 90 3C 40 ", 7*1000) + "00 FF 2F 00"

@@ -79,6 +79,7 @@ func TestTranslate(t *testing.T) {
 		{"unknown RPN", "B0 65 00 64 7E 06 0C E0 00 60", []engine.Event{on(7, engine.Bend, 0, 2*halfUp)}},
 		{"increment and decrement: a cent", "B0 65 00 64 00 06 01 26 63 60 00 E0 00 00 B0 61 00", []engine.Event{
 			on(11, engine.Bend, 0, -2), on(14, engine.Bend, 0, -1.99)}},
+		{"decrement carries to 11 semitones and 99 cents", "B0 65 00 64 00 06 0C 61 00 E0 00 00", []engine.Event{on(9, engine.Bend, 0, -11.99)}},
 		{"decrement stops at 0", "B0 65 00 64 00 06 00 61 00 E0 00 00", []engine.Event{on(9, engine.Bend, 0, 0)}},
 
 		{"fine tuning", "B0 65 00 64 01 06 40 06 00 06 7F 26 7F", []engine.Event{
