@@ -108,7 +108,7 @@ func (b *bodyChange) process(body *bodyState, left, right, ramp []float32) {
 		body.process(left, right)
 		step := b.to - b.from
 		for i := range left {
-			new := b.from + float32(step*ramp[i])
+			new := ease(b.from + float32(step*ramp[i]))
 			left[i] = wasLeft[i] + float32(new*(left[i]-wasLeft[i]))
 			right[i] = wasRight[i] + float32(new*(right[i]-wasRight[i]))
 		}
@@ -120,14 +120,22 @@ func (b *bodyChange) process(body *bodyState, left, right, ramp []float32) {
 	}
 }
 
-// scale takes both sides by a gain that goes by step over the whole ramp.
+// scale takes both sides by a gain that is on its way, by step over the whole ramp.
 func scale(left, right, ramp []float32, gain, step float32) {
 	right, ramp = right[:len(left)], ramp[:len(left)]
 	for i := range left {
-		g := gain + float32(step*ramp[i])
+		g := ease(gain + float32(step*ramp[i]))
 		left[i] *= g
 		right[i] *= g
 	}
+}
+
+// ease makes a straight way from 0 to 1 one without corners, which would click: the least
+// polynomial whose first four derivatives are 0 at both ends.
+func ease(x float32) float32 {
+	x2 := float32(x * x)
+	p := 126 + float32(x*(-420+float32(x*(540+float32(x*(-315+float32(70*x)))))))
+	return float32(float32(float32(x2*x2)*x) * p)
 }
 
 // master is the loudness of the whole, and the fade at the end.
@@ -165,7 +173,14 @@ func (m *master) step(volume float32, coefficient float64) {
 func (m *master) still(delay int) bool { return m.silent > delay+voice.Grid }
 
 func (m *master) process(left, right, ramp []float32) {
-	if m.from != 1 || m.to != 1 {
-		scale(left, right, ramp, m.from, m.to-m.from)
+	if m.from == 1 && m.to == 1 {
+		return
+	}
+	right, ramp = right[:len(left)], ramp[:len(left)]
+	step := m.to - m.from
+	for i := range left {
+		g := m.from + float32(step*ramp[i])
+		left[i] *= g
+		right[i] *= g
 	}
 }

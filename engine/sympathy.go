@@ -118,16 +118,15 @@ func (s *sympathetic) step(key uint8, lifted float64, moving bool, patch *Compil
 	if s.patch != patch {
 		s.fade()
 	}
-	if s.fading {
-		s.to = 0
-	} else {
+	// A string that fades is driven on as it was: to stop that would click.
+	if !s.fading {
 		s.to += sympathySoftening * (own.coupling*float32(lifted) - s.to)
 		if damp := (1 - lifted) * (1 - lifted); damp != s.damp {
 			s.damp = damp
 			s.voice.Damp(damp)
 		}
 	}
-	driven := moving && (lifted > 0 || s.to > own.coupling*1e-3)
+	driven := moving && !s.fading && (lifted > 0 || s.to > own.coupling*1e-3)
 	if s.voice.Silent() && !driven || !sane(s.voice.Energy()) {
 		s.stop()
 	}

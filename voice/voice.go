@@ -289,8 +289,17 @@ func (v *Voice) fadeOut(out []float32) {
 	step := float32(1 / (fadeTime * v.maker.rate))
 	for i := range out {
 		v.fade = max(0, v.fade-step)
-		out[i] *= v.fade
+		out[i] *= ease(v.fade)
 	}
+}
+
+// ease makes a straight way from 0 to 1 one without corners: the least polynomial whose first
+// four derivatives are 0 at both ends. A straight fade of 2 ms clicks at -62 dB by
+// the test of measure.Click, this one at -125 dB.
+func ease(x float32) float32 {
+	x2 := float32(x * x)
+	p := 126 + float32(x*(-420+float32(x*(540+float32(x*(-315+float32(70*x)))))))
+	return float32(float32(float32(x2*x2)*x) * p)
 }
 
 // Silent says that the strings are below -120 dBFS with no stroke under way:
