@@ -135,6 +135,19 @@ func (p *process) endsWithin(d time.Duration) bool {
 	}
 }
 
+// stops sends SIGTERM, upon which the daemon ends well within a second.
+func (p *process) stops(t testing.TB) {
+	t.Helper()
+	begin := time.Now()
+	p.signal(syscall.SIGTERM)
+	if !p.endsWithin(10 * time.Second) {
+		t.Fatal("SIGTERM does not end it")
+	}
+	if took, code := time.Since(begin), p.exitCode(); took > time.Second || code != 0 {
+		t.Errorf("SIGTERM ended it after %v, with exit code %d", took, code)
+	}
+}
+
 func (p *process) exitCode() int {
 	<-p.ended
 	return p.cmd.ProcessState.ExitCode()

@@ -184,16 +184,18 @@ func (p *player) wire(system *output.System) error {
 		}
 		return err
 	}
-	if p.set, err = compile(p.rig.Set, p.choice.Rate); err != nil {
+	var first *engine.Compiled
+	if p.set, first, err = newSet(p.rig.Set, p.choice.Rate, p.changed); err != nil {
 		return err
 	}
 	timing := engine.Steady
 	if a.Timing == "eager" {
 		timing = engine.Eager
 	}
-	p.engine = engine.New(p.set.compiled[0], engine.Options{
+	p.engine = engine.New(first, engine.Options{
 		Rate: p.choice.Rate, Period: p.choice.Period, Timing: timing, Voices: a.Strings,
 	})
+	p.set.swap = p.engine.Swap
 	p.engine.SetVolume(a.Level)
 	p.player = engine.NewPlayer(p.engine, p.choice.Rate)
 	p.output = system.Open(p.choice, p.player, p.befell)
@@ -213,14 +215,18 @@ func (p *player) send(e engine.Event) bool {
 		}
 	}
 	if e.Kind == engine.Program {
-		begin := engine.Now()
-		taken := p.set.take(int(e.Value), p.engine)
-		select {
-		case p.changes <- change{int(e.Value), taken, engine.Now() - begin}:
-		default:
-		}
+		p.set.take(int(e.Value))
 	}
 	return p.engine.Send(e)
+}
+
+// changed has a Program Change told, by another goroutine than the one that
+// plays.
+func (p *player) changed(c change) {
+	select {
+	case p.changes <- c:
+	default:
+	}
 }
 
 // befell tells of what the output went through.
@@ -270,6 +276,11 @@ func (p *player) run(ctx context.Context, screen io.Writer, signals <-chan os.Si
 	loggers.Go(func() { gauge.run(logging) })
 	loggers.Go(func() { p.logEvents(logging) })
 	players.Go(func() { p.keys.run(listening, p.merger) })
+	go func() {
+		if err := p.set.compileRest(listening); err != nil {
+			p.journal.tell(zerolog.ErrorLevel, "patch").Str("what", "failed").Err(err).Msg(err.Error())
+		}
+	}()
 	var ended chan struct{}
 	if p.demo != nil {
 		ended = make(chan struct{})
@@ -348,7 +359,7 @@ func (p *player) logEvents(ctx context.Context) {
 	for {
 		select {
 		case c := <-p.changes:
-			p.set.tell(c, p.journal)
+			p.set.log(c, p.journal)
 		case e := <-p.received:
 			p.journal.keep(zerolog.DebugLevel, "midi").
 				Str("kind", kindName(e.Kind)).

@@ -8,7 +8,6 @@ import (
 	"math"
 	"os"
 	"path/filepath"
-	"slices"
 	"time"
 
 	"tautwire/config"
@@ -146,11 +145,9 @@ func render(ctx context.Context, s streams, r renderOptions) (err error) {
 	if err != nil {
 		return err
 	}
-	programs := &set{}
-	if changesPatch(performance) {
-		if programs, err = compile(patches, r.rate); err != nil {
-			return err
-		}
+	programs, err := compilePrograms(performance, patches, r.rate)
+	if err != nil {
+		return err
 	}
 	w, finish, err := r.create(s)
 	if err != nil {
@@ -158,10 +155,10 @@ func render(ctx context.Context, s streams, r renderOptions) (err error) {
 	}
 	defer func() { err = finish(err) }()
 	o := &offline{
-		engine: engine.New(begin, engine.Options{Rate: r.rate, Timing: engine.Offline, Voices: 512}),
-		rate:   r.rate,
-		period: r.period,
-		set:    programs,
+		engine:   engine.New(begin, engine.Options{Rate: r.rate, Timing: engine.Offline, Voices: 512}),
+		rate:     r.rate,
+		period:   r.period,
+		programs: programs,
 	}
 	seconds := performance.End.Seconds() + r.tail
 	p := newProgress(s.err, "rendering "+filepath.Base(r.out), seconds)
@@ -225,18 +222,31 @@ func copyFrom(file *os.File, to io.Writer) error {
 	return err
 }
 
-// changesPatch tells whether a performance has a Program Change: without one,
-// only one patch need be compiled.
-func changesPatch(p *midiin.Performance) bool {
-	return slices.ContainsFunc(p.Events, func(e engine.Event) bool { return e.Kind == engine.Program })
+// compilePrograms compiles the patches that a performance asks for, and no other.
+// Numbers that there are no patches for change nothing.
+func compilePrograms(p *midiin.Performance, patches []*config.Patch, rate int) (map[int]*engine.Compiled, error) {
+	programs := map[int]*engine.Compiled{}
+	for _, e := range p.Events {
+		n := int(e.Value)
+		if e.Kind != engine.Program || n < 0 || n >= len(patches) || programs[n] != nil {
+			continue
+		}
+		c, err := engine.Compile(patches[n], rate)
+		if err != nil {
+			return nil, err
+		}
+		programs[n] = c
+	}
+	return programs, nil
 }
 
 // offline plays a performance as fast as it can.
 type offline struct {
 	engine *engine.Engine
 	rate   int
-	period int  // frames rendered at once, at most
-	set    *set // for Program Change
+	period int // frames rendered at once, at most
+	// programs are the patches that the performance asks for, by their numbers.
+	programs map[int]*engine.Compiled
 }
 
 // frame is the frame at which an event takes effect.
@@ -305,7 +315,9 @@ func (o *offline) swap(events []engine.Event, at int64) {
 			return
 		}
 		if e.Kind == engine.Program && due == at {
-			o.set.take(int(e.Value), o.engine)
+			if c := o.programs[int(e.Value)]; c != nil {
+				o.engine.Swap(c)
+			}
 		}
 	}
 }

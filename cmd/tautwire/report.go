@@ -133,19 +133,19 @@ type tally struct {
 	callbacks, windows, events, refused uint64
 	strings                             int
 	loadSum, loadMax                    float64
-	render, wake, note                  measure
+	render, wake, note                  overWindows
 	xruns                               map[string]uint64
 	changes                             map[string]uint64 // "port lost", "device regained", ...
 	hours                               map[int64]*hour   // by hour of Unix time
 }
 
-// measure is a spread over many windows.
-type measure struct {
+// overWindows is a spread over many windows.
+type overWindows struct {
 	p50, p99, p999 engine.Histogram // of the windows
 	max            float64          // us
 }
 
-func (m *measure) add(s spread) {
+func (m *overWindows) add(s spread) {
 	if s.P50 == 0 && s.Max == 0 {
 		return
 	}
@@ -322,7 +322,7 @@ func (t *tally) printMeasures(w io.Writer) {
 	fmt.Fprintln(c, "us\tp50\tp99\tp99.9\tworst window p50\tp99\tp99.9\tmax\t")
 	for _, m := range []struct {
 		name string
-		of   *measure
+		of   *overWindows
 	}{{"render", &t.render}, {"wake", &t.wake}, {"note", &t.note}} {
 		if m.of.p50.N() == 0 {
 			fmt.Fprintf(c, "%s\t-\t-\t-\t-\t-\t-\t-\t\n", m.name)

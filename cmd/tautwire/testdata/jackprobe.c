@@ -2,9 +2,9 @@
  * to the first two ports of whatever plays, records them and the times of every
  * cycle, and counts the dropouts that the server tells of.
  *
- *     jackprobe NAME SECONDS PREFIX
+ *     jackprobe NAME SECONDS PREFIX [deaf]
  *
- * It prints "ready" once it runs and "connected" once it hears something, and
+ * With "deaf" it connects to nothing, so that nobody's work delays it. It prints "ready" once it runs and "connected" once it hears something, and
  * ends when its standard input does. Then it writes PREFIX.audio, interleaved
  * 32-bit floats of two channels; PREFIX.cycles, a line a cycle: its first frame,
  * its start and its successor's as the server's clock has them, when the
@@ -82,8 +82,9 @@ static int listen_in(void)
 		jack_port_t *p = jack_port_by_name(client, ports[i]);
 		if (!p || jack_port_is_mine(client, p) || (jack_port_flags(p) & JackPortIsPhysical))
 			continue;
-		if (jack_connect(client, ports[i], jack_port_name(in[found])) == 0)
-			found++;
+		if (!jack_port_connected_to(in[found], ports[i]) && jack_connect(client, ports[i], jack_port_name(in[found])))
+			break;
+		found++;
 	}
 	jack_free(ports);
 	return found;
@@ -124,8 +125,8 @@ static void write_out(const char *prefix)
 
 int main(int argc, char **argv)
 {
-	if (argc != 4) {
-		fprintf(stderr, "usage: jackprobe NAME SECONDS PREFIX\n");
+	if (argc != 4 && argc != 5) {
+		fprintf(stderr, "usage: jackprobe NAME SECONDS PREFIX [deaf]\n");
 		return 2;
 	}
 	client = jack_client_open(argv[1], JackNoStartServer, NULL);
@@ -152,13 +153,14 @@ int main(int argc, char **argv)
 	fflush(stdout);
 
 	struct pollfd gone = {.fd = 0, .events = POLLIN};
-	int connected = 0;
-	while (poll(&gone, 1, connected ? -1 : 20) == 0) {
-		if (listen_in() == 2) {
-			connected = 1;
-			printf("connected\n");
+	int deaf = argc == 5, heard = 0;
+	while (poll(&gone, 1, 20) == 0) {
+		int hears = deaf || listen_in() == 2;
+		if (hears != heard && !deaf) {
+			printf(hears ? "connected\n" : "alone\n");
 			fflush(stdout);
 		}
+		heard = hears;
 	}
 	jack_deactivate(client);
 	write_out(argv[3]);
