@@ -70,7 +70,7 @@ func play(e *Engine, events []Event, frames int, next func() int) []float32 {
 	out := make([]float32, 2*frames)
 	for done := 0; done < frames; {
 		n := min(next(), frames-done)
-		for len(events) > 0 && e.due(events[0], int64(n)) < int64(done+n) {
+		for len(events) > 0 && e.due(events[0], int64(n)) < e.frame+int64(n) {
 			e.Send(events[0])
 			events = events[1:]
 		}

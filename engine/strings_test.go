@@ -19,6 +19,14 @@ func gut() *config.Patch {
 	return p
 }
 
+// wooden is gut with all of sympathy, and a body of modes.
+func wooden() *config.Patch {
+	p := gut()
+	p.Body = singing().Body
+	p.Resonance = config.Resonance{On: true}
+	return p
+}
+
 // leftOf is the left side of interleaved stereo.
 func leftOf(out []float32) []float32 { return measure.Split(out, 2)[0] }
 
@@ -150,10 +158,7 @@ func TestDampersAndPedals(t *testing.T) {
 
 func TestAllSoundOffWithin5msWithoutClick(t *testing.T) {
 	const struck, off, frames = 2400, 36000, 60000
-	wooden := gut()
-	wooden.Body = singing().Body
-	wooden.Resonance = config.Resonance{On: true}
-	for name, p := range map[string]*config.Patch{"strings": gut(), "strings, body and sympathy": wooden} {
+	for name, p := range map[string]*config.Patch{"strings": gut(), "strings, body and sympathy": wooden()} {
 		e := offline(t, p, 8)
 		events := []Event{at(struck, NoteOn, 40, 120), at(struck, NoteOn, 47, 100), at(struck, Control, 64, 127), at(off+5, AllSoundOff, 0, 0)}
 		out := leftOf(play(e, events, frames, every(64)))

@@ -1,0 +1,98 @@
+package engine
+
+import (
+	"testing"
+
+	"tautwire/config"
+	"tautwire/voice"
+)
+
+// BenchmarkHeldKeys renders 64 held keys in periods of 64 frames at 48 kHz and reports
+// ns per string-sample: of the whole engine, of the strings alone, and of a control that only
+// copies and mixes as many samples. Load is the part of real time that the engine takes.
+func BenchmarkHeldKeys(b *testing.B) {
+	const keys, period = 64, 64
+	patch := stays()
+	patch.Zones[0].Decay = constant(60)
+	full := singing()
+	full.Zones = patch.Zones
+	report := func(b *testing.B) {
+		ns := float64(b.Elapsed().Nanoseconds()) / float64(b.N*keys*period)
+		b.ReportMetric(ns, "ns/string-sample")
+		b.ReportMetric(ns*keys*testRate/1e9*100, "%load")
+		b.ReportMetric(0, "ns/op")
+	}
+	b.Run("control", func(b *testing.B) {
+		var src [keys][period]float32
+		var left, right [period]float32
+		for b.Loop() {
+			for k := range src {
+				addSteady(left[:], right[:], src[k][:], gains{left: 0.5, right: 0.5})
+			}
+		}
+		report(b)
+	})
+	b.Run("strings alone", func(b *testing.B) {
+		c := compiled(b, patch, testRate)
+		var voices []*voice.Voice
+		for key := range keys {
+			v := c.maker.NewVoice(lowestPlayed)
+			v.Strike(c.keys[30+key].design, 100, uint64(key))
+			voices = append(voices, v)
+		}
+		var out [voice.Grid]float32
+		for b.Loop() {
+			for range period / voice.Grid {
+				for _, v := range voices {
+					v.Render(out[:], nil)
+				}
+			}
+		}
+		report(b)
+	})
+	for _, run := range []struct {
+		name  string
+		patch *config.Patch
+		pedal float32
+	}{{"engine", patch, 0}, {"engine with body, sympathy and pedal", full, 127}} {
+		b.Run(run.name, func(b *testing.B) {
+			e := offline(b, run.patch, keys)
+			e.Send(at(0, Control, controlDamper, run.pedal))
+			for key := range keys {
+				e.Send(at(0, NoteOn, 30+key, 100))
+			}
+			out := make([]float32, 2*period)
+			for range testRate / 4 / period {
+				e.Render(out)
+			}
+			for b.Loop() {
+				e.Render(out)
+			}
+			report(b)
+			if n := e.Counts().Strings; n != keys {
+				b.Fatalf("%d strings sound, want %d", n, keys)
+			}
+		})
+	}
+}
+
+// BenchmarkCompile reports ms for all 128 keys of a plain patch.
+func BenchmarkCompile(b *testing.B) {
+	for b.Loop() {
+		if _, err := Compile(stays(), testRate); err != nil {
+			b.Fatal(err)
+		}
+	}
+	b.ReportMetric(float64(b.Elapsed().Milliseconds())/float64(b.N), "ms/patch")
+}
+
+// BenchmarkHush reports what silencing a body of the longest impulse response costs the callback at once.
+func BenchmarkHush(b *testing.B) {
+	p := stays()
+	p.Body = config.Body{Mix: 0.5, Impulse: &config.Sample{Rate: testRate, Data: make([]float32, 2*testRate)}}
+	p.Body.Impulse.Data[0] = 1
+	e := offline(b, p, 1)
+	for b.Loop() {
+		e.stage.body.reset()
+	}
+}
