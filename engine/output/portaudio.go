@@ -279,7 +279,10 @@ func initialize() error {
 	return nil
 }
 
-// callbackFunc is what the binding calls. It has a recover of its own that ends the
+// callbackFunc is what the binding calls. The binding hands PortAudio a number in the
+// place of a pointer, which Go's pointer checks, on with the race detector, take for an
+// error: tests with -race need -gcflags=github.com/gordonklaus/portaudio=-d=checkptr=0.
+// And it has a recover of its own that ends the
 // process, so nothing in it may panic that Player.Period doesn't catch.
 type callbackFunc func(out []float32, time portaudio.StreamCallbackTimeInfo, status portaudio.StreamCallbackFlags)
 
