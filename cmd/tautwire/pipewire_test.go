@@ -35,10 +35,10 @@ func startDesktop(t testing.TB) *desktop {
 	waitFor(t, 10*time.Second, "the session bus", exists(filepath.Join(run, "bus")), daemon)
 	d.pipewire = start(t, d.env, "pipewire")
 	waitFor(t, 10*time.Second, "PipeWire", exists(filepath.Join(run, "pipewire-0")), d.pipewire)
-	make := start(t, d.env, "pw-cli", "create-node", "adapter",
+	node := start(t, d.env, "pw-cli", "create-node", "adapter",
 		"{ factory.name=support.null-audio-sink node.name=stage media.class=Audio/Sink object.linger=true audio.position=[FL FR] audio.rate=48000 }")
-	if !make.endsWithin(10*time.Second) || make.exitCode() != 0 {
-		t.Fatalf("no sink: %s%s", make.out.String(), make.err.String())
+	if !node.endsWithin(10*time.Second) || node.exitCode() != 0 {
+		t.Fatalf("no sink: %s%s", node.out.String(), node.err.String())
 	}
 	start(t, d.env, "wireplumber")
 	waitFor(t, 20*time.Second, "the sink's ports", func() bool { return strings.Contains(d.ask(t, "pw-link", "-i"), "stage:playback_FR") }, d.pipewire)
@@ -126,13 +126,8 @@ func TestPipeWire(t *testing.T) {
 	for i, at := range begins {
 		key := played[i%len(played)]
 		hz := 440 * math.Exp2((float64(key)-69)/12)
-		m, err := measure.Partial(x[at+heard.rate/1000:at+50*heard.rate/1000], float64(heard.rate), hz, hz)
-		if err != nil {
-			t.Errorf("note %d, key %d: %v", i, key, err)
-			continue
-		}
-		// A gap that the busy machine made is no decaying tone, and is left unexplained.
-		if m.Residual > -40 {
+		m, whole := oneTone(x[at+heard.rate/1000:at+49*heard.rate/1000], float64(heard.rate), hz)
+		if !whole {
 			continue
 		}
 		clean++
@@ -146,6 +141,23 @@ func TestPipeWire(t *testing.T) {
 	if clean < notes/2 {
 		t.Errorf("only %d of %d notes are without a gap", clean, notes)
 	}
+}
+
+// oneTone measures the tone near a frequency, and tells whether it goes through
+// without a gap: the second half is in phase with the first.
+func oneTone(x []float64, rate, hz float64) (m measure.Mode, whole bool) {
+	half := len(x) / 2
+	m, err := measure.Partial(x[:half], rate, hz, hz)
+	if err != nil {
+		return m, false
+	}
+	second, err := measure.Partial(x[half:], rate, hz, hz)
+	if err != nil {
+		return m, false
+	}
+	const inPhase = 0.1 // rad
+	apart := second.Phase - m.Phase - 2*math.Pi*m.Frequency*float64(half)/rate
+	return m, math.Abs(math.Remainder(apart, 2*math.Pi)) < inPhase
 }
 
 // onsetsIn gives where sound begins after at least 20 ms of near silence, as
@@ -162,8 +174,11 @@ func onsetsIn(x []float64, rate int) (at []int) {
 		}
 		silent = 0
 		if rested && math.Abs(v) > loud {
-			at = append(at, i)
 			rested = false
+			// Sooner, it is the same note after a gap that the busy machine made.
+			if len(at) == 0 || i-at[len(at)-1] > rate/12 {
+				at = append(at, i)
+			}
 		}
 	}
 	return at

@@ -87,12 +87,17 @@ func (l *lockedWriter) Write(p []byte) (int, error) {
 
 // load gives the rig that the options and the rig file ask for together, and
 // the patch to begin with.
-func (p *playOptions) load() (*config.Rig, error) {
-	var rig *config.Rig
-	var err error
+func (p *playOptions) load() (rig *config.Rig, first *config.Patch, err error) {
+	if p.patch != "" {
+		if first, err = config.LoadPatch(p.patch); err != nil {
+			return nil, nil, inOneLine(err)
+		}
+	}
 	switch {
 	case p.rig != "":
 		rig, err = config.LoadRig(p.rig)
+	case first != nil:
+		rig = config.PlainRig(first)
 	default:
 		var all []*config.Patch
 		if all, err = builtins(); err == nil {
@@ -101,17 +106,10 @@ func (p *playOptions) load() (*config.Rig, error) {
 		}
 	}
 	if err != nil {
-		return nil, inOneLine(err)
+		return nil, nil, inOneLine(err)
 	}
-	if p.patch != "" {
-		first, err := config.LoadPatch(p.patch)
-		if err != nil {
-			return nil, inOneLine(err)
-		}
-		if p.rig == "" {
-			rig.Set = nil
-		}
-		rig.Set = append([]*config.Patch{first}, rig.Set...)
+	if first == nil {
+		first = rig.Set[0]
 	}
 	a := &rig.Audio
 	a.Device = cmp.Or(p.device, a.Device)
@@ -121,13 +119,14 @@ func (p *playOptions) load() (*config.Rig, error) {
 	if len(p.midi) > 0 {
 		rig.MIDI.Inputs = p.midi
 	}
-	return rig, nil
+	return rig, first, nil
 }
 
 // player is all that plays, wired up.
 type player struct {
 	options  playOptions
 	rig      *config.Rig
+	first    *config.Patch
 	journal  *journal
 	process  output.Process
 	set      *set
@@ -149,11 +148,11 @@ func play(ctx context.Context, screen io.Writer, o playOptions) error {
 	// A reader of our messages that goes away is no reason to fall silent.
 	signal.Ignore(syscall.SIGPIPE)
 
-	rig, err := o.load()
+	rig, first, err := o.load()
 	if err != nil {
 		return err
 	}
-	p := &player{options: o, rig: rig}
+	p := &player{options: o, rig: rig, first: first}
 	if p.journal, err = newJournal(o.log, screen, o.verbose); err != nil {
 		return err
 	}
@@ -185,7 +184,7 @@ func (p *player) wire(system *output.System) error {
 		return err
 	}
 	var first *engine.Compiled
-	if p.set, first, err = newSet(p.rig.Set, p.choice.Rate, p.changed); err != nil {
+	if p.set, first, err = newSet(p.first, p.rig.Set, p.choice.Rate, p.changed); err != nil {
 		return err
 	}
 	timing := engine.Steady
@@ -377,7 +376,7 @@ func (p *player) logEvents(ctx context.Context) {
 // introduce says what is played on, with which latency, and who listens.
 func (p *player) introduce(screen io.Writer, info output.Info) {
 	ms := func(frames int) float64 { return 1e3 * float64(frames) / float64(info.Rate) }
-	fmt.Fprintf(screen, "Tautwire %s plays %q", version, p.rig.Set[0].Title)
+	fmt.Fprintf(screen, "Tautwire %s plays %q", version, p.first.Title)
 	if n := len(p.rig.Set); n > 1 {
 		fmt.Fprintf(screen, "; Program Change takes another of %d patches", n)
 	}
@@ -419,7 +418,7 @@ func describeDevice(device, host string) string {
 func (p *player) logStart(info output.Info) {
 	p.journal.keep(zerolog.InfoLevel, "start").
 		Str("version", version).
-		Str("patch", p.rig.Set[0].Path).
+		Str("patch", p.first.Path).
 		Str("device", info.Device).
 		Str("host", info.Host).
 		Int("rate", info.Rate).

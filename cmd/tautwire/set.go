@@ -13,8 +13,8 @@ import (
 	"tautwire/engine"
 )
 
-// set is what a player goes through by Program Change. The first patch is
-// compiled before anything sounds; the others while it plays already, so that
+// set is what a player goes through by Program Change. The patch to
+// begin with is compiled before anything sounds; the others while it plays already, so that
 // taking one is an exchange of a pointer.
 type set struct {
 	patches []*config.Patch
@@ -35,16 +35,17 @@ type change struct {
 	took    int64 // ns, until it was swapped
 }
 
-// newSet compiles the first of the patches for a rate in Hz. Later, swap is
-// called with what is taken, and tell with what became of each change.
-func newSet(patches []*config.Patch, rate int, tell func(change)) (*set, *engine.Compiled, error) {
+// newSet compiles the patch to begin with, which need not be of the set, for a
+// rate in Hz. Later, swap is called with what is taken, and tell with what became
+// of each change.
+func newSet(first *config.Patch, patches []*config.Patch, rate int, tell func(change)) (*set, *engine.Compiled, error) {
 	s := &set{patches: patches, rate: rate, tell: tell, compiled: map[*config.Patch]*engine.Compiled{}}
-	first, err := engine.Compile(patches[0], rate)
+	c, err := engine.Compile(first, rate)
 	if err != nil {
 		return nil, nil, err
 	}
-	s.compiled[patches[0]] = first
-	return s, first, nil
+	s.compiled[first] = c
+	return s, c, nil
 }
 
 // compileRest compiles the other patches, on a thread that gives way to all
