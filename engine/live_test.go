@@ -152,6 +152,14 @@ func TestUndampedStringsSoundAlong(t *testing.T) {
 	if octave < played-60 || octave > played {
 		t.Errorf("the held octave sounds at %.1f dB beside a note of %.1f", octave, played)
 	}
+	alone := func(on bool) float64 {
+		p := *p
+		p.Resonance.On = on
+		return rms(play(offline(t, &p, 8), []Event{at(200, NoteOn, 40, 127)}, 24000, every(64)))
+	}
+	if with, without := alone(true), alone(false); math.Abs(with/without-1) > 1e-3 {
+		t.Errorf("a string drives itself: RMS %g alone, %g without resonance", with, without)
+	}
 	p.Resonance.Level = -20
 	if soft := level(at(0, NoteOn, 52, 0.001)); math.Abs(octave-20-soft) > 0.5 {
 		t.Errorf("20 dB less resonance made %.1f dB of %.1f", soft, octave)

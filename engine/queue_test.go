@@ -60,6 +60,9 @@ func TestQueueKeepsRoomForReleases(t *testing.T) {
 			if !q.Push(e) {
 				t.Fatalf("release of kind %d was refused as number %d", e.Kind, i)
 			}
+			if i == 3 && q.Rescued() != 0 {
+				t.Errorf("kind %d found no room in the reserve", e.Kind)
+			}
 		}
 	}
 }

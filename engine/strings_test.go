@@ -230,12 +230,23 @@ func compiledGut(t testing.TB) *Compiled { return compiled(t, gut(), testRate) }
 
 // TestRunawayStringIsCured puts numbers that are none into a sounding string.
 func TestRunawayStringIsCured(t *testing.T) {
+	t.Run("strings", func(t *testing.T) { cures(t, stays()) })
+	t.Run("body and sympathy", func(t *testing.T) { cures(t, singing()) })
+}
+
+func cures(t *testing.T, p *config.Patch) {
 	for _, poison := range []float32{float32(math.NaN()), float32(math.Inf(1)), 1e30} {
-		e := offline(t, singing(), 8)
+		e := offline(t, p, 8)
 		out := play(e, []Event{at(0, NoteOn, 40, 100), at(0, NoteOn, 60, 100), at(0, Control, 64, 127)}, 5000, every(64))
 		bad := e.channels[0].string[40]
 		e.strings.slots[bad].voice.Render(make([]float32, 1), []float32{poison})
-		out = append(out, play(e, nil, 20000, every(64))...)
+		after := play(e, nil, 20000, every(64))
+		for i := e.Delay(); i < e.Delay()+64; i++ {
+			if after[2*i] == 0 {
+				t.Fatalf("%g: the other string is missing %d frames after", poison, i)
+			}
+		}
+		out = append(out, after...)
 		for i, x := range out {
 			if !(x >= -1 && x <= 1) {
 				t.Fatalf("%g: sample %d is %g", poison, i, x)
