@@ -133,14 +133,14 @@ func ownXruns(t *testing.T, log string, in []interval) (us []float64) {
 // by more than half a period, close to a time.
 func befell(seen recording, us float64) bool {
 	const near = 10e3 // us
-	close := func(at float64) bool { return math.Abs(at-us) < near }
-	if slices.ContainsFunc(seen.xruns, close) {
+	nearby := func(at float64) bool { return math.Abs(at-us) < near }
+	if slices.ContainsFunc(seen.xruns, nearby) {
 		return true
 	}
 	for i := 1; i < len(seen.cycles); i++ {
 		c, before := seen.cycles[i], seen.cycles[i-1]
 		period := float64(c.frames) * 1e6 / float64(seen.rate)
-		if close(c.woken) && (c.woken-before.woken > 1.5*period || c.ended-c.woken > period/2) {
+		if nearby(c.woken) && (c.woken-before.woken > 1.5*period || c.ended-c.woken > period/2) {
 			return true
 		}
 	}

@@ -382,8 +382,8 @@ func (p *player) introduce(screen io.Writer, info output.Info) {
 	}
 	fmt.Fprintln(screen)
 	fmt.Fprintf(screen, "on %s, %d Hz, periods of %d frames", describeDevice(info.Device, info.Host), info.Rate, info.Period)
-	if wanted := p.rig.Audio.Rate; info.Rate != wanted {
-		fmt.Fprintf(screen, " (it has no %d Hz)", wanted)
+	if a := p.rig.Audio; info.Rate != a.Rate || info.Period != a.Period {
+		fmt.Fprintf(screen, " (its own; %d Hz and %d frames are not to be had)", a.Rate, a.Period)
 	}
 	fmt.Fprintln(screen)
 	steady := ms(p.engine.Delay())
