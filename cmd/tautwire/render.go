@@ -178,8 +178,11 @@ func render(ctx context.Context, s streams, r renderOptions) (err error) {
 func (r *renderOptions) create(s streams) (w *output.WAV, finish func(error) error, err error) {
 	var file *os.File
 	if r.out == "-" {
-		// A WAV file begins with its length, which is known last.
-		file, err = os.CreateTemp("", "tautwire-*.wav")
+		// A WAV file begins with its length, which is known last. The name goes at
+		// once, so that nothing is left behind when the pipe's reader ends us.
+		if file, err = os.CreateTemp("", "tautwire-*.wav"); err == nil {
+			os.Remove(file.Name())
+		}
 	} else {
 		file, err = os.Create(r.out)
 	}
@@ -196,8 +199,8 @@ func (r *renderOptions) create(s streams) (w *output.WAV, finish func(error) err
 		if closed := file.Close(); err == nil {
 			err = closed
 		}
-		if err != nil || r.out == "-" {
-			os.Remove(file.Name())
+		if err != nil && r.out != "-" {
+			os.Remove(r.out)
 		}
 		if err != nil {
 			return fmt.Errorf("%s is not written: %w", r.out, err)
