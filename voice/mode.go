@@ -13,9 +13,10 @@ type mode struct {
 	sections []section
 	// losses are the loss filters at pitches a step apart, the first at lowest;
 	// dulls are those of the string under a muting palm
-	losses, dulls []twoPole
+	losses, dulls []loss
 	dullDecay     float64 // s: T60 under the palm
 	lowest        float64 // Hz
+	shelfCorner   float64 // over the fundamental; 0 is no shelf
 }
 
 // lossStep is the distance between two loss filters of a mode, in octaves. In between
@@ -31,23 +32,24 @@ const topPitch = 0.4
 func newMode(open, dull law, f0, b, rate float64) *mode {
 	m := &mode{rate: rate, law: open, dullDecay: dull.decay}
 	f0 = min(f0, topPitch*rate)
-	loss := m.fitAlone(open, f0)
+	hard := m.fitAlone(open, f0)
 	if b > 0 {
-		m.sections = fitDispersion(f0, b, rate, loss.lag)
+		m.sections = fitDispersion(f0, b, rate, hard.lag)
+		m.placeShelf(open, f0, hard)
 	}
 	const bottom = 1.0 // Hz
 	below := math.Floor(math.Log2(f0/bottom) / lossStep)
 	m.lowest = f0 * math.Exp2(-below*lossStep)
 	above := math.Ceil(math.Log2(topPitch*rate/f0) / lossStep)
 	steps := int(below+above) + 1
-	m.losses, m.dulls = make([]twoPole, steps), make([]twoPole, steps)
+	m.losses, m.dulls = make([]loss, steps), make([]loss, steps)
 	soft := m.fitAlone(dull, f0)
-	fill := func(i int, open2, dull2 twoPole) {
+	fill := func(i int, likeOpen, likeDull loss) {
 		f := min(m.lowest*math.Exp2(float64(i)*lossStep), topPitch*rate)
-		m.losses[i], m.dulls[i] = m.fit(open, f, open2), m.fit(dull, f, dull2)
+		m.losses[i], m.dulls[i] = m.fit(open, f, likeOpen), m.fit(dull, f, likeDull)
 	}
 	middle := int(below)
-	fill(middle, loss, soft)
+	fill(middle, hard, soft)
 	for i := middle + 1; i < steps; i++ {
 		fill(i, m.losses[i-1], m.dulls[i-1])
 	}
@@ -58,29 +60,103 @@ func newMode(open, dull law, f0, b, rate float64) *mode {
 }
 
 // fitAlone fits the loss filter as if every packet took one period.
-func (m *mode) fitAlone(l law, f0 float64) twoPole {
-	return fitLoss(l, f0, m.rate, func(float64) float64 { return 1 / f0 })
+func (m *mode) fitAlone(l law, f0 float64) loss {
+	t, _ := fitLoss(f0, m.rate, func(f float64) float64 { return l.nepers(f, f0, 1/f0) })
+	return loss{twoPole: t}
 }
 
 // fit fits the loss filter at a pitch, with the time that a packet takes by
 // the sections and by a filter like it: the first fit, or that of a pitch near by.
-func (m *mode) fit(l law, f0 float64, loss twoPole) twoPole {
-	period := 1 / f0
-	w0 := 2 * math.Pi * f0 / m.rate
-	t0 := math.Tan(w0 / 2)
-	line := m.rate*period - loss.lag(w0)/w0
-	for _, s := range m.sections {
-		line -= s.lag(1) / w0
-	}
-	return fitLoss(l, f0, m.rate, func(f float64) float64 {
-		w := 2 * math.Pi * f / m.rate
-		trip := line + loss.groupDelay(w)
-		v := math.Tan(w/2) / t0
-		for _, s := range m.sections {
-			trip += s.groupDelay(v, t0)
-		}
-		return max(trip, 1) / m.rate
+func (m *mode) fit(l law, f0 float64, like loss) loss {
+	t0 := math.Tan(math.Pi * f0 / m.rate)
+	line := m.lineFor(f0, like)
+	trip := m.trip(f0, t0, line, like)
+	out, _ := m.fitBoth(l, f0, t0, m.shelfCorner, line/m.rate, trip)
+	return out
+}
+
+// fitBoth fits a shelf at a corner, a multiple of the fundamental, and two poles
+// to what it leaves.
+func (m *mode) fitBoth(l law, f0, t0, corner, shortest float64, trip func(f float64) float64) (out loss, worst float64) {
+	out.shelf = m.fitShelf(l, f0, t0, corner, shortest, trip)
+	out.twoPole, worst = fitLoss(f0, m.rate, func(f float64) float64 {
+		return max(1e-9, l.nepers(f, f0, trip(f))-out.shelf.nepers(math.Tan(math.Pi*f/m.rate)))
 	})
+	return out, worst
+}
+
+// placeShelf finds the corner that serves a stiff string best, or none.
+func (m *mode) placeShelf(l law, f0 float64, like loss) {
+	t0, line := math.Tan(math.Pi*f0/m.rate), m.lineFor(f0, like)
+	trip := m.trip(f0, t0, line, like)
+	_, least := m.fitBoth(l, f0, t0, 0, line/m.rate, trip)
+	for c := 1.5; c < 60; c *= 1.2 {
+		if _, worst := m.fitBoth(l, f0, t0, c, line/m.rate, trip); worst < least {
+			least, m.shelfCorner = worst, c
+		}
+	}
+}
+
+// trip gives the time (s) that a packet at f needs, the loop's group delay.
+func (m *mode) trip(f0, t0, line float64, like loss) func(f float64) float64 {
+	return func(f float64) float64 {
+		w := 2 * math.Pi * f / m.rate
+		v := math.Tan(w / 2)
+		sum := line + like.groupDelay(w) + like.shelf.groupDelay(v)
+		for _, s := range m.sections {
+			sum += s.groupDelay(v/t0, t0)
+		}
+		return max(sum, 1) / m.rate
+	}
+}
+
+// lineFor is about what the line has to hold (samples) beside all else.
+func (m *mode) lineFor(f0 float64, l loss) float64 {
+	w := 2 * math.Pi * f0 / m.rate
+	sum := m.rate/f0 - l.lag(w)/w
+	for _, s := range m.sections {
+		sum -= s.lag(1) / w
+	}
+	return sum
+}
+
+// fitShelf fits the shelf of a stiff string, whose quickest packet takes
+// shortest (s), at a corner that is a multiple of the fundamental; 0 is no shelf.
+func (m *mode) fitShelf(l law, f0, t0, corner, shortest float64, trip func(f float64) float64) shelf {
+	const points = 24
+	top := min(4000, 0.4*m.rate, 200*f0)
+	if corner == 0 || top < 2*f0 {
+		return shelf{}
+	}
+	var v, extra, whole [points]float64
+	for i := range points {
+		f := f0 * math.Pow(top/f0, float64(i)/(points-1))
+		v[i] = math.Tan(math.Pi * f / m.rate)
+		t := trip(f)
+		whole[i] = l.nepers(f, f0, t)
+		extra[i] = whole[i] * max(0, 1-shortest/t)
+	}
+	return fitShelf(corner*t0, v[:], extra[:], whole[:])
+}
+
+// loss is all that takes energy from a trip, but for the gain.
+type loss struct {
+	twoPole
+	shelf shelf
+}
+
+// response is the filter's at z, with a gain of one.
+func (l loss) response(z complex128) complex128 {
+	return l.shelf.response(z) / l.denominator(z)
+}
+
+// mix goes a part of the way to another filter; stable where both are.
+func (l loss) mix(to loss, part float64) loss {
+	toward := func(a, b float64) float64 { return a + part*(b-a) }
+	return loss{
+		twoPole: twoPole{toward(l.c1, to.c1), toward(l.c2, to.c2)},
+		shelf:   shelf{toward(l.shelf.drop, to.shelf.drop), toward(l.shelf.corner, to.shelf.corner)},
+	}
 }
 
 // lag is the phase (radians, positive) by which the filter delays w.
@@ -108,7 +184,7 @@ type touch struct{ palm, dark float64 }
 type coefficients struct {
 	delay    float64 // samples that the line's read takes
 	gain     float64 // of the read
-	loss     twoPole
+	loss     loss
 	sections [maxSections][2]float64 // a1, a2
 	shrink   float64                 // what the fundamental keeps of itself in a frame
 	direct   float64                 // 0 to 1: how far the read is a direct one, see directTaps
@@ -129,7 +205,7 @@ func (m *mode) at(f0 float64, t touch, c *coefficients) {
 	sigma := decayNepers * slowness / m.rate
 	c.shrink = math.Exp(-sigma)
 	z := cmplx.Rect(c.shrink, w)
-	lag := -cmplx.Phase(1 / c.loss.denominator(z))
+	lag := -cmplx.Phase(c.loss.response(z))
 	if len(m.sections) > 0 {
 		t0 := math.Tan(w / 2)
 		for i, s := range m.sections {
@@ -142,25 +218,32 @@ func (m *mode) at(f0 float64, t touch, c *coefficients) {
 	turns := math.Round((lag + cmplx.Phase(rest)) / (2 * math.Pi))
 	c.delay = (2*math.Pi*(1-turns) + cmplx.Phase(rest)) / w
 	c.gain = math.Exp(-sigma*c.delay) / cmplx.Abs(rest)
-	c.gain = min(c.gain, ceiling*(1+c.loss.c1+c.loss.c2))
+	c.gain = min(c.gain, ceiling*c.loss.lowest())
 	c.direct = min(1, max(0, directFrom-c.delay))
 }
 
 // lossAt mixes the two loss filters of a table that are next to a pitch.
-func (m *mode) lossAt(table []twoPole, f0 float64) twoPole {
+func (m *mode) lossAt(table []loss, f0 float64) loss {
 	x := math.Log2(f0/m.lowest) / lossStep
 	i := min(max(int(x), 0), len(table)-2)
 	return table[i].mix(table[i+1], min(1, max(0, x-float64(i))))
 }
 
-// mix goes a part of the way to another filter; stable where both are.
-func (t twoPole) mix(to twoPole, part float64) twoPole {
-	return twoPole{t.c1 + part*(to.c1-t.c1), t.c2 + part*(to.c2-t.c2)}
+// lowest is the least magnitude of the denominator over all frequencies: a gain
+// up to it keeps a loop below one. Its square is a parabola in 1 - cos w.
+func (t twoPole) lowest() float64 {
+	a0 := (1 + t.c1 + t.c2) * (1 + t.c1 + t.c2)
+	a1, a2 := -2*t.c1*(1+t.c2)-8*t.c2, 4*t.c2
+	least := min(a0, a0+2*a1+4*a2)
+	if x := -a1 / (2 * a2); a2 > 0 && x > 0 && x < 2 {
+		least = min(least, a0+a1*x/2)
+	}
+	return math.Sqrt(max(0, least))
 }
 
 // rest is the response at z of the loss filter and the first n sections.
 func (c *coefficients) rest(z complex128, n int) complex128 {
-	out := 1 / c.loss.denominator(z)
+	out := c.loss.response(z)
 	r := 1 / z
 	for _, a := range c.sections[:n] {
 		a1, a2 := complex(a[0], 0), complex(a[1], 0)

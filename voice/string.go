@@ -54,9 +54,12 @@ type loop struct {
 	motion   motion
 	length   int // the whole part of the delay
 	h, dh    [taps]float32
-	c1, c2   float32
-	dc1, dc2 float32
-	v1, v2   float32 // the loss filter's last two outputs
+	c1, c2   float64 // in double precision: with dark strings 1 + c1 + c2 is small
+	dc1, dc2 float64
+	v1, v2   float64    // the loss filter's last two outputs
+	shelf    [3]float64 // k, zero, pole
+	dShelf   [3]float64
+	s1       float64 // the shelf's last output
 	sections int
 	a        [maxSections][2]float64
 	da       [maxSections][2]float64
@@ -254,12 +257,21 @@ func (l *loop) pitchOf(delay float64) float64 {
 // approach moves coefficients a part of the way to others.
 func (c *coefficients) approach(to *coefficients, part float64, sections int) {
 	c.gain += (to.gain - c.gain) * part
-	c.loss.c1 += (to.loss.c1 - c.loss.c1) * part
-	c.loss.c2 += (to.loss.c2 - c.loss.c2) * part
+	c.loss = c.loss.mix(to.loss, part)
 	for i := range sections {
 		c.sections[i][0] += (to.sections[i][0] - c.sections[i][0]) * part
 		c.sections[i][1] += (to.sections[i][1] - c.sections[i][1]) * part
 	}
+}
+
+// safeGain is the gain, at most what keeps the loop below one on the way to it:
+// between two pitches the filters are those of neither. A denominator mixed of two
+// that are d apart is at most d^2/8|A| smaller than the mix of their magnitudes.
+func (l *loop) safeGain() float64 {
+	c := &l.glide.stage[2]
+	low := c.loss.lowest()
+	d := math.Abs(c.loss.c1-l.c1) + math.Abs(c.loss.c2-l.c2)
+	return min(c.gain, ceiling*max(0, low-d*d/(2*low)))
 }
 
 // step moves the damping towards its aim and says whether it moves.
@@ -284,12 +296,11 @@ func toward(x, aim, part, near float64) float64 {
 // in them, and returns the whole part of the delay.
 func (l *loop) tapsNow(out *[taps]float64) (length int) {
 	g := &l.glide
-	c := &g.stage[2]
 	if !g.inReach {
 		length = int(g.s[2])
 		l.ip.at(g.s[2]-float64(length), out)
 		for i := range out {
-			out[i] *= c.gain
+			out[i] *= l.safeGain()
 		}
 	} else {
 		length = shortest
@@ -336,11 +347,12 @@ func (d *damping) perTrip(f0 float64) float64 { return math.Exp(-decayNepers * d
 // stand fixes every coefficient where it is.
 func (l *loop) stand() {
 	var h [taps]float64
+	l.takeFilters()
 	l.length = l.tapsNow(&h)
+	l.takeFilters() // a direct read brings its own
 	for i := range h {
 		l.h[i], l.dh[i] = float32(h[i]), 0
 	}
-	l.takeFilters()
 	l.motion = still
 }
 
@@ -358,7 +370,8 @@ func (l *loop) freeze() {
 // takeFilters sets the loss and the sections to the smoothed coefficients.
 func (l *loop) takeFilters() {
 	c := &l.glide.stage[2]
-	l.c1, l.c2 = float32(c.loss.c1), float32(c.loss.c2)
+	l.c1, l.c2 = c.loss.c1, c.loss.c2
+	l.shelf[0], l.shelf[1], l.shelf[2] = c.loss.shelf.filter()
 	l.a = c.sections
 }
 
@@ -396,7 +409,9 @@ func (l *loop) shiftTaps(n int) {
 
 func (l *loop) rampFilters() {
 	c := &l.glide.stage[2]
-	l.dc1, l.dc2 = (float32(c.loss.c1)-l.c1)/Grid, (float32(c.loss.c2)-l.c2)/Grid
+	l.dc1, l.dc2 = (c.loss.c1-l.c1)/Grid, (c.loss.c2-l.c2)/Grid
+	k, zero, pole := c.loss.shelf.filter()
+	l.dShelf = [3]float64{(k - l.shelf[0]) / Grid, (zero - l.shelf[1]) / Grid, (pole - l.shelf[2]) / Grid}
 	for i := range l.sections {
 		l.da[i][0] = (c.sections[i][0] - l.a[i][0]) / Grid
 		l.da[i][1] = (c.sections[i][1] - l.a[i][1]) / Grid
@@ -406,7 +421,7 @@ func (l *loop) rampFilters() {
 // beginGlide lets the length follow the pitch frame by frame.
 func (l *loop) beginGlide() {
 	g := &l.glide
-	gain := float32(g.stage[2].gain * l.damped.perTrip(g.pitch))
+	gain := float32(l.safeGain() * l.damped.perTrip(g.pitch))
 	if l.motion != gliding {
 		var sum float32
 		for _, h := range l.h {
@@ -463,18 +478,19 @@ func (l *loop) atRest() bool { return l.quiet > l.keep() }
 
 // end takes a trip through the filters and adds the force at its end.
 func (l *loop) end(x, e float32) float32 {
-	v := x - float32(l.c1*l.v1) - float32(l.c2*l.v2)
+	v := float64(x) - float64(l.c1*l.v1) - float64(l.c2*l.v2)
+	before := l.v1
 	l.v2, l.v1 = l.v1, v
 	if l.sections > 0 {
-		return l.disperse(v) + e
+		l.s1 = float64(l.shelf[0]*(v-float64(l.shelf[1]*before))) + float64(l.shelf[2]*l.s1)
+		v = l.disperse(l.s1)
 	}
-	return v + e
+	return float32(v) + e
 }
 
 // disperse passes a sample through the allpass sections, in direct form I: one
 // section's output is the next one's input, history and all.
-func (l *loop) disperse(v float32) float32 {
-	in := float64(v)
+func (l *loop) disperse(in float64) float64 {
 	for i := range l.sections {
 		a1, a2 := l.a[i][0], l.a[i][1]
 		x, x1 := l.x[i], l.x1[i]
@@ -485,7 +501,7 @@ func (l *loop) disperse(v float32) float32 {
 	}
 	n := l.sections
 	l.x1[n], l.x[n] = l.x[n], in
-	return float32(in)
+	return in
 }
 
 func (l *loop) renderStill(out, e []float32) {
@@ -529,6 +545,9 @@ func (l *loop) renderRamping(out, e []float32) {
 func (l *loop) moveFilters() {
 	l.c1 += l.dc1
 	l.c2 += l.dc2
+	for i := range l.shelf {
+		l.shelf[i] += l.dShelf[i]
+	}
 	for i := range l.sections {
 		l.a[i][0] += l.da[i][0]
 		l.a[i][1] += l.da[i][1]
@@ -600,11 +619,12 @@ func (l *loop) renderTouched(out, e []float32) {
 // standGliding makes a glide that does not move of a string that stands.
 func (l *loop) standGliding() {
 	g := &l.glide
+	l.takeFilters()
 	g.slope, l.dc1, l.dc2 = 0, 0, 0
-	l.da = [maxSections][2]float64{}
+	l.da, l.dShelf = [maxSections][2]float64{}, [3]float64{}
 	g.from = g.s[2]
 	for i := range g.s {
 		g.s[i] = g.s[2]
 	}
-	l.gain, l.dg = float32(g.stage[2].gain*l.damped.perTrip(g.pitch)), 0
+	l.gain, l.dg = float32(l.safeGain()*l.damped.perTrip(g.pitch)), 0
 }

@@ -1,0 +1,65 @@
+package voice
+
+import "math"
+
+// shelf is what the loop of a stiff string has beside its two poles: a gain of
+// 1 - drop at zero frequency and one at half the rate, half way at a corner. Packets of the
+// lower partials take longer for a trip than those of the upper ones, so they must lose
+// more; without it T60 is up to 30 % off at B = 1e-3. The zero value does nothing.
+type shelf struct {
+	drop   float64
+	corner float64 // tan(w/2) there
+}
+
+// filter gives k, zero and pole of k (1 - zero/z)/(1 - pole/z), by the bilinear transform.
+func (s shelf) filter() (k, zero, pole float64) {
+	a, t := 1-s.drop, s.corner
+	return (1 + a*t) / (1 + t), (1 - a*t) / (1 + a*t), (1 - t) / (1 + t)
+}
+
+// response is the shelf's at z.
+func (s shelf) response(z complex128) complex128 {
+	if s.drop == 0 {
+		return 1
+	}
+	k, zero, pole := s.filter()
+	return complex(k, 0) * (z - complex(zero, 0)) / (z - complex(pole, 0))
+}
+
+// nepers is what the shelf takes at v = tan(w/2).
+func (s shelf) nepers(v float64) float64 {
+	if s.drop == 0 {
+		return 0
+	}
+	a := 1 - s.drop
+	return -0.5 * math.Log((v*v+a*a*s.corner*s.corner)/(v*v+s.corner*s.corner))
+}
+
+// groupDelay is the shelf's, in samples at v = tan(w/2).
+func (s shelf) groupDelay(v float64) float64 {
+	if s.drop == 0 {
+		return 0
+	}
+	// the phase is atan(v/(a t)) - atan(v/t)
+	at, t := (1-s.drop)*s.corner, s.corner
+	return -(at/(at*at+v*v) - t/(t*t+v*v)) * (1 + v*v) / 2
+}
+
+// fitShelf fits the drop of a shelf to what partials are to lose more than
+// those that take the shortest trip, at a corner that is a multiple of the fundamental's
+// t0 = tan(w0/2).
+//
+// The method: for small losses the shelf's are drop/(1 + (v/corner)^2), linear
+// in the drop; least squares, relative to the whole loss.
+func fitShelf(corner float64, v, extra, whole []float64) shelf {
+	var num, den float64
+	for i := range v {
+		q := v[i] / corner
+		shape := 1 / (1 + q*q)
+		w := 1 / (whole[i] * whole[i])
+		num += w * extra[i] * shape
+		den += w * shape * shape
+	}
+	depth := max(0, num/den)
+	return shelf{drop: 1 - math.Exp(-depth), corner: corner}
+}

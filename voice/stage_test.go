@@ -1,0 +1,97 @@
+package voice
+
+import (
+	"math"
+	"math/rand/v2"
+	"testing"
+
+	"tautwire/voice/measure"
+)
+
+// rates are those at which every bound is held.
+var rates = []float64{44100, 48000, 96000}
+
+// stage is a maker and a voice for a rate.
+type stage struct {
+	rate  float64
+	maker *Maker
+	voice *Voice
+}
+
+func newStage(rate float64) *stage {
+	m := NewMaker(rate)
+	return &stage{rate, m, m.NewVoice(1.5)}
+}
+
+// note renders a stroke of velocity 127 for some seconds.
+func (s *stage) note(d *Design, seconds float64) []float32 {
+	s.voice.Reset()
+	s.voice.Strike(d, 127, 7)
+	return s.more(seconds)
+}
+
+func (s *stage) more(seconds float64) []float32 {
+	out := make([]float32, int(seconds*s.rate))
+	s.voice.Render(out, nil)
+	return out
+}
+
+// hz is a key's pitch in equal temperament on A4 = 440 Hz, ISO 16:1975.
+func hz(key int) float64 { return 440 * math.Exp2(float64(key-69)/12) }
+
+// plain is a string with nothing but a decay and a brightness.
+func plain(f0, decay, brightness float64) Spec {
+	return Spec{Frequency: f0, Decay: decay, Brightness: brightness, Release: 0.2,
+		Excitation: Excitation{Kind: Pluck, Position: 0.13, Hardness: 0.7}}
+}
+
+// refined switches on every refinement that must leave the bounds as they are, at random.
+func refined(r *rand.Rand, f0 float64) Spec {
+	between := func(a, b float64) float64 { return a + r.Float64()*(b-a) }
+	return Spec{
+		Frequency: f0, Decay: 0.3 * math.Pow(100, r.Float64()), Brightness: r.Float64(), Release: 0.2,
+		SecondMix: between(0.1, 0.6), SecondCents: between(-3, 3), SecondDecay: between(0.5, 2),
+		Strings: 1 + r.IntN(3), CourseCents: between(2, 20),
+		Excitation: Excitation{Kind: Kind(r.IntN(4)), Position: between(0.03, 0.5), Hardness: r.Float64(),
+			Touch: r.Float64(), Wave: Wave(r.IntN(3)), Ratio: 1},
+	}
+}
+
+// strandOf is a spec reduced to one of its strands, tuned and damped as it is there.
+func strandOf(spec Spec, s strand) Spec {
+	spec.Frequency *= octaves(s.cents)
+	if s.mode == 1 && spec.SecondDecay > 0 {
+		spec.Decay *= spec.SecondDecay
+	}
+	spec.SecondMix, spec.Strings = 0, 1
+	return spec
+}
+
+// partial measures the partial near f of a signal, or fails.
+func partial(t *testing.T, signal []float32, rate, f, spacing float64) measure.Mode {
+	t.Helper()
+	m, err := measure.Partial(signal, rate, f, spacing)
+	if err != nil {
+		t.Fatalf("partial at %.1f Hz: %v", f, err)
+	}
+	return m
+}
+
+// response is the gain of a whole trip at w, with the very taps and
+// coefficients that the loop computes with, and its group delay in samples.
+func (l *loop) response(w float64) (gain complex128, trip float64) {
+	at := func(w float64) complex128 {
+		var sum complex128
+		for i, h := range l.h {
+			sum += complex(float64(h), 0) * unit(-w*float64(l.length-center+i))
+		}
+		c := coefficients{loss: loss{twoPole: twoPole{l.c1, l.c2}}, sections: l.a}
+		z := unit(w)
+		shelf := complex(l.shelf[0], 0) * (z - complex(l.shelf[1], 0)) / (z - complex(l.shelf[2], 0))
+		return sum * shelf * c.rest(z, l.sections)
+	}
+	const step = 1e-6
+	gain = at(w)
+	turn := at(w+step) / at(w-step)
+	return gain, -math.Atan2(imag(turn), real(turn)) / (2 * step)
+}
