@@ -103,6 +103,9 @@ func TestLoopStaysBelowOne(t *testing.T) {
 	r := rand.New(rand.NewPCG(1, 1))
 	check := func(what string, l *loop) {
 		t.Helper()
+		if !(twoPole{l.c1, l.c2}).stable() {
+			t.Fatalf("%s: the loss filter's poles are outside: %g %g", what, l.c1, l.c2)
+		}
 		for i := 0; i <= 700; i++ {
 			w := math.Pi * float64(i) / 700
 			if i <= 100 { // closer together near zero, where a low-pass is at its highest

@@ -19,8 +19,7 @@ type mode struct {
 	shelfCorner   float64 // over the fundamental; 0 is no shelf
 }
 
-// lossStep is the distance between two loss filters of a mode, in octaves. In between
-// the coefficients are mixed, which keeps the loop below one.
+// lossStep is the distance between two loss filters of a mode, in octaves.
 const lossStep = 1.0 / 6
 
 // topPitch is the highest fundamental as a part of the rate. A string bent
@@ -222,11 +221,35 @@ func (m *mode) at(f0 float64, t touch, c *coefficients) {
 	c.direct = min(1, max(0, directFrom-c.delay))
 }
 
-// lossAt mixes the two loss filters of a table that are next to a pitch.
+// lossAt is a table's loss filter at a pitch, by cubic interpolation: linear
+// between filters a step apart, a vibrato would cost the treble some of its decay.
 func (m *mode) lossAt(table []loss, f0 float64) loss {
 	x := math.Log2(f0/m.lowest) / lossStep
 	i := min(max(int(x), 0), len(table)-2)
-	return table[i].mix(table[i+1], min(1, max(0, x-float64(i))))
+	t := min(1, max(0, x-float64(i)))
+	if i == 0 || i == len(table)-2 {
+		return table[i].mix(table[i+1], t)
+	}
+	// Lagrange's weights for places -1, 0, 1, 2
+	w := [4]float64{-t * (t - 1) * (t - 2) / 6, (t + 1) * (t - 1) * (t - 2) / 2, -(t + 1) * t * (t - 2) / 2, (t + 1) * t * (t - 1) / 6}
+	var out loss
+	for j, k := range w {
+		l := &table[i-1+j]
+		out.c1 += k * l.c1
+		out.c2 += k * l.c2
+		out.shelf.drop += k * l.shelf.drop
+		out.shelf.corner += k * l.shelf.corner
+	}
+	if !out.stable() {
+		return table[i].mix(table[i+1], t)
+	}
+	return out
+}
+
+// stable says that the poles lie inside the unit circle, by more than rounding.
+func (t twoPole) stable() bool {
+	const margin = 1e-9
+	return t.c2 < 1-margin && math.Abs(t.c1) < 1+t.c2-margin
 }
 
 // lowest is the least magnitude of the denominator over all frequencies: a gain
