@@ -96,37 +96,57 @@ func strands(spec Spec) []strand {
 	return out
 }
 
-// calibrate strikes the design as hard as can be and sets its gain by the peak.
+// calibrate strikes the design on a voice of its own and sets its gain by the
+// peak. The gain of noise is set for each burst, see rehearse.
 func (d *Design) calibrate() {
-	const strokes = 3 // of a burst of noise, whose peak is chance
 	period := 1 / d.pitch
-	length := int(d.maker.rate * (min(d.shape.length, 1) + 3*period))
 	slot := 2*int(d.maker.rate*period) + 16*Grid + 2*taps
 	v := newVoice(d.maker, len(d.strings)*slot)
-	out := make([]float32, length)
-	sum, energy, n := 0.0, 0.0, 1
-	if d.shape.kind == Noise {
-		n = strokes
-	}
-	for i := range n {
-		v.Reset()
-		v.Strike(d, 127, uint64(i)+1)
-		peak := float32(0)
-		for at := 0; at < length; at += Grid {
-			v.Render(out[at:min(at+Grid, length)], nil)
-			energy = max(energy, v.energy)
+	out := make([]float32, int(d.maker.rate*(min(d.shape.length, 1)+3*period)))
+	switch {
+	case d.shape.kind != Noise:
+		peak, energy := v.try(d, out, 127, 1)
+		if peak == 0 {
+			d.shape.gain = 0 // an empty sample: a string that nothing moves
+			return
 		}
-		for _, y := range out {
-			peak = max(peak, y, -y)
+		d.shape.gain = fullLevel / peak
+		d.hardest = energy * d.shape.gain * d.shape.gain
+	case d.shape.length <= 1.001*period:
+		_, d.hardest = v.try(d, out, 127, 1)
+	default:
+		d.shape.variants = d.vary(v, out)
+		_, d.hardest = v.try(d, out, 127, 1)
+	}
+}
+
+// vary plays some long bursts and sets their gains.
+func (d *Design) vary(v *Voice, out []float32) []variant {
+	made := make([]variant, variants)
+	for i := range made {
+		made[i].seed = mix64(uint64(i) + 1)
+		d.shape.variants = []variant{{seed: made[i].seed, gains: [...]float64{1, 1, 1}}}
+		for j, velocity := range variantVelocities {
+			hard := velocity / 127
+			peak, _ := v.try(d, out, velocity, 0)
+			made[i].gains[j] = fullLevel * hard * hard / peak
 		}
-		sum += float64(peak)
 	}
-	if sum == 0 {
-		d.shape.gain = 0 // an empty sample: a string that nothing moves
-		return
+	return made
+}
+
+// try strikes a design on an empty voice and finds the peak and the highest energy.
+func (v *Voice) try(d *Design, out []float32, velocity float64, seed uint64) (peak, energy float64) {
+	v.Reset()
+	v.Strike(d, velocity, seed)
+	for at := 0; at < len(out); at += Grid {
+		v.Render(out[at:min(at+Grid, len(out))], nil)
+		energy = max(energy, v.energy)
 	}
-	d.shape.gain = fullLevel * float64(n) / sum
-	d.hardest = energy * d.shape.gain * d.shape.gain
+	for _, y := range out {
+		peak = max(peak, math.Abs(float64(y)))
+	}
+	return peak, energy
 }
 
 // Frequency is the design's fundamental in Hz, at rest.

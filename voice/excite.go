@@ -21,8 +21,9 @@ type shape struct {
 	cycle    []float32 // one period of a tone, with its first sample again at the end
 	pitch    float64   // Hz of a tone
 	sample   []float32
-	rate     float64 // Hz of the sample
-	gain     float64 // makes the hardest stroke fullLevel loud
+	rate     float64   // Hz of the sample
+	gain     float64   // makes the hardest stroke fullLevel loud
+	variants []variant // of a long burst of noise
 }
 
 // newShape compiles an excitation for a fundamental f0 (Hz).
@@ -112,14 +113,16 @@ type stroke struct {
 	low        bool
 	b, c1, c2  float64 // low-pass that opens with the velocity
 	y1, y2     float64
-	block, x1  float64 // a high-pass a fourth of the fundamental: no force on the string's mean
+	block, x1  float64 // a high-pass a fourth of the fundamental, for no force on the string's mean
+	mean       float64 // what the mean keeps of itself in a frame: the high-pass's zero, so all of it is met
 	blocked    float64
 	blockScale float64
 }
 
-// start begins a stroke of a velocity (above 0 to 127) on a string at f0 (Hz).
-func (s *stroke) start(sh *shape, ip *interpolator, f0, rate, velocity float64, seed uint64) {
-	*s = stroke{shape: sh, ip: ip, rate: rate}
+// start begins a stroke of a velocity (above 0 to 127) on a string at f0 (Hz),
+// whose mean keeps the part mean of itself in a frame.
+func (s *stroke) start(sh *shape, ip *interpolator, f0, mean, rate, velocity float64, seed uint64) {
+	*s = stroke{shape: sh, ip: ip, mean: mean, rate: rate}
 	hard := min(1, max(0, velocity/127))
 	s.gain = float32(sh.gain * hard * hard) // 40 log10(v/127) dB: General MIDI 2
 	s.width = sh.width
@@ -127,13 +130,14 @@ func (s *stroke) start(sh *shape, ip *interpolator, f0, rate, velocity float64, 
 		s.width *= math.Pow(max(hard, 0.01), -0.25*sh.touch)
 	}
 	s.echo = sh.position * rate / f0
-	s.now, s.back = noiseCursor{seed: seed}, noiseCursor{seed: seed}
+	s.now = noiseCursor{seed: seed, length: sh.length * noiseRate}
+	s.back = s.now
 	s.openLow(f0, hard)
 	const quarter = 0.25
 	s.block = math.Exp(-2 * math.Pi * quarter * f0 / rate)
 	s.blockScale = (1 + s.block) / 2
 	tail := 12 / (1 - s.block)
-	s.last = int((sh.length+s.width-sh.width)*rate + s.echo + tail + 1)
+	s.last = int((sh.length+s.width-sh.width)*rate + s.echo + tail + taps*s.rate/min(s.rate, noiseRate) + 1)
 }
 
 // openLow sets the low-pass that opens with the velocity: Jaffe and Smith's
@@ -196,38 +200,42 @@ func (s *stroke) next() float64 {
 		s.y2, s.y1 = s.y1, y
 		x = y
 	}
-	s.blocked = float64(s.block*s.blocked) + float64(s.blockScale*(x-s.x1))
+	s.blocked = float64(s.block*s.blocked) + float64(s.blockScale*(x-float64(s.mean*s.x1)))
 	s.x1 = x
 	return s.blocked
 }
 
-// source is the force t frames after the stroke; t need not be whole.
+// source is the force t frames after the stroke; t need not be whole. What is
+// read between samples starts half a read's length later, so that nothing of it is cut off.
 func (s *stroke) source(t float64, cursor *noiseCursor) float64 {
 	sec := t / s.rate
+	sh := s.shape
+	switch sh.kind {
+	case Noise:
+		return cursor.at(sec*noiseRate-taps/2, s.ip)
+	case Sample:
+		return s.recorded(sec*sh.rate - taps/2)
+	}
 	if sec < 0 {
 		return 0
 	}
-	sh := s.shape
 	switch sh.kind {
 	case Pluck:
-		return corner((sec - 5*s.width) / s.width)
+		x := (sec - 5*s.width) / s.width
+		if sh.position == 0 {
+			return math.Exp(-0.5 * x * x) // no point to displace: the corner alone
+		}
+		return corner(x)
 	case Strike:
 		if sec >= 2*s.width {
 			return 0
 		}
 		return 0.5 - 0.5*math.Cos(math.Pi*sec/s.width)
-	case Sample:
-		return s.recorded(sec * sh.rate)
-	case Tone:
-		if sec >= sh.length {
-			return 0
-		}
-		return (1 - sec/sh.length) * sh.wave(sec)
 	default:
 		if sec >= sh.length {
 			return 0
 		}
-		return (1 - sec/sh.length) * cursor.at(sec*noiseRate, s.ip)
+		return (1 - sec/sh.length) * sh.wave(sec) * swell(sec/min(toneOnset, sh.length/4))
 	}
 }
 
@@ -243,6 +251,18 @@ func corner(x float64) float64 {
 	return 0.5 * math.Erfc(-x/math.Sqrt2)
 }
 
+// toneOnset is how long a tone takes to begin, s: without it, the kink would
+// reach beyond half the rate and sound different at each rate.
+const toneOnset = 0.0004
+
+// swell rises smoothly from 0 to 1 as x does.
+func swell(x float64) float64 {
+	if x >= 1 {
+		return 1
+	}
+	return 0.5 - 0.5*math.Cos(math.Pi*x)
+}
+
 // wave is a tone's value, a time (s) after its start.
 func (s *shape) wave(sec float64) float64 {
 	turns := sec * s.pitch
@@ -254,10 +274,8 @@ func (s *shape) wave(sec float64) float64 {
 
 // recorded is the sample at a place between its frames.
 func (s *stroke) recorded(place float64) float64 {
-	whole := int(place)
-	part := (place - float64(whole)) * rows
-	row := int(part)
-	h := &s.ip.table[row]
+	whole := int(math.Floor(place))
+	h := &s.ip.table[int((place-float64(whole))*rows)]
 	sum := float32(0)
 	for i, k := range h {
 		// a delay reads back, a place reads on: the taps are mirrored
@@ -268,31 +286,43 @@ func (s *stroke) recorded(place float64) float64 {
 	return float64(sum)
 }
 
-// noiseCursor reads white noise at places that grow, though not by whole
-// steps. Sample k of a seed's noise is a hash of the two, so any place can be
+// noiseCursor reads a fading burst of white noise at places that grow, though not by
+// whole steps. Sample k of a seed's noise is a hash of the two, so any place can be
 // read at any time: the echo needs no memory of what went before.
 type noiseCursor struct {
 	seed   uint64
+	length float64 // samples
 	whole  int
 	filled bool
 	window [taps]float32
 }
 
+// sample is sample k of the burst, which fades linearly.
+func (c *noiseCursor) sample(k int) float32 {
+	if k < 0 || float64(k) >= c.length {
+		return 0
+	}
+	return white(c.seed, k) * float32(1-float64(k)/c.length)
+}
+
 func (c *noiseCursor) at(place float64, ip *interpolator) float64 {
-	whole := int(place)
+	floor := math.Floor(place)
+	whole := int(floor)
+	if place == floor {
+		return float64(c.sample(whole))
+	}
 	switch {
 	case c.filled && whole == c.whole:
 	case c.filled && whole == c.whole+1:
 		copy(c.window[:], c.window[1:])
-		c.window[taps-1] = white(c.seed, whole+taps-1-center)
+		c.window[taps-1] = c.sample(whole + taps - 1 - center)
 	default:
 		for i := range c.window {
-			c.window[i] = white(c.seed, whole+i-center)
+			c.window[i] = c.sample(whole + i - center)
 		}
 	}
 	c.whole, c.filled = whole, true
-	row := int((place - float64(whole)) * rows)
-	h := &ip.table[row]
+	h := &ip.table[int((place-floor)*rows)]
 	sum := float32(0)
 	for i, k := range h {
 		sum += float32(k * c.window[i])
@@ -303,9 +333,6 @@ func (c *noiseCursor) at(place float64, ip *interpolator) float64 {
 // white is sample k of a seed's noise, even over -1 to 1: the finalizer of
 // Steele, Lea, Flood, "Fast Splittable Pseudorandom Number Generators", OOPSLA 2014.
 func white(seed uint64, k int) float32 {
-	if k < 0 {
-		return 0
-	}
 	return float32(int64(mix64(seed+uint64(k)*0x9e3779b97f4a7c15))>>40) / (1 << 23)
 }
 

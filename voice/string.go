@@ -473,6 +473,13 @@ func (l *loop) listen(out []float32) {
 	l.quiet = min(l.quiet, math.MaxInt32/2)
 }
 
+// meanKeeps is what the line's mean value keeps of itself in a frame.
+func (l *loop) meanKeeps() float64 {
+	c := &l.glide.target
+	trip := c.gain * real(c.loss.response(1))
+	return math.Pow(trip, l.glide.pitch/l.mode.rate)
+}
+
 // atRest says that the whole line is below silence.
 func (l *loop) atRest() bool { return l.quiet > l.keep() }
 

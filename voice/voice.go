@@ -11,8 +11,6 @@
 // Real-Time Sound Synthesis", JAES 44(5), 1996.
 package voice
 
-import "math"
-
 // maxLoops is a course of three strings in two polarizations each.
 const maxLoops = 6
 
@@ -77,47 +75,25 @@ func (v *Voice) Strike(d *Design, velocity float64, seed uint64) {
 		v.Fit(d)
 	}
 	v.Damp(0)
+	seed = mix64(seed)
+	gain := 0.0
+	if n := uint64(len(d.shape.variants)); n > 0 {
+		t := &d.shape.variants[seed%n]
+		seed, gain = t.seed, t.gain(velocity)
+	}
 	for i := range d.strings {
 		l := &v.loops[i]
 		s := &v.strokes[i][0]
 		if other := &v.strokes[i][1]; !s.over() && (other.over() || other.frame > s.frame) {
 			s = other
 		}
-		// each plane and string has a noise of its own: shared, they would cancel
-		s.start(&d.shape, v.maker.ip, l.glide.aim, v.maker.rate, velocity, mix64(seed)+uint64(i)*0xd1342543de82ef95)
-	}
-	if d.shape.kind == Noise {
-		v.even(velocity)
-	}
-}
-
-// even gives a short burst of noise, whose peak is a matter of chance, the peak
-// that its velocity asks for.
-func (v *Voice) even(velocity float64) {
-	const short = 0.025 // s; in a longer burst chance evens out by itself
-	d := v.design
-	if d.shape.length > short {
-		return
-	}
-	frames := int(d.shape.length*v.maker.rate) + taps
-	var trial [maxLoops]stroke
-	for i := range d.strings {
-		trial[i] = *v.latest(i)
-	}
-	peak := 0.0
-	for range frames {
-		sum := 0.0
-		for i, s := range d.strings {
-			sum += float64(s.mix) * trial[i].next()
+		s.start(&d.shape, v.maker.ip, l.glide.aim, l.meanKeeps(), v.maker.rate, velocity, strandSeed(seed, i))
+		if gain > 0 {
+			s.gain *= float32(gain)
 		}
-		peak = max(peak, math.Abs(sum))
 	}
-	if peak == 0 {
-		return
-	}
-	hard := velocity / 127
-	for i := range d.strings {
-		v.latest(i).gain = float32(fullLevel * hard * hard / peak)
+	if d.shape.kind == Noise && len(d.shape.variants) == 0 {
+		v.rehearse(velocity, seed)
 	}
 }
 
