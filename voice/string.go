@@ -69,7 +69,8 @@ type loop struct {
 	glide  glide
 	damped damping
 
-	quiet int // frames since the line was last above silence
+	loud  bool // the line has been above silence in this control step
+	quiet int  // frames since the last step in which it was
 }
 
 // glide is the way of a string's length and coefficients to where they are to be.
@@ -145,6 +146,7 @@ func (l *loop) need() int { return min(len(l.line), max(1024, 4*l.keep())) }
 
 // control prepares the next Grid frames.
 func (l *loop) control() {
+	l.listen()
 	g := &l.glide
 	moved := l.glideStep()
 	softened := l.damped.step()
@@ -436,7 +438,8 @@ func (l *loop) beginGlide() {
 	l.motion = gliding
 }
 
-// render appends len(out) frames: each is a trip's return plus e, the force.
+// render appends len(out) frames: each is a trip's return plus e, the force, which
+// may be nil.
 func (l *loop) render(out, e []float32) {
 	if l.w+len(out) > l.room {
 		l.slide()
@@ -451,7 +454,6 @@ func (l *loop) render(out, e []float32) {
 	default:
 		l.renderStill(out, e)
 	}
-	l.listen(out)
 }
 
 // slide moves the part of the line that is still needed to its front.
@@ -462,15 +464,14 @@ func (l *loop) slide() {
 	l.room = l.need()
 }
 
-// listen keeps account of how long the line has been silent.
-func (l *loop) listen(out []float32) {
-	for _, y := range out {
-		l.quiet++
-		if y > silence || y < -silence {
-			l.quiet = 0
-		}
+// listen keeps account, each control step, of how long the line has been silent.
+func (l *loop) listen() {
+	if l.loud {
+		l.quiet = 0
+	} else {
+		l.quiet = min(l.quiet+Grid, math.MaxInt32/2)
 	}
-	l.quiet = min(l.quiet, math.MaxInt32/2)
+	l.loud = false
 }
 
 // meanKeeps is what the line's mean value keeps of itself in a frame.
@@ -481,11 +482,11 @@ func (l *loop) meanKeeps() float64 {
 }
 
 // atRest says that the whole line is below silence.
-func (l *loop) atRest() bool { return l.quiet > l.keep() }
+func (l *loop) atRest() bool { return !l.loud && l.quiet > l.keep() }
 
 // end takes a trip through the filters and adds the force at its end.
 func (l *loop) end(x, e float32) float32 {
-	v := float64(x) - float64(l.c1*l.v1) - float64(l.c2*l.v2)
+	v := float64(x) - float64(l.c2*l.v2) - float64(l.c1*l.v1)
 	before := l.v1
 	l.v2, l.v1 = l.v1, v
 	if l.sections > 0 {
@@ -516,14 +517,45 @@ func (l *loop) renderStill(out, e []float32) {
 	first := l.w - l.length - (taps - 1 - center)
 	src := l.line[first : first+len(out)+taps-1]
 	dst := l.line[l.w : l.w+len(out)]
-	e = e[:len(out)]
-	for i := range out {
-		s := src[i : i+taps : i+taps]
-		y := l.end(read(s, &h), e[i])
-		dst[i] = y
-		out[i] = y
-	}
 	l.w += len(out)
+	if l.sections > 0 {
+		for i := range dst {
+			y := l.end(read(src[i:i+taps:i+taps], &h), at(e, i))
+			dst[i], out[i] = y, y
+		}
+		l.note(out)
+		return
+	}
+	c1, c2, v1, v2 := l.c1, l.c2, l.v1, l.v2
+	for i := range dst {
+		x := float64(read(src[i:i+taps:i+taps], &h)) - float64(c2*v2)
+		v2, v1 = v1, x-float64(c1*v1)
+		y := float32(v1)
+		if e != nil {
+			y += e[i]
+		}
+		dst[i], out[i] = y, y
+	}
+	l.v1, l.v2 = v1, v2
+	l.note(out)
+}
+
+// note takes down whether anything of what was rendered is above silence.
+func (l *loop) note(out []float32) {
+	for _, y := range out {
+		if y > silence || y < -silence {
+			l.loud = true
+			return
+		}
+	}
+}
+
+// at is a force that may be none at all.
+func at(e []float32, i int) float32 {
+	if e == nil {
+		return 0
+	}
+	return e[i]
 }
 
 // read is the dot product of the taps, the newest first, with twelve samples, the oldest first.
@@ -542,11 +574,12 @@ func (l *loop) renderRamping(out, e []float32) {
 			l.h[t] += l.dh[t]
 		}
 		first := l.w - l.length - (taps - 1 - center)
-		y := l.end(read(l.line[first:first+taps], &l.h), e[i])
+		y := l.end(read(l.line[first:first+taps], &l.h), at(e, i))
 		l.line[l.w] = y
 		out[i] = y
 		l.w++
 	}
+	l.note(out)
 }
 
 func (l *loop) moveFilters() {
@@ -566,11 +599,12 @@ func (l *loop) renderGliding(out, e []float32) {
 		l.moveFilters()
 		l.gain += l.dg
 		x := float32(l.gain * l.readAt(l.moveLength()))
-		y := l.end(x, e[i])
+		y := l.end(x, at(e, i))
 		l.line[l.w] = y
 		out[i] = y
 		l.w++
 	}
+	l.note(out)
 }
 
 // moveLength moves the smoothed delay by a frame and returns it (samples).
@@ -616,11 +650,12 @@ func (l *loop) renderTouched(out, e []float32) {
 		if d-side >= shortest && int(d+side)+taps < l.w {
 			x = float32((1-2*finger)*x) + float32(finger*(l.readAt(d-side)+l.readAt(d+side)))
 		}
-		y := l.end(float32(l.gain*x), e[i])
+		y := l.end(float32(l.gain*x), at(e, i))
 		l.line[l.w] = y
 		out[i] = y
 		l.w++
 	}
+	l.note(out)
 }
 
 // standGliding makes a glide that does not move of a string that stands.

@@ -33,7 +33,8 @@ type Voice struct {
 	palm   float64 // 0 to 1
 	dark   float64 // 0 to 1
 	energy float64
-	leak   float64 // of the energy, a frame
+	power  float64 // summed over the present control step
+	leak   float64 // of the energy, a control step
 
 	fading bool
 	fade   float32
@@ -62,8 +63,8 @@ func (v *Voice) Fit(d *Design) {
 		}
 	}
 	const hear = 0.02 // s
-	v.leak = 1 / (v.maker.rate * max(hear, 2/d.pitch))
-	v.fresh, v.phase, v.energy, v.fading, v.fade = true, 0, 0, false, 1
+	v.leak = min(1, Grid/(v.maker.rate*max(hear, 2/d.pitch)))
+	v.fresh, v.phase, v.energy, v.power, v.fading, v.fade = true, 0, 0, 0, false, 1
 	v.cents, v.palm, v.dark = 0, 0, 0
 }
 
@@ -222,6 +223,8 @@ func (v *Voice) Render(out, drive []float32) {
 
 // control prepares the next Grid frames.
 func (v *Voice) control() {
+	v.energy += (v.power/Grid - v.energy) * v.leak
+	v.power = 0
 	if v.design.tension > 0 {
 		v.retune()
 	}
@@ -238,26 +241,43 @@ func (v *Voice) control() {
 
 // chunk renders frames that lie within one control step.
 func (v *Voice) chunk(out, drive []float32) {
-	clear(out)
-	y := v.y[:len(out)]
 	for i, s := range v.design.strings {
-		e := v.e[:len(out)]
-		clear(e)
-		copy(e, drive)
-		for j := range v.strokes[i] {
-			v.strokes[i][j].render(e)
+		y := out
+		if i > 0 {
+			y = v.y[:len(out)]
 		}
-		v.loops[i].render(y, e)
-		for k, x := range y {
-			out[k] += float32(s.mix * x)
+		v.loops[i].render(y, v.force(i, len(out), drive))
+		switch {
+		case i > 0:
+			for k, x := range y {
+				out[k] += float32(s.mix * x)
+			}
+		case s.mix != 1:
+			for k, x := range y {
+				out[k] = s.mix * x
+			}
 		}
 	}
 	if v.fading {
 		v.fadeOut(out)
 	}
 	for _, x := range out {
-		v.energy += (float64(x)*float64(x) - v.energy) * v.leak
+		v.power += float64(x * x)
 	}
+}
+
+// force is what drives loop i over n frames, or nil when nothing does.
+func (v *Voice) force(i, n int, drive []float32) []float32 {
+	if drive == nil && v.strokes[i][0].over() && v.strokes[i][1].over() {
+		return nil
+	}
+	e := v.e[:n]
+	clear(e)
+	copy(e, drive)
+	for j := range v.strokes[i] {
+		v.strokes[i][j].render(e)
+	}
+	return e
 }
 
 func (v *Voice) fadeOut(out []float32) {
