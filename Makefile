@@ -4,7 +4,13 @@ SHELL := /bin/bash
 .SHELLFLAGS := -euo pipefail -c
 
 # All but the end-to-end tests, which play in real time and so run alone and last.
-RACE := ./config/... ./engine/... ./midiin/... ./voice/...
+ROOMS := ./config/... ./engine/... ./midiin/... ./voice/...
+
+# The rooms where goroutines meet. Of voice, which has none of its own, only what
+# several may share: its measurements take minutes under the detector. The PortAudio
+# binding passes a number as a pointer, which the detector's pointer check takes amiss.
+RACE := ./config/... ./engine/... ./midiin/...
+RACE_FLAGS := -race -short -gcflags=github.com/gordonklaus/portaudio=-d=checkptr=0
 FUZZTIME ?= 10s
 GO ?= go
 
@@ -32,13 +38,15 @@ run: build
 test:
 	@.ci/needs test
 	$(GO) vet ./...
-	$(GO) test -race $(RACE)
-	$(GO) test $(RACE)
+	$(GO) test $(RACE_FLAGS) $(RACE)
+	$(GO) test $(RACE_FLAGS) -run 'Shared|Cuts' ./voice
+	$(GO) test $(ROOMS)
 	$(GO) test ./cmd/...
 
 race:
 	@.ci/needs build
-	$(GO) test -race $(RACE)
+	$(GO) test $(RACE_FLAGS) $(RACE)
+	$(GO) test $(RACE_FLAGS) -run 'Shared|Cuts' ./voice
 
 bench:
 	@.ci/needs build
