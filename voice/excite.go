@@ -156,7 +156,8 @@ func (s *stroke) openLow(f0, hard float64) {
 		return
 	}
 	xOf := func(f float64) float64 { return 1 - math.Cos(2*math.Pi*f/s.rate) }
-	fa, fb := min(corner, 5000), min(12000, 0.4*s.rate)
+	fb := min(12000, 0.4*s.rate)
+	fa := min(corner, 5000, fb/2)
 	xa, xb := xOf(fa), xOf(fb)
 	ya, yb := fa*fa/(corner*corner), fb*fb/(corner*corner)
 	p2 := max(0, (yb/xb-ya/xa)/(xb-xa))
