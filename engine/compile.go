@@ -66,8 +66,12 @@ func Compile(p *config.Patch, rate int) (*Compiled, error) {
 	}
 	for i := range p.Zones {
 		z := &p.Zones[i]
+		var recorded []float32
+		if s := z.Excitation.Sample; s != nil {
+			recorded = resample(s.Data, s.Rate, rate) // once for all the zone's keys
+		}
 		for key := max(z.Low, 0); key <= min(z.High, 127); key++ {
-			if err := c.keys[key].compile(p, z.At(key), c.maker); err != nil {
+			if err := c.keys[key].compile(p, z.At(key), recorded, c.maker); err != nil {
 				return nil, fmt.Errorf("patch %s: zone %d: %w", p.Path, i+1, err)
 			}
 			c.keys[key].coupling *= c.resonance
@@ -83,12 +87,13 @@ func (c *Compiled) Title() string { return c.title }
 // Rate is the sample rate in Hz that the patch was compiled for.
 func (c *Compiled) Rate() int { return c.rate }
 
-func (k *compiledKey) compile(p *config.Patch, v config.Values, maker *voice.Maker) error {
+func (k *compiledKey) compile(p *config.Patch, v config.Values, recorded []float32, maker *voice.Maker) error {
 	frequency := p.Tuning.A4 * math.Exp2((k.pitch-69)/12)
 	spec, err := specOf(v, frequency)
 	if err != nil {
 		return err
 	}
+	spec.Excitation.Sample, spec.Excitation.SampleRate = recorded, maker.Rate()
 	k.design = maker.Design(spec)
 	k.gain = float32(amplitude(p.Level + v.Level))
 	k.pan = v.Pan / 2
@@ -129,10 +134,6 @@ func specOf(v config.Values, frequency float64) (voice.Spec, error) {
 			Wave:     wave,
 			Ratio:    v.Ratio,
 		},
-	}
-	if v.Sample != nil {
-		spec.Excitation.Sample = v.Sample.Data
-		spec.Excitation.SampleRate = float64(v.Sample.Rate)
 	}
 	return spec, nil
 }
