@@ -26,9 +26,10 @@ type Compiled struct {
 // is silent.
 type compiledKey struct {
 	design *voice.Design
-	pitch  float64 // semitones above key 0 in equal temperament on the patch's A4
-	gain   float32 // of zone and patch
-	pan    float64 // -0.5 to +0.5, added to the channel's place
+	single *voice.Design // what sounds along in sympathy
+	pitch  float64       // semitones above key 0 in equal temperament on the patch's A4
+	gain   float32       // of zone and patch
+	pan    float64       // -0.5 to +0.5, added to the channel's place
 	// coupling is the part of the bridge's motion that drives the key's string in
 	// sympathy.
 	coupling float32
@@ -95,6 +96,7 @@ func (k *compiledKey) compile(p *config.Patch, v config.Values, recorded []float
 	}
 	spec.Excitation.Sample, spec.Excitation.SampleRate = recorded, maker.Rate()
 	k.design = maker.Design(spec)
+	k.single = k.design.Single()
 	k.gain = float32(amplitude(p.Level + v.Level))
 	k.pan = v.Pan / 2
 	// One trip round the loop loses this part of the amplitude. Driven in tune for

@@ -134,7 +134,7 @@ func (s *sympathetic) step(key uint8, lifted float64, moving bool, patch *Compil
 
 // start lays the string ready without a stroke.
 func (s *sympathetic) start(own *compiledKey, patch *Compiled, pan *panTable) {
-	s.voice.Fit(own.design)
+	s.voice.Fit(own.single)
 	s.patch, s.live, s.fading = patch, true, false
 	s.damp, s.cents, s.from, s.to = 0, 0, 0, 0
 	s.left, s.right = pan.gains(0.5 + own.pan)

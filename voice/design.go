@@ -149,6 +149,15 @@ func (v *Voice) try(d *Design, out []float32, velocity float64, seed uint64) (pe
 	return peak, energy
 }
 
+// Single is the design reduced to one string in one plane, without tension, for
+// where many strings sound along.
+func (d *Design) Single() *Design {
+	one := *d
+	one.strings = []strand{{mode: d.strings[0].mode, mix: 1}}
+	one.tension = 0
+	return &one
+}
+
 // Frequency is the design's fundamental in Hz, at rest.
 func (d *Design) Frequency() float64 { return d.pitch }
 

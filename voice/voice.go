@@ -11,6 +11,8 @@
 // Real-Time Sound Synthesis", JAES 44(5), 1996.
 package voice
 
+import "math"
+
 // maxLoops is a course of three strings in two polarizations each.
 const maxLoops = 6
 
@@ -29,12 +31,12 @@ type Voice struct {
 
 	phase int // frames of the present control step that are done
 
-	cents  float64 // from the design's pitch, asked for
-	palm   float64 // 0 to 1
-	dark   float64 // 0 to 1
-	energy float64
-	power  float64 // summed over the present control step
-	leak   float64 // of the energy, a control step
+	cents, strain float64 // from the design's pitch: asked for, and by tension
+	palm          float64 // 0 to 1
+	dark          float64 // 0 to 1
+	energy        float64
+	power         float64 // summed over the present control step
+	leak          float64 // of the energy, a control step
 
 	fading bool
 	fade   float32
@@ -65,7 +67,7 @@ func (v *Voice) Fit(d *Design) {
 	const hear = 0.02 // s
 	v.leak = min(1, Grid/(v.maker.rate*max(hear, 2/d.pitch)))
 	v.fresh, v.phase, v.energy, v.power, v.fading, v.fade = true, 0, 0, 0, false, 1
-	v.cents, v.palm, v.dark = 0, 0, 0
+	v.cents, v.strain, v.palm, v.dark = 0, 0, 0, 0
 }
 
 // Strike sets the strings going with a velocity above 0 to 127. A voice that
@@ -120,10 +122,7 @@ func (v *Voice) Tune(cents float64) {
 
 // retune gives each string its pitch, with the tension of the present energy.
 func (v *Voice) retune() {
-	cents := v.cents
-	if d := v.design; d.tension > 0 && d.hardest > 0 {
-		cents += d.tension * min(1, v.energy/d.hardest)
-	}
+	cents := v.cents + v.strain
 	for i, s := range v.design.strings {
 		l := &v.loops[i]
 		f0 := l.hold(v.design.pitch * octaves(cents+s.cents))
@@ -225,8 +224,8 @@ func (v *Voice) Render(out, drive []float32) {
 func (v *Voice) control() {
 	v.energy += (v.power/Grid - v.energy) * v.leak
 	v.power = 0
-	if v.design.tension > 0 {
-		v.retune()
+	if d := v.design; d.tension > 0 && d.hardest > 0 {
+		v.tighten(d.tension * min(1, v.energy/d.hardest))
 	}
 	for i := range v.design.strings {
 		l := &v.loops[i]
@@ -237,6 +236,20 @@ func (v *Voice) control() {
 			}
 		}
 	}
+}
+
+// tighten follows the strings' tension, cents sharp, in steps too small to hear, so
+// that a string that has almost settled need not move at every step.
+func (v *Voice) tighten(cents float64) {
+	const step = 0.02 // cents
+	if math.Abs(cents-v.strain) < step && (cents > step || v.strain == 0) {
+		return
+	}
+	v.strain = cents
+	if cents <= step {
+		v.strain = 0
+	}
+	v.retune()
 }
 
 // chunk renders frames that lie within one control step.
