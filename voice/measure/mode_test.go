@@ -149,7 +149,6 @@ func TestPartialAmongHundreds(t *testing.T) {
 			t.Fatal(err)
 		}
 		cent, part := math.Abs(Cents(m.Frequency, c.f0)), math.Abs(m.T60/c.t60-1)
-		t.Logf("%g Hz, T60 %g s: off by %.2g cent, %.2g %% (residual %.0f dB)", c.f0, c.t60, cent, 100*part, m.Residual)
 		if cent > 0.0005 || part > 0.0005 {
 			t.Errorf("%g Hz, T60 %g s: off by %.2g cent, %.2g %% (residual %.0f dB)", c.f0, c.t60, cent, 100*part, m.Residual)
 		}
