@@ -695,7 +695,7 @@ keys = "60"
 			zoned + `inharmonicity = 0.01
 `,
 			[]string{
-				`stays.toml:3: zone.inharmonicity: found 0.01; allowed is 0 to 0.005, or a pair of such; write 0.005 or less`,
+				`stays.toml:3: zone.inharmonicity: found 0.01; allowed is 0 to 0.002, or a pair of such; write 0.002 or less`,
 			},
 		},
 		{

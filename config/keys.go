@@ -60,7 +60,7 @@ func PatchKeys() []Key {
 		{Name: "zone.release", Form: Pair, Low: 0.01, High: 30, Unit: "s", Default: "0.15", Hears: "time in which a key that is let go falls by 60 dB: 0.01 stops dead, 30 hardly damps"},
 		{Name: "zone.level", Form: Pair, Low: -60, High: 12, Unit: "dB", Default: "0", Hears: "loudness of these keys beside the others: -60 is all but silent, +12 four times the force"},
 		{Name: "zone.pan", Form: Pair, Low: -1, High: 1, Default: "0", Hears: "place between the loudspeakers: -1 is the left one, +1 the right one"},
-		{Name: "zone.inharmonicity", Form: Pair, Low: 0, High: 0.005, Default: "0", Hears: "stiffness, B of f_n = n f0' sqrt(1 + B n^2): 0 is a limp string, 0.0003 a piano's middle, 0.005 a bar's clang"},
+		{Name: "zone.inharmonicity", Form: Pair, Low: 0, High: 0.002, Default: "0", Hears: "stiffness, B of f_n = n f0' sqrt(1 + B n^2): 0 is a limp string, 0.0003 a piano's middle, 0.002 a bar's clang"},
 		{Name: "zone.tension", Form: Pair, Low: 0, High: 100, Unit: "cents", Default: "0", Hears: "how sharp the hardest stroke begins before it settles: 0 is steady, 100 begins a semitone high and twangs"},
 
 		{Name: "zone.excitation", Form: Table, Hears: "how the strings are set going"},

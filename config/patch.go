@@ -37,7 +37,7 @@ type Zone struct {
 	Release       Span // s: T60 after the key is let go, 0.01 to 30
 	Level         Span // dB, -60 to +12
 	Pan           Span // -1 left to +1 right
-	Inharmonicity Span // B of f_n = n f0' sqrt(1 + B n^2), 0 to 0.005
+	Inharmonicity Span // B of f_n = n f0' sqrt(1 + B n^2), 0 to 0.002
 	Tension       Span // cents sharp at the start of the hardest stroke, 0 to 100
 
 	Excitation Excitation

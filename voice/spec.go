@@ -42,7 +42,7 @@ type Spec struct {
 	Decay         float64 // s: T60 of the fundamental, 0.05 to 120
 	Brightness    float64 // 0 dark to 1 bright
 	Release       float64 // s: T60 under the damper
-	Inharmonicity float64 // B, 0 to 0.005
+	Inharmonicity float64 // B, 0 to 0.002
 	Tension       float64 // cents sharp at the start of the hardest stroke
 
 	SecondMix   float64 // part of the stroke in the second polarization, 0 to 1
