@@ -31,6 +31,7 @@ its highest.
 
 Built in are: ` + strings.Join(config.Builtins(), ", ") + ".",
 		prepare: func(o *options) func(context.Context, streams, []string) error {
+			pictures := o.String("plot", "", "draw decay, brightness, spectrum and pitch of each patch as SVG pictures into the folder `DIR`")
 			text := o.Bool("text", false, "print the text of each file instead: a built-in patch to start your own from")
 			return func(ctx context.Context, s streams, args []string) error {
 				if len(args) == 0 {
@@ -38,6 +39,9 @@ Built in are: ` + strings.Join(config.Builtins(), ", ") + ".",
 				}
 				if *text {
 					return printTexts(s.out, args)
+				}
+				if *pictures != "" {
+					return plotPatches(ctx, s, *pictures, args)
 				}
 				return check(ctx, s, args)
 			}
