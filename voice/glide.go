@@ -131,16 +131,20 @@ func (l *loop) leaveDirect() {
 	}
 }
 
-// pitchOf finds the pitch (Hz) at which a loop has this delay.
+// pitchOf finds the pitch (Hz) at which a loop has this delay, by halving: the
+// delay falls as the pitch rises.
 func (l *loop) pitchOf(delay float64) float64 {
 	var c coefficients
-	f := l.glide.pitch
-	for range 20 {
-		l.mode.at(f, l.glide.touch, &c)
-		// dD/df = -rate/f^2, but for the filters' lag
-		f = min(max(f+(c.delay-delay)*f*f/l.mode.rate, l.mode.lowest), topPitch*l.mode.rate)
+	low, high := l.mode.lowest, topPitch*l.mode.rate
+	for range 40 {
+		f := math.Sqrt(low * high)
+		if l.mode.at(f, l.glide.touch, &c); c.delay > delay {
+			low = f
+		} else {
+			high = f
+		}
 	}
-	return f
+	return low
 }
 
 // approach moves coefficients a part of the way to others.
@@ -159,6 +163,9 @@ func (c *coefficients) approach(to *coefficients, part float64, sections int) {
 func (l *loop) safeGain() float64 {
 	c := &l.glide.stage[2]
 	low := c.loss.lowest()
+	if low <= 0 {
+		return 0
+	}
 	d := math.Abs(c.loss.c1-l.c1) + math.Abs(c.loss.c2-l.c2)
 	return min(c.gain, ceiling*max(0, low-d*d/(2*low)))
 }
@@ -192,7 +199,7 @@ func (l *loop) directNow(out *[taps]float64) {
 	directTaps(z, func(z complex128) complex128 { return c.rest(z, l.sections) }, out)
 	if c.direct < 1 {
 		var h [taps]float64
-		l.ip.at(c.delay-shortest, &h)
+		l.ip.at(min(1, c.delay-shortest), &h)
 		for i := range out {
 			out[i] = c.direct*out[i] + (1-c.direct)*c.gain*h[i]
 		}
@@ -287,7 +294,8 @@ func (l *loop) beginGlide() {
 		l.gain = sum // the taps of a delay add up to the read's gain
 	}
 	aim := max(g.target.delay, shortest+0.5)
-	g.slope = (aim - g.from) / Grid
+	// a touch moves the delay too, by the lag of its darker filter
+	g.slope = min(slew, max(-slew, (aim-g.from)/Grid))
 	l.dg = (gain - l.gain) / Grid
 	l.rampFilters()
 	l.motion = gliding

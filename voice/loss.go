@@ -58,7 +58,9 @@ type twoPole struct{ c1, c2 float64 }
 func fitLoss(f0, rate float64, nepers func(f float64) float64) (t twoPole, worst float64) {
 	xOf := func(f float64) float64 { return 1 - math.Cos(2*math.Pi*f/rate) }
 	x0 := xOf(f0)
-	p0 := math.Exp(2 * nepers(f0))
+	const gone = 3 // nepers more than the fundamental: what dies as fast is gone with the stroke
+	own := nepers(f0)
+	p0 := math.Exp(2 * own)
 	lightest := nepers(0)
 
 	top := min(9000, 0.45*rate)
@@ -70,7 +72,7 @@ func fitLoss(f0, rate float64, nepers func(f float64) float64) (t twoPole, worst
 	f, apart := f0, math.Pow(top/f0, 1.0/lossPoints)
 	for i := range at {
 		f *= apart
-		n := nepers(f)
+		n := min(nepers(f), own+gone)
 		lightest = min(lightest, n)
 		target := math.Exp(2 * n)
 		x := xOf(f)

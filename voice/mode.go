@@ -124,8 +124,11 @@ func (m *mode) lineFor(f0 float64, l loss) float64 {
 func (m *mode) fitShelf(l law, f0, t0, corner, shortest float64, trip func(f float64) float64) shelf {
 	const points = 24
 	top := min(4000, 0.4*m.rate, 200*f0)
-	if corner == 0 || top < 2*f0 {
+	if corner == 0 {
 		return shelf{}
+	}
+	if top < 2*f0 {
+		return shelf{corner: corner * t0} // nothing to serve, yet it goes on with its neighbours
 	}
 	var v, extra, whole [points]float64
 	for i := range points {
@@ -202,7 +205,10 @@ func (m *mode) at(f0 float64, t touch, c *coefficients) {
 	slowness += t.palm * (1/m.dullDecay - slowness)
 	w := 2 * math.Pi * f0 / m.rate
 	sigma := decayNepers * slowness / m.rate
-	c.shrink = math.Exp(-sigma)
+	// a string that is gone within a period has no frequency to be exact at, and the
+	// filters answer nonsense so far inside the unit circle
+	const most = 1.5 // nepers a period
+	c.shrink = math.Exp(-min(sigma, most*w/(2*math.Pi)))
 	z := cmplx.Rect(c.shrink, w)
 	lag := -cmplx.Phase(c.loss.response(z))
 	if len(m.sections) > 0 {
@@ -246,9 +252,14 @@ func (m *mode) lossAt(table []loss, f0 float64) loss {
 	return out
 }
 
+// stable says that all poles lie inside the unit circle.
+func (l loss) stable() bool {
+	return l.twoPole.stable() && l.shelf.corner >= 0 && l.shelf.drop >= 0 && l.shelf.drop < 1
+}
+
 // stable says that the poles lie inside the unit circle, by more than rounding.
 func (t twoPole) stable() bool {
-	const margin = 1e-9
+	const margin = 1e-12
 	return t.c2 < 1-margin && math.Abs(t.c1) < 1+t.c2-margin
 }
 

@@ -13,6 +13,9 @@ type shelf struct {
 
 // filter gives k, zero and pole of k (1 - zero/z)/(1 - pole/z), by the bilinear transform.
 func (s shelf) filter() (k, zero, pole float64) {
+	if s.drop == 0 {
+		return 1, 0, 0
+	}
 	a, t := 1-s.drop, s.corner
 	return (1 + a*t) / (1 + t), (1 - a*t) / (1 + a*t), (1 - t) / (1 + t)
 }
