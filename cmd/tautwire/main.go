@@ -52,6 +52,8 @@ func main() {
 	// Sound libraries are hushed by closing standard error to them.
 	if apart, err := output.Stderr(); err == nil {
 		s.err = apart
+		// so that a crash tells itself there, hushed or not
+		_ = debug.SetCrashOutput(apart, debug.CrashOptions{})
 	}
 	os.Exit(run(context.Background(), os.Args[1:], s))
 }
