@@ -31,7 +31,8 @@ its highest.
 
 Built in are: ` + strings.Join(config.Builtins(), ", ") + ".",
 		prepare: func(o *options) func(context.Context, streams, []string) error {
-			pictures := o.String("plot", "", "draw decay, brightness, spectrum and pitch of each patch as SVG pictures into the folder `DIR`")
+			pictures := o.String("plot", "", "instead, play each patch and draw how its keys decay, how bright and how true they are, and the spectra of three, into the folder `DIR`")
+			form := o.choice("as", pictureSVG, "what --plot draws: `svg` or png", pictureSVG, picturePNG)
 			text := o.Bool("text", false, "print the text of each file instead: a built-in patch to start your own from")
 			return func(ctx context.Context, s streams, args []string) error {
 				if len(args) == 0 {
@@ -41,7 +42,7 @@ Built in are: ` + strings.Join(config.Builtins(), ", ") + ".",
 					return printTexts(s.out, args)
 				}
 				if *pictures != "" {
-					return plotPatches(ctx, s, *pictures, args)
+					return plotPatches(ctx, s, *pictures, *form, args)
 				}
 				return check(ctx, s, args)
 			}

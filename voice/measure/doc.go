@@ -12,6 +12,7 @@
 //	two or three close modes (courses, polarizations) Modes
 //	a whole picture, or the depth of a null           NewSpectrum, Level
 //	a curve to plot                                   Decay, Spectrogram
+//	what an ear makes of modes that beat              Track
 //	a click in a bend                                 Click
 //	how loud a piece is                               Loudness
 //	a limit that must not be passed                   Peak, RMS, Mean

@@ -79,9 +79,9 @@ func (t Track) Pitch(from, to float64) float64 {
 	return t.near + cmplx.Phase(turn)/(2*math.Pi*t.hop)
 }
 
-// Fall is how long in s a level takes from its peak until it stays the given dB below. Where the curve
-// ends before, the straight line through the half of it that comes after the peak's half goes on. It is NaN for
-// silence and for what does not fall.
+// Fall is how long in s a level takes from its peak until it stays the given dB below. Where the
+// curve ends before, it is drawn out straight by its later half from the peak on. It is NaN for silence
+// and for what does not fall.
 func (c Curve) Fall(depth float64) float64 {
 	peak := -1
 	for i, v := range c.DB {
@@ -108,7 +108,7 @@ func (c Curve) Fall(depth float64) float64 {
 	return c.Time[last] + part*(c.Time[last+1]-c.Time[last]) - c.Time[peak]
 }
 
-// falling draws the later half of the curve out to the floor, by least squares.
+// falling draws the curve's later half out to the floor, by least squares.
 func (c Curve) falling(peak int, floor float64) float64 {
 	from := (peak + len(c.DB)) / 2
 	n := float64(len(c.DB) - from)
