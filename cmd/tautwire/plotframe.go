@@ -25,9 +25,11 @@ func colours() palette {
 	}
 }
 
-// frame is a picture's title, its legend in one line below, and the room that is left.
+// frame is a picture's title, its legend in one line below, and what the values are, above
+// their axis.
 type frame struct {
 	title  string
+	unit   string
 	legend []legendEntry
 }
 
@@ -42,24 +44,27 @@ func (f *frame) add(name string, thumb plot.Thumbnailer) {
 
 // draw writes title and legend, and gives the room below them.
 func (f *frame) draw(c draw.Canvas) draw.Canvas {
-	const titleRoom, legendRoom, indent = 24, 20, 4
+	const titleRoom, legendRoom, unitRoom, indent, thumb = 26, 22, 18, 4, 24
 	title := writing(15, colours().ink)
 	title.YAlign = draw.YTop
 	c.FillText(title, vg.Point{X: c.Min.X + indent, Y: c.Max.Y}, f.title)
 	c = draw.Crop(c, 0, 0, 0, -titleRoom)
-	if len(f.legend) == 0 {
-		return c
-	}
 	left := vg.Length(indent)
 	for _, e := range f.legend {
 		l := plot.NewLegend()
-		l.Top, l.Left, l.TextStyle, l.ThumbnailWidth = true, true, writing(11, colours().ink), 24
+		l.Top, l.Left, l.TextStyle, l.ThumbnailWidth = true, true, writing(11, colours().ink), thumb
 		l.Add(e.name, e.thumb)
 		l.Draw(draw.Crop(c, left, 0, 0, 0))
 		// Room to spare for a viewer's wider font.
-		left += 24 + writing(11, nil).Width(e.name)*1.15 + 24
+		left += thumb + l.TextStyle.Width(e.name)*1.15 + thumb
 	}
-	return draw.Crop(c, 0, 0, 0, -legendRoom)
+	if len(f.legend) > 0 {
+		c = draw.Crop(c, 0, 0, 0, -legendRoom)
+	}
+	unit := writing(11, colours().grey)
+	unit.YAlign = draw.YTop
+	c.FillText(unit, vg.Point{X: c.Min.X + indent, Y: c.Max.Y}, f.unit)
+	return draw.Crop(c, 0, 0, 0, -unitRoom)
 }
 
 // writing is text of a size in points.
@@ -71,11 +76,11 @@ func writing(points float64, c color.Color) draw.TextStyle {
 	}
 }
 
-// newAxes is an empty plot with labels, ready for its ranges.
-func newAxes(x, y string) *plot.Plot {
+// newAxes is an empty plot, ready for its ranges.
+func newAxes(x string) *plot.Plot {
 	p := plot.New()
 	ink := colours().ink
-	p.X.Label.Text, p.Y.Label.Text = x, y
+	p.X.Label.Text = x
 	for _, a := range []*plot.Axis{&p.X, &p.Y} {
 		label, tick := writing(12, ink), writing(11, ink)
 		label.XAlign, tick.XAlign = a.Label.TextStyle.XAlign, a.Tick.Label.XAlign
@@ -90,8 +95,8 @@ func newAxes(x, y string) *plot.Plot {
 
 // newKeyAxes is a plot over the keys of a patch, its zones shaded and named, whose values go from
 // low to high.
-func newKeyAxes(patch *config.Patch, y string, low, high float64) (*plot.Plot, error) {
-	p := newAxes("key, each struck alone at velocity "+strconv.Itoa(plotVelocity)+" and held", y)
+func newKeyAxes(patch *config.Patch, low, high float64) (*plot.Plot, error) {
+	p := newAxes("key, each struck alone at velocity "+strconv.Itoa(plotVelocity)+" and held")
 	first, last := patch.Zones[0].Low, patch.Zones[len(patch.Zones)-1].High
 	p.X.Min, p.X.Max = float64(first)-1, float64(last)+1
 	p.Y.Min, p.Y.Max = low, high

@@ -90,12 +90,12 @@ func drawDecay(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 	second := func(k keySound) float64 { return k.second }
 	measured := func(k keySound) float64 { return k.decay }
 	low, high := logRange(append(append(of(keys, asked), of(keys, second)...), of(keys, measured)...))
-	p, err := newKeyAxes(patch, "s to fall by 60 dB", low, high)
+	p, err := newKeyAxes(patch, low, high)
 	if err != nil {
 		return err
 	}
 	p.Y.Scale, p.Y.Tick.Marker = plot.LogScale{}, logTicks{}
-	f := &frame{title: patch.Title + ": how long each key rings"}
+	f := &frame{title: patch.Title + ": how long each key rings", unit: "seconds to fall by 60 dB"}
 	if err := addLines(f, p, "asked for", colours().ink, false, runs(patch, keys, asked)); err != nil {
 		return err
 	}
@@ -114,12 +114,12 @@ func drawBrightness(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 	bright := func(k keySound) float64 { return k.bright }
 	later := func(k keySound) float64 { return k.brightLater }
 	low, high := logRange(append(append(of(keys, pitch), of(keys, bright)...), of(keys, later)...))
-	p, err := newKeyAxes(patch, "centre of the spectrum, Hz", low, high)
+	p, err := newKeyAxes(patch, low, high)
 	if err != nil {
 		return err
 	}
 	p.Y.Scale, p.Y.Tick.Marker = plot.LogScale{}, logTicks{}
-	f := &frame{title: patch.Title + ": how bright each key is"}
+	f := &frame{title: patch.Title + ": how bright each key is", unit: "Hz, the centre of the spectrum"}
 	if err := addLines(f, p, "the fundamental, the darkest that a key can be", colours().grey, true, runs(patch, keys, pitch)); err != nil {
 		return err
 	}
@@ -143,28 +143,37 @@ func drawBrightness(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 func drawPitch(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 	flat := func(k keySound) float64 { return k.flat }
 	sharp := func(k keySound) float64 { return k.sharp }
-	onset := func(k keySound) float64 { return k.onset }
-	settled := func(k keySound) float64 { return k.settled }
+	onset := func(k keySound) float64 {
+		if k.values.Tension == 0 {
+			return math.NaN()
+		}
+		return k.onset
+	}
 	tense, spread := false, false
 	reach := 0.1 // cents: what lies nearer is shown as in tune
+	var settled plotter.XYs
 	for _, k := range keys {
 		tense = tense || k.values.Tension > 0
 		spread = spread || k.flat != 0 || k.sharp != 0
-		for _, v := range []float64{k.flat, k.sharp, k.onset, k.settled} {
-			if !math.IsNaN(v) {
-				reach = max(reach, math.Abs(v))
-			}
+		for _, v := range append([]float64{k.flat, k.sharp}, k.settled...) {
+			reach = max(reach, math.Abs(v))
+		}
+		if k.values.Tension > 0 && !math.IsNaN(k.onset) {
+			reach = max(reach, math.Abs(k.onset))
+		}
+		for _, v := range k.settled {
+			settled = append(settled, plotter.XY{X: float64(k.key), Y: v})
 		}
 	}
 	reach = roundLog(reach*1.1, 1)
-	p, err := newKeyAxes(patch, "cents from its pitch", -reach, reach)
+	p, err := newKeyAxes(patch, -reach, reach)
 	if err != nil {
 		return err
 	}
 	p.Y.Tick.Marker = plot.ConstantTicks(centTicks(reach))
-	f := &frame{title: patch.Title + ": how true each key is"}
+	f := &frame{title: patch.Title + ": how true each key is", unit: "cents from its pitch"}
 	if spread {
-		if err := addBands(f, p, "where the strings of the key are tuned", runs(patch, keys, flat), runs(patch, keys, sharp)); err != nil {
+		if err := addBands(f, p, "where the key's strings are tuned", runs(patch, keys, flat), runs(patch, keys, sharp)); err != nil {
 			return err
 		}
 	}
@@ -173,7 +182,7 @@ func drawPitch(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 			return err
 		}
 	}
-	if err := addDots(f, p, "measured as it dies away", colours().blue, draw.CircleGlyph{}, runs(patch, keys, settled)); err != nil {
+	if err := addDots(f, p, "as it dies away", colours().blue, draw.CircleGlyph{}, []plotter.XYs{settled}); err != nil {
 		return err
 	}
 	p.Draw(f.draw(c))

@@ -4,6 +4,7 @@ import (
 	"context"
 	"math"
 	"runtime"
+	"slices"
 	"sync"
 
 	"tautwire/config"
@@ -33,8 +34,9 @@ type keySound struct {
 	second      float64 // s asked for in the second plane; NaN without one of its own
 	flat, sharp float64 // cents: the lowest and the highest of the key's strings, from pitch
 
-	decay          float64 // s the fundamental takes to fall by 60 dB
-	onset, settled float64 // cents from pitch: just after the stroke, and towards the end
+	decay   float64   // s the fundamental takes to fall by 60 dB
+	onset   float64   // cents from pitch just after the stroke, the body aside: what tension does
+	settled []float64 // cents from pitch as it dies away, of each string that can be told apart
 
 	stroke, later       measure.Spectrum // just after the stroke, and a second later
 	bright, brightLater float64          // Hz: their centres
@@ -58,6 +60,10 @@ func soundKeys(ctx context.Context, s streams, patch *config.Patch) ([]keySound,
 	if err != nil {
 		return nil, err
 	}
+	bare, err := withoutBody(compiled, patch)
+	if err != nil {
+		return nil, err
+	}
 	keys := keysToPlay(patch)
 	sounds := make([]keySound, len(keys))
 	next, done := make(chan int, len(keys)), make(chan struct{}, len(keys))
@@ -70,7 +76,7 @@ func soundKeys(ctx context.Context, s streams, patch *config.Patch) ([]keySound,
 		workers.Go(func() {
 			for i := range next {
 				if ctx.Err() == nil {
-					sounds[i] = soundKey(compiled, patch, keys[i])
+					sounds[i] = soundKey(compiled, bare, patch, keys[i])
 				}
 				done <- struct{}{}
 			}
@@ -86,7 +92,19 @@ func soundKeys(ctx context.Context, s streams, patch *config.Patch) ([]keySound,
 	return sounds, ctx.Err()
 }
 
-func soundKey(compiled *engine.Compiled, patch *config.Patch, key int) keySound {
+// withoutBody is a patch whose strings sound alone, where tension bends them: what a body rings with in
+// the first moments would hide that. It is the patch itself where nothing is to be hidden.
+func withoutBody(compiled *engine.Compiled, patch *config.Patch) (*engine.Compiled, error) {
+	tense := slices.ContainsFunc(patch.Zones, func(z config.Zone) bool { return z.Tension != config.Span{} })
+	if !tense || patch.Body.Mix == 0 {
+		return compiled, nil
+	}
+	bare := *patch
+	bare.Body = config.Body{}
+	return engine.Compile(&bare, plotRate)
+}
+
+func soundKey(compiled, bare *engine.Compiled, patch *config.Patch, key int) keySound {
 	zone, _ := patch.Zone(key)
 	k := keySound{key: key, values: zone.At(key), second: math.NaN()}
 	k.pitch = measure.Shift(patch.Tuning.A4, 100*float64(key-69)+patch.Tuning.Cents[key%12])
@@ -103,18 +121,29 @@ func soundKey(compiled *engine.Compiled, patch *config.Patch, key int) keySound 
 	case v.SecondMix > 0:
 		k.flat, k.sharp = min(k.flat, k.flat+v.SecondCents), max(k.sharp, k.sharp+v.SecondCents)
 	}
-	k.listen(playAlone(compiled, key))
+	k.listen(playAlone(compiled, key, plotLongest))
+
+	const (
+		begin  = 0.03 // s: the blow itself is over
+		moment = 0.3  // s
+	)
+	end := begin + max(moment, 10/k.pitch)
+	k.onset = math.NaN()
+	if track, err := measure.NewTrack(playAlone(bare, key, int(end*plotRate)), plotRate, k.pitch, k.pitch); err == nil {
+		k.onset = measure.Cents(track.Pitch(begin, end), k.pitch)
+	}
 	return k
 }
 
-// playAlone strikes a key and holds it until it is no more heard, both sides added.
-func playAlone(compiled *engine.Compiled, key int) []float32 {
+// playAlone strikes a key and holds it until it is no more heard, or a little longer than some frames; both sides
+// are added.
+func playAlone(compiled *engine.Compiled, key, frames int) []float32 {
 	e := engine.New(compiled, engine.Options{Rate: plotRate, Timing: engine.Offline, Voices: 8})
 	e.Send(engine.Event{Kind: engine.NoteOn, Key: uint8(key), Value: plotVelocity})
 	out := make([]float32, 2*plotPart)
 	var note []float32
 	loudest := math.Inf(-1)
-	for len(note) < plotLongest {
+	for len(note) < frames {
 		e.Render(out)
 		for i := range plotPart {
 			note = append(note, (out[2*i]+out[2*i+1])/2)
@@ -130,8 +159,12 @@ func playAlone(compiled *engine.Compiled, key int) []float32 {
 
 // listen measures a note.
 func (k *keySound) listen(note []float32) {
-	k.listenToFundamental(note)
-
+	k.decay = math.NaN()
+	if track, err := measure.NewTrack(note, plotRate, k.pitch, k.pitch); err == nil {
+		level := track.Level()
+		k.decay = level.Fall(ringing)
+		k.tellStrings(note, level)
+	}
 	window := int(max(0.3, 10/k.pitch) * plotRate) // tells the partials apart
 	k.stroke = measure.NewSpectrum(note[:min(window, len(note))], plotRate)
 	k.bright, k.brightLater = centre(k.stroke), math.NaN()
@@ -145,24 +178,32 @@ func (k *keySound) listen(note []float32) {
 	}
 }
 
-func (k *keySound) listenToFundamental(note []float32) {
-	k.decay, k.onset, k.settled = math.NaN(), math.NaN(), math.NaN()
-	track, err := measure.NewTrack(note, plotRate, k.pitch, k.pitch)
-	if err != nil {
-		return // beyond the rate
+// tellStrings finds the pitches of as many of the key's strings and planes as can be told apart while the fundamental falls
+// from 15 to 55 dB below its loudest, or in the last half.
+func (k *keySound) tellStrings(note []float32, level measure.Curve) {
+	const sure = 0.05 // cents of standard deviation
+	from, to := plotRate*level.Fall(15), plotRate*level.Fall(55)
+	if math.IsNaN(from) || math.IsNaN(to) {
+		return
 	}
-	level := track.Level()
-	k.decay = level.Fall(ringing)
-	const (
-		begin  = 0.03 // s: the blow itself is over
-		moment = 0.3  // s
-	)
-	k.onset = measure.Cents(track.Pitch(begin, begin+max(moment, 10/k.pitch)), k.pitch)
-
-	// Settled is what has fallen by 20 to 50 dB, or else the last quarter.
-	end := float64(len(note)) / plotRate
-	from := min(level.Fall(20), 0.75*end)
-	k.settled = measure.Cents(track.Pitch(from, min(end, level.Fall(50))), k.pitch)
+	part := note[int(min(from, float64(len(note))/2)):int(min(to, float64(len(note))))]
+	strings := max(1, k.values.Strings)
+	if k.values.SecondMix > 0 && k.values.SecondMix < 1 {
+		strings *= 2
+	}
+	for n := strings; n > 0; n-- {
+		modes, err := measure.Modes(part, plotRate, k.pitch, k.pitch, n)
+		unsure := slices.ContainsFunc(modes, func(m measure.Mode) bool {
+			return measure.Cents(k.pitch+m.Sigma, k.pitch) > sure
+		})
+		if err != nil || unsure {
+			continue
+		}
+		for _, m := range modes {
+			k.settled = append(k.settled, measure.Cents(m.Frequency, k.pitch))
+		}
+		return
+	}
 }
 
 // centre is the mean frequency in Hz of what can be heard of a spectrum, weighted by amplitude; NaN for silence.

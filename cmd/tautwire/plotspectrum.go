@@ -50,7 +50,7 @@ func drawSpectra(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 		top = 0 // all are silent
 	}
 	top = 10 * math.Ceil((top+10)/10)
-	f := &frame{title: patch.Title + ": the partials of a low, a middle and a high key"}
+	f := &frame{title: patch.Title + ": the partials of a low, a middle and a high key", unit: "dB below full scale"}
 	var rows [][]*plot.Plot
 	for i, k := range three {
 		entries := f
@@ -76,17 +76,16 @@ func drawSpectra(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 
 // spectrumOf draws one key at its stroke and a second later, its partials numbered.
 func spectrumOf(f *frame, k keySound, top float64) (*plot.Plot, error) {
-	p := newAxes("", "level, dB")
+	p := newAxes("")
 	p.X.Scale, p.X.Tick.Marker = plot.LogScale{}, logTicks{}
 	p.X.Min, p.X.Max, p.Y.Min, p.Y.Max = spectrumLow, spectrumHigh, top-spectrumDepth, top
+	p.Y.Tick.Marker = plot.ConstantTicks(levelTicks(p.Y.Min, p.Y.Max))
 	addGrid(p)
-	if err := addLines(f, p, "at the stroke", colours().orange, false, []plotter.XYs{outline(k.stroke, p.Y.Min)}); err != nil {
+	if err := addLines(f, p, "at the stroke", colours().orange, false, outline(k.stroke, p.Y.Min)); err != nil {
 		return nil, err
 	}
-	if later := outline(k.later, p.Y.Min); len(later) > 0 {
-		if err := addLines(f, p, "a second later", colours().blue, false, []plotter.XYs{later}); err != nil {
-			return nil, err
-		}
+	if err := addLines(f, p, "a second later", colours().blue, false, outline(k.later, p.Y.Min)); err != nil {
+		return nil, err
 	}
 	marks := partials(k, p.Y.Min)
 	if err := addDots(f, p, "partials, by their numbers", colours().ink, draw.CircleGlyph{}, []plotter.XYs{marks.XYs}); err != nil {
@@ -105,23 +104,33 @@ func spectrumOf(f *frame, k keySound, top float64) (*plot.Plot, error) {
 		p.Add(numbers)
 	}
 	name, err := plotter.NewLabels(plotter.XYLabels{
-		XYs:    plotter.XYs{{X: spectrumHigh, Y: top}},
+		XYs:    plotter.XYs{{X: spectrumLow, Y: top}},
 		Labels: []string{fmt.Sprintf("%s, %s Hz", config.KeyName(k.key), plainly(k.pitch))},
 	})
 	if err != nil {
 		return nil, err
 	}
 	name.TextStyle[0] = writing(13, colours().ink)
-	name.TextStyle[0].XAlign, name.TextStyle[0].YAlign = draw.XRight, draw.YTop
-	name.Offset = vg.Point{X: -6, Y: -5}
+	name.TextStyle[0].YAlign = draw.YTop
+	name.Offset = vg.Point{X: 6, Y: -5}
 	p.Add(name)
 	return p, nil
 }
 
-// outline is a spectrum as its highest points, as fine as can be seen, no lower than floor.
-func outline(s measure.Spectrum, floor float64) plotter.XYs {
+// levelTicks are 20 dB apart.
+func levelTicks(low, high float64) []plot.Tick {
+	const step = 20
+	var ticks []plot.Tick
+	for v := step * math.Ceil(low/step); v <= high; v += step {
+		ticks = append(ticks, plot.Tick{Value: v, Label: plainly(v)})
+	}
+	return ticks
+}
+
+// outline is a spectrum as its highest points, as fine as can be seen, where it stands above the floor.
+func outline(s measure.Spectrum, floor float64) []plotter.XYs {
 	const columns = 1600
-	var out plotter.XYs
+	var points plotter.XYs
 	column := -1
 	for i, level := range s.DB {
 		hz := float64(i) * s.Step
@@ -132,9 +141,22 @@ func outline(s measure.Spectrum, floor float64) plotter.XYs {
 		at := int(columns * math.Log(hz/spectrumLow) / math.Log(spectrumHigh/spectrumLow))
 		if at != column {
 			column = at
-			out = append(out, plotter.XY{X: hz, Y: level})
-		} else if last := &out[len(out)-1]; level > last.Y {
+			points = append(points, plotter.XY{X: hz, Y: level})
+		} else if last := &points[len(points)-1]; level > last.Y {
 			*last = plotter.XY{X: hz, Y: level}
+		}
+	}
+	var out []plotter.XYs
+	from := 0
+	for i := range points {
+		switch low := points[i].Y <= floor; {
+		case low && i > from+1: // stood above since
+			out = append(out, points[from:i+1])
+			from = i
+		case low:
+			from = i
+		case i == len(points)-1:
+			out = append(out, points[from:])
 		}
 	}
 	return out
