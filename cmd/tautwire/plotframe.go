@@ -96,7 +96,7 @@ func newAxes(x string) *plot.Plot {
 // newKeyAxes is a plot over the keys of a patch, its zones shaded and named, whose values go from
 // low to high.
 func newKeyAxes(patch *config.Patch, low, high float64) (*plot.Plot, error) {
-	p := newAxes("key, each struck alone at velocity "+strconv.Itoa(plotVelocity)+" and held")
+	p := newAxes("key, each struck alone at velocity " + strconv.Itoa(plotVelocity) + " and held")
 	first, last := patch.Zones[0].Low, patch.Zones[len(patch.Zones)-1].High
 	p.X.Min, p.X.Max = float64(first)-1, float64(last)+1
 	p.Y.Min, p.Y.Max = low, high

@@ -178,23 +178,24 @@ func (k *keySound) listen(note []float32) {
 	}
 }
 
-// tellStrings finds the pitches of as many of the key's strings and planes as can be told apart while the fundamental falls
-// from 15 to 55 dB below its loudest, or in the last half.
+// tellStrings finds as many of the key's strings and planes as can be told apart while the fundamental falls
+// from 15 to 55 dB below its loudest, or in the last half. Their decay is free of the beats that
+// the level has.
 func (k *keySound) tellStrings(note []float32, level measure.Curve) {
 	const sure = 0.05 // cents of standard deviation
 	from, to := plotRate*level.Fall(15), plotRate*level.Fall(55)
 	if math.IsNaN(from) || math.IsNaN(to) {
 		return
 	}
-	part := note[int(min(from, float64(len(note))/2)):int(min(to, float64(len(note))))]
+	begin, end := int(min(from, float64(len(note))/2)), int(min(to, float64(len(note))))
 	strings := max(1, k.values.Strings)
 	if k.values.SecondMix > 0 && k.values.SecondMix < 1 {
 		strings *= 2
 	}
 	for n := strings; n > 0; n-- {
-		modes, err := measure.Modes(part, plotRate, k.pitch, k.pitch, n)
+		modes, err := measure.Modes(note[begin:end], plotRate, k.pitch, k.pitch, n)
 		unsure := slices.ContainsFunc(modes, func(m measure.Mode) bool {
-			return measure.Cents(k.pitch+m.Sigma, k.pitch) > sure
+			return m.T60 <= 0 || measure.Cents(k.pitch+m.Sigma, k.pitch) > sure
 		})
 		if err != nil || unsure {
 			continue
@@ -202,8 +203,34 @@ func (k *keySound) tellStrings(note []float32, level measure.Curve) {
 		for _, m := range modes {
 			k.settled = append(k.settled, measure.Cents(m.Frequency, k.pitch))
 		}
+		k.decay = fallOf(modes, float64(begin)/plotRate)
 		return
 	}
+}
+
+// fallOf is how long in s modes that were measured from a time on (s) take together to fall by 60 dB from the
+// stroke.
+func fallOf(modes []measure.Mode, since float64) float64 {
+	power := func(t float64) float64 {
+		var sum float64
+		for _, m := range modes {
+			sum += math.Pow(10, m.Level/10-ringing/10*(t-since)/m.T60)
+		}
+		return sum
+	}
+	floor := power(0) * math.Pow(10, -ringing/10)
+	low, high := 0.0, 0.0 // s
+	for _, m := range modes {
+		high = max(high, m.T60) // none outlasts its own T60
+	}
+	for high-low > 1e-6*high {
+		if mid := (low + high) / 2; power(mid) > floor {
+			low = mid
+		} else {
+			high = mid
+		}
+	}
+	return high
 }
 
 // centre is the mean frequency in Hz of what can be heard of a spectrum, weighted by amplitude; NaN for silence.

@@ -50,7 +50,7 @@ func drawSpectra(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 		top = 0 // all are silent
 	}
 	top = 10 * math.Ceil((top+10)/10)
-	f := &frame{title: patch.Title + ": the partials of a low, a middle and a high key", unit: "dB below full scale"}
+	f := &frame{title: patch.Title + ": the partials of a low, a middle and a high key", unit: "dB from full scale"}
 	var rows [][]*plot.Plot
 	for i, k := range three {
 		entries := f
@@ -178,7 +178,7 @@ func partials(k keySound, floor float64) plotter.XYLabels {
 			continue
 		}
 		label := ""
-		if n <= numbered || n == 10 || n == 12 || n == last {
+		if n <= numbered {
 			label = strconv.Itoa(int(n))
 		}
 		out.XYs = append(out.XYs, plotter.XY{X: at, Y: level})
