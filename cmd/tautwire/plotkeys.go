@@ -120,7 +120,7 @@ func drawBrightness(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 	}
 	p.Y.Scale, p.Y.Tick.Marker = plot.LogScale{}, logTicks{}
 	f := &frame{title: patch.Title + ": how bright each key is", unit: "Hz, the centre of the spectrum"}
-	if err := addLines(f, p, "the fundamental, the darkest that a key can be", colours().grey, true, runs(patch, keys, pitch)); err != nil {
+	if err := addLines(f, p, "the fundamental", colours().grey, true, runs(patch, keys, pitch)); err != nil {
 		return err
 	}
 	for _, l := range []struct {

@@ -183,11 +183,13 @@ func (k *keySound) listen(note []float32) {
 // the level has.
 func (k *keySound) tellStrings(note []float32, level measure.Curve) {
 	const sure = 0.05 // cents of standard deviation
-	from, to := plotRate*level.Fall(15), plotRate*level.Fall(55)
-	if math.IsNaN(from) || math.IsNaN(to) {
-		return
+	begin, end := len(note)/2, len(note)
+	if fall := level.Fall(15) * plotRate; fall < float64(begin) {
+		begin = int(fall)
 	}
-	begin, end := int(min(from, float64(len(note))/2)), int(min(to, float64(len(note))))
+	if fall := level.Fall(55) * plotRate; fall < float64(end) {
+		end = int(fall)
+	}
 	strings := max(1, k.values.Strings)
 	if k.values.SecondMix > 0 && k.values.SecondMix < 1 {
 		strings *= 2

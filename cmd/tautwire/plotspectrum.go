@@ -20,6 +20,8 @@ const (
 	spectrumLow   = 20.0 // Hz
 	spectrumHigh  = 20000.0
 	spectrumDepth = 90.0 // dB from top to bottom
+
+	nameRoom = 16.0 // dB above the highest partial, for the key's name
 )
 
 // threeKeys are a low, a middle and a high one, of a piano's keys where the patch has such.
@@ -49,7 +51,7 @@ func drawSpectra(c draw.Canvas, patch *config.Patch, keys []keySound) error {
 	if math.IsInf(top, -1) {
 		top = 0 // all are silent
 	}
-	top = 10 * math.Ceil((top+10)/10)
+	top = 10 * math.Ceil((top+nameRoom)/10)
 	f := &frame{title: patch.Title + ": the partials of a low, a middle and a high key", unit: "dB from full scale"}
 	var rows [][]*plot.Plot
 	for i, k := range three {
@@ -105,14 +107,14 @@ func spectrumOf(f *frame, k keySound, top float64) (*plot.Plot, error) {
 	}
 	name, err := plotter.NewLabels(plotter.XYLabels{
 		XYs:    plotter.XYs{{X: spectrumLow, Y: top}},
-		Labels: []string{fmt.Sprintf("%s, %s Hz", config.KeyName(k.key), plainly(k.pitch))},
+		Labels: []string{fmt.Sprintf("%s, %s Hz", config.KeyName(k.key), strconv.FormatFloat(k.pitch, 'f', max(0, 2-int(math.Log10(k.pitch))), 64))},
 	})
 	if err != nil {
 		return nil, err
 	}
 	name.TextStyle[0] = writing(13, colours().ink)
 	name.TextStyle[0].YAlign = draw.YTop
-	name.Offset = vg.Point{X: 6, Y: -5}
+	name.Offset = vg.Point{X: 6, Y: -3}
 	p.Add(name)
 	return p, nil
 }
