@@ -291,6 +291,20 @@ func TestPlotOfNothing(t *testing.T) {
 	}
 }
 
+// TestPlotOfShortNote: what is left of a note after it has died away has no brightness.
+func TestPlotOfShortNote(t *testing.T) {
+	k := keySound{key: 69, pitch: 440, second: math.NaN()}
+	note := make([]float32, 2*plotRate)
+	for i := range note {
+		fall := math.Pow(10, -3*float64(i)/plotRate/0.5)
+		note[i] = float32(0.5 * fall * math.Sin(2*math.Pi*440*float64(i)/plotRate))
+	}
+	k.listen(note)
+	if math.Abs(k.decay-0.5) > 1e-3 || math.Abs(k.bright-440) > 10 || !math.IsNaN(k.brightLater) {
+		t.Errorf("falls in %g s, centred on %g Hz and %g Hz later; want 0.5 s, 440 Hz and none", k.decay, k.bright, k.brightLater)
+	}
+}
+
 func TestLogAxis(t *testing.T) {
 	for _, c := range []struct {
 		values    []float64

@@ -216,7 +216,7 @@ func fallOf(modes []measure.Mode, since float64) float64 {
 	power := func(t float64) float64 {
 		var sum float64
 		for _, m := range modes {
-			sum += math.Pow(10, m.Level/10-ringing/10*t/m.T60)
+			sum += math.Pow(10, m.Level/10-ringing/10*(t-since)/m.T60)
 		}
 		return sum
 	}
