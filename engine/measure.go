@@ -171,15 +171,6 @@ func (h *Histogram) Quantile(q float64) int64 {
 	return h.max
 }
 
-// Merge adds all that other has counted.
-func (h *Histogram) Merge(other *Histogram) {
-	for i, n := range other.buckets {
-		h.buckets[i] += n
-	}
-	h.n += other.n
-	h.max = max(h.max, other.max)
-}
-
 // bucketOf: below 32 each number has its own bucket; above, the number's highest six
 // bits say which.
 func bucketOf(t int64) int {

@@ -100,7 +100,7 @@ func strands(spec Spec) []strand {
 // peak. The gain of noise is set for each burst, see rehearse.
 func (d *Design) calibrate() {
 	period := 1 / d.pitch
-	slot := 2*int(d.maker.rate*period) + 16*Grid + 2*taps
+	slot := int(2.1*d.maker.rate*period) + 16*Grid + 2*taps // room for strings tuned lower
 	v := newVoice(d.maker, len(d.strings)*slot)
 	out := make([]float32, int(d.maker.rate*(min(d.shape.length, 1)+3*period)))
 	switch {
@@ -157,12 +157,6 @@ func (d *Design) Single() *Design {
 	one.tension = 0
 	return &one
 }
-
-// Frequency is the design's fundamental in Hz, at rest.
-func (d *Design) Frequency() float64 { return d.pitch }
-
-// Loops is how many delay lines the design's strings need.
-func (d *Design) Loops() int { return len(d.strings) }
 
 // octaves is an interval in cents as a factor.
 func octaves(cents float64) float64 { return math.Exp2(cents / 1200) }

@@ -110,19 +110,26 @@ type stroke struct {
 
 	now, back noiseCursor
 
-	low        bool
-	b, c1, c2  float64 // low-pass that opens with the velocity
-	y1, y2     float64
-	block, x1  float64 // a high-pass a fourth of the fundamental, for no force on the string's mean
-	mean       float64 // what the mean keeps of itself in a frame: the high-pass's zero, so all of it is met
-	blocked    float64
-	blockScale float64
+	low       bool
+	b, c1, c2 float64 // low-pass that opens with the velocity
+	y1, y2    float64
+	steady    highPass // leaves nothing of the force on the mean of what is heard
+	fading    highPass // nor on the mean that rings on in the line
+}
+
+// highPass is (1 - zero/z)/(1 - pole/z), scaled to one at half the rate.
+type highPass struct{ zero, pole, x, y float64 }
+
+func (h *highPass) next(x float64) float64 {
+	h.y = float64(h.pole*h.y) + float64((1+h.pole)/(1+h.zero)*(x-float64(h.zero*h.x)))
+	h.x = x
+	return h.y
 }
 
 // start begins a stroke of a velocity (above 0 to 127) on a string at f0 (Hz),
 // whose mean keeps the part mean of itself in a frame.
 func (s *stroke) start(sh *shape, ip *interpolator, f0, mean, rate, velocity float64, seed uint64) {
-	*s = stroke{shape: sh, ip: ip, mean: mean, rate: rate}
+	*s = stroke{shape: sh, ip: ip, rate: rate}
 	hard := min(1, max(0, velocity/127))
 	s.gain = float32(sh.gain * hard * hard) // 40 log10(v/127) dB: General MIDI 2
 	s.width = sh.width
@@ -133,11 +140,11 @@ func (s *stroke) start(sh *shape, ip *interpolator, f0, mean, rate, velocity flo
 	s.now = noiseCursor{seed: seed, length: sh.length * noiseRate}
 	s.back = s.now
 	s.openLow(f0, hard)
-	const quarter = 0.25
-	s.block = math.Exp(-2 * math.Pi * quarter * f0 / rate)
-	s.blockScale = (1 + s.block) / 2
-	tail := 12 / (1 - s.block)
-	s.last = int((sh.length+s.width-sh.width)*rate + s.echo + tail + taps*s.rate/min(s.rate, noiseRate) + 1)
+	const below = 0.2 // of the fundamental
+	pole := math.Exp(-2 * math.Pi * below * f0 / rate)
+	s.steady, s.fading = highPass{zero: 1, pole: pole}, highPass{zero: mean, pole: pole}
+	tail := 15 / (1 - pole)
+	s.last = int((sh.length+2*(s.width-sh.width))*rate + s.echo + tail + taps*s.rate/min(s.rate, noiseRate) + 1)
 }
 
 // openLow sets the low-pass that opens with the velocity: Jaffe and Smith's
@@ -201,9 +208,7 @@ func (s *stroke) next() float64 {
 		s.y2, s.y1 = s.y1, y
 		x = y
 	}
-	s.blocked = float64(s.block*s.blocked) + float64(s.blockScale*(x-float64(s.mean*s.x1)))
-	s.x1 = x
-	return s.blocked
+	return s.fading.next(s.steady.next(x))
 }
 
 // source is the force t frames after the stroke; t need not be whole. What is

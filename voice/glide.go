@@ -29,7 +29,7 @@ type glide struct {
 	target  coefficients
 	stage   [3]coefficients
 	direct  [3]float64 // the smoothed pitch (Hz) of a direct read
-	inReach bool       // the read is direct, wholly or in part
+	short   bool       // the read is direct, wholly or in part
 }
 
 // hold clamps a pitch to what the line and the rate can sound.
@@ -46,7 +46,7 @@ func (l *loop) settle() {
 	for i := range g.s {
 		g.s[i], g.stage[i], g.direct[i] = g.target.delay, g.target, g.pitch
 	}
-	g.inReach = g.target.direct > 0
+	g.short = g.target.direct > 0
 }
 
 // glideStep moves the pitch towards its aim and says whether anything moves.
@@ -70,7 +70,7 @@ func (l *loop) glideStep() bool {
 		}
 		g.stage[i].approach(in, g.step, l.sections)
 	}
-	if g.inReach {
+	if g.short {
 		in := g.pitch
 		for i := range g.direct {
 			g.direct[i] += (in - g.direct[i]) * g.step
@@ -97,7 +97,7 @@ func (l *loop) glideStep() bool {
 func (g *glide) arrived() bool { return g.pitch == g.aim && g.touch == touch{g.palmAim, g.darkAim} }
 
 func (g *glide) atRest() bool {
-	if g.inReach {
+	if g.short {
 		return g.direct[2] == g.pitch
 	}
 	return g.s[2] == g.target.delay
@@ -110,7 +110,7 @@ func (l *loop) enterDirect() {
 	for i := range g.direct {
 		g.direct[i] = now
 	}
-	g.inReach = true
+	g.short = true
 }
 
 // leaveDirect goes back to a fractional delay once the string is long enough.
@@ -124,7 +124,7 @@ func (l *loop) leaveDirect() {
 	if c.direct > 0 {
 		return
 	}
-	g.inReach = false
+	g.short = false
 	g.from = c.delay
 	for i := range g.s {
 		g.s[i] = c.delay
@@ -174,11 +174,12 @@ func (l *loop) safeGain() float64 {
 // in them, and returns the whole part of the delay.
 func (l *loop) tapsNow(out *[taps]float64) (length int) {
 	g := &l.glide
-	if !g.inReach {
+	if !g.short {
 		length = int(g.s[2])
 		l.ip.at(g.s[2]-float64(length), out)
+		gain := l.safeGain()
 		for i := range out {
-			out[i] *= l.safeGain()
+			out[i] *= gain
 		}
 	} else {
 		length = shortest

@@ -99,7 +99,7 @@ func (l *loop) control() {
 	moved := l.glideStep()
 	softened := l.damped.step()
 	switch {
-	case moved && !g.inReach:
+	case moved && !g.short:
 		l.beginGlide()
 	case moved || softened:
 		l.beginRamp()
@@ -117,7 +117,7 @@ func (l *loop) render(out, e []float32) {
 		l.slide()
 	}
 	switch {
-	case l.damped.finger > 0 && !l.glide.inReach:
+	case l.damped.finger > 0 && !l.glide.short:
 		l.renderTouched(out, e)
 	case l.motion == gliding:
 		l.renderGliding(out, e)

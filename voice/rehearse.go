@@ -5,7 +5,7 @@ import "math"
 // A burst of noise peaks by chance, the more so the fewer samples a period has, so its level
 // is set by playing it in advance. A burst of one period cannot meet its own
 // return: its peak is found at the stroke. Of a longer one the string is part, so some
-// bursts are played when the design is made, and each stroke takes the next of them.
+// bursts are played when the design is made, and each stroke takes one of them.
 
 // variants is how many long bursts a design knows.
 const variants = 8
