@@ -165,11 +165,10 @@ func TestStiffStringsKeepTheirPartials(t *testing.T) {
 	}
 }
 
-// TestMeasuredPianoStrings renders strings of the stiffness that was measured on two piano
-// strings and compares their partials with the measured ones. The source is in
-// the head of the table; its rows are themselves up to 0.42 cent off the law.
-func TestMeasuredPianoStrings(t *testing.T) {
-	file, err := os.Open("../testdata/piano-strings.csv")
+// published reads a table of published values, whose head names its source.
+func published(t *testing.T, name string, want int) [][]string {
+	t.Helper()
+	file, err := os.Open("../testdata/" + name)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -177,12 +176,20 @@ func TestMeasuredPianoStrings(t *testing.T) {
 	read := csv.NewReader(file)
 	read.Comment = '#'
 	rows, err := read.ReadAll()
-	if err != nil || len(rows) != 3 {
-		t.Fatalf("%d rows, %v; want a head and two strings", len(rows), err)
+	if err != nil || len(rows) != want+1 {
+		t.Fatalf("%s: %d rows, %v; want a head and %d", name, len(rows), err, want)
 	}
-	for _, row := range rows[1:] {
+	return rows[1:]
+}
+
+// TestMeasuredPianoStrings renders strings of the stiffness that was measured on two piano
+// strings and compares their partials with the measured ones. The source is in
+// the head of the table; its rows are themselves up to 0.42 cent off the law.
+func TestMeasuredPianoStrings(t *testing.T) {
+	for _, row := range published(t, "piano-strings.csv", 2) {
 		var f [9]float64 // partials 1 to 8, then B
 		for i := range f {
+			var err error
 			if f[i], err = strconv.ParseFloat(row[1+i], 64); err != nil {
 				t.Fatal(err)
 			}
@@ -206,18 +213,7 @@ func TestMeasuredPianoStrings(t *testing.T) {
 // TestTuningTable checks hz and the rendered pitch of the table's keys against the MIDI
 // Tuning Standard's values.
 func TestTuningTable(t *testing.T) {
-	file, err := os.Open("../testdata/midi-tuning.csv")
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer file.Close()
-	read := csv.NewReader(file)
-	read.Comment = '#'
-	rows, err := read.ReadAll()
-	if err != nil || len(rows) < 7 {
-		t.Fatalf("%d rows, %v", len(rows), err)
-	}
-	for _, row := range rows[1:] {
+	for _, row := range published(t, "midi-tuning.csv", 6) {
 		key, _ := strconv.Atoi(row[0])
 		want, err := strconv.ParseFloat(row[2], 64)
 		if err != nil {
