@@ -31,7 +31,7 @@ its highest.
 
 Built in are: ` + strings.Join(config.Builtins(), ", ") + ".",
 		prepare: func(o *options) func(context.Context, streams, []string) error {
-			pictures := o.String("plot", "", "instead, play each patch and draw how its keys decay, how bright and how true they are, and the spectra of three, into the folder `DIR`")
+			pictures := o.String("plot", "", "draw how each patch's keys decay and how bright and true they are, into the folder `DIR`")
 			form := o.choice("as", pictureSVG, "what --plot draws: `svg` or png", pictureSVG, picturePNG)
 			text := o.Bool("text", false, "print the text of each file instead: a built-in patch to start your own from")
 			return func(ctx context.Context, s streams, args []string) error {

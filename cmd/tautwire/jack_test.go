@@ -247,7 +247,25 @@ func writeFile(t testing.TB, name, text string) string {
 // takes a while to follow. The middle 80 % count, in the quieter half of the notes.
 // Where that clock is so bad that the bound would let anything pass, half a period
 // is the bound: notes that keep to the period spread over 0.8 of one.
+//
+// What else the machine does can only add to the spread, so the least disturbed of a few takes
+// counts for it, as in a benchmark. Missed notes and pitch count in every take.
 func TestJACK(t *testing.T) {
+	const takes = 3
+	var uneven []string
+	for take := range takes {
+		var problem string
+		t.Run(fmt.Sprintf("take %d", take+1), func(t *testing.T) { problem = takeOfJACK(t) })
+		if t.Failed() || problem == "" {
+			return
+		}
+		uneven = append(uneven, problem)
+	}
+	t.Errorf("in none of %d takes was the latency constant: %s", takes, strings.Join(uneven, "; "))
+}
+
+// takeOfJACK plays the notes once, and says in what the latency was not constant.
+func takeOfJACK(t *testing.T) (uneven string) {
 	server := startJack(t, 48000, 64)
 	control := server.probe(t, 60, "deaf")
 	ears := server.probe(t, 60)
@@ -285,7 +303,7 @@ func TestJACK(t *testing.T) {
 	if len(arrived) != notes {
 		t.Fatalf("the log has %d notes, %d were written", len(arrived), notes)
 	}
-	checkNotes(t, heard, ticks, played, written, arrived)
+	return checkNotes(t, heard, ticks, played, written, arrived)
 }
 
 // onset is a note as it was recorded.
@@ -296,7 +314,8 @@ type onset struct {
 	wander  float64   // us: of the server's own filtered clock
 }
 
-func checkNotes(t *testing.T, heard recording, ticks clock, played []byte, written, arrived []float64) {
+// checkNotes fails for missed and mistuned notes, and says in what the latency was not constant.
+func checkNotes(t *testing.T, heard recording, ticks clock, played []byte, written, arrived []float64) (uneven string) {
 	var onsets []onset
 	var way []float64 // from the writer to Tautwire, us
 	missed, pitched, worst := 0, 0, 0.0
@@ -353,12 +372,13 @@ func checkNotes(t *testing.T, heard recording, ticks clock, played []byte, writt
 		t.Logf("the quietest %d: latency %.0f us, the middle 80 %% within %.1f us; of the clock, the wake-ups within %.1f us, as the server filters it within %.1f us; a frame is %.1f us",
 			part, latency, spread, jitter, wander, frame)
 		if own := max(jitter, wander); part < len(onsets) && spread > own+frame {
-			t.Errorf("the latency spreads over %.1f us, more than a frame beyond the clock's own %.1f us", spread, own)
+			uneven = fmt.Sprintf("it spread over %.1f us, more than a frame beyond the clock's own %.1f us", spread, own)
 		}
 		if half := float64(heard.cycles[0].frames) * frame / 2; part < len(onsets) && spread > half {
-			t.Errorf("the latency spreads over %.1f us, more than half a period: notes do not keep to the frame", spread)
+			uneven = fmt.Sprintf("it spread over %.1f us, more than half a period: notes do not keep to the frame", spread)
 		}
 	}
+	return uneven
 }
 
 // spreadOf gives the median latency, and the spreads of the latencies, of the
