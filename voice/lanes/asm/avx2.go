@@ -1,0 +1,136 @@
+package main
+
+import "fmt"
+
+// avx2 prints for amd64 with AVX2: eight lanes in one pass.
+//
+//	BX bank, SI Mix, R8 mix, R9 force, R10 window, R11 section, R12 node,
+//	R13 sections left, CX frames left, DX bytes gone in the lines, AX scratch
+type avx2 struct{ *printer }
+
+func (avx2) goarch() string { return "amd64" }
+func (avx2) width() int     { return 32 }
+
+var avx2Pointers = map[pointer]string{
+	bank: "BX", bankD: "BX", mix: "R8", force: "R9", win: "R10", sect: "R11", node: "R12",
+}
+
+func (a avx2) at(m mem) string {
+	if m.field == "" {
+		return fmt.Sprintf("%d(%s)", m.off, avx2Pointers[m.base])
+	}
+	return fmt.Sprintf("(%s+%d)(%s)", m.field, m.off, avx2Pointers[m.base])
+}
+
+func (a avx2) begin(name string) {
+	fmt.Fprintf(a.text(), "\n// func %s(b *Bank, m *Mix, force *floats, from, frames int)\n", name)
+	fmt.Fprintf(a.text(), "TEXT ·%s(SB), NOSPLIT, $0-40\n", name)
+	a.put("MOVQ b+0(FP), BX")
+	a.put("MOVQ m+8(FP), SI")
+	a.put("MOVQ force+16(FP), R9")
+	a.put("MOVQ from+24(FP), R8")
+	a.put("MOVQ frames+32(FP), CX")
+	a.put("SHLQ $5, R8")
+	a.put("ADDQ SI, R8")
+	a.put("LEAQ Mix_window(SI), R10")
+}
+
+func (a avx2) end() {
+	a.put("VZEROUPPER")
+	a.put("RET")
+}
+
+func (a avx2) jump(name string) { a.put("JMP %s", name) }
+
+func (a avx2) jumpIfLess(name string, frames int) {
+	a.put("CMPQ CX, $%d", frames)
+	a.put("JLT %s", name)
+}
+
+func (a avx2) jumpIfEqual(name string, frames int) {
+	a.put("CMPQ CX, $%d", frames)
+	a.put("JEQ %s", name)
+}
+
+func (a avx2) rewind(quads int)  { a.put("MOVQ $%d, DX", -16*quads) }
+func (a avx2) advance(group int) { a.put("ADDQ $%d, DX", 4*group) }
+
+func (a avx2) count(frames int) { a.put("SUBQ $%d, CX", frames) }
+
+func (a avx2) point(to pointer, m mem) { a.put("LEAQ %s, %s", a.at(m), avx2Pointers[to]) }
+func (a avx2) move(p pointer, n int)   { a.put("ADDQ $%d, %s", n, avx2Pointers[p]) }
+func (a avx2) countSections()          { a.put("MOVQ Bank_Sections(BX), R13") }
+
+func (a avx2) repeatSections(name string) {
+	a.put("DECQ R13")
+	a.put("JNZ %s", name)
+}
+
+func (a avx2) load(d reg, m mem)  { a.put("VMOVUPS %s, Y%d", a.at(m), d) }
+func (a avx2) store(m mem, s reg) { a.put("VMOVUPS Y%d, %s", s, a.at(m)) }
+func (a avx2) copy(d, s reg)      { a.put("VMOVAPS Y%d, Y%d", s, d) }
+
+// three prints an instruction as d = x op y: the assembler names y first.
+func (a avx2) three(op string, d, x, y reg) { a.put("%s Y%d, Y%d, Y%d", op, y, x, d) }
+
+func (a avx2) threeM(op string, d, x reg, m mem) { a.put("%s %s, Y%d, Y%d", op, a.at(m), x, d) }
+
+func (a avx2) mulF(d, x, y reg)      { a.three("VMULPS", d, x, y) }
+func (a avx2) addF(d, x, y reg)      { a.three("VADDPS", d, x, y) }
+func (a avx2) addFm(d, x reg, m mem) { a.threeM("VADDPS", d, x, m) }
+func (a avx2) mulD(d, x, y reg)      { a.three("VMULPD", d, x, y) }
+func (a avx2) addD(d, x, y reg)      { a.three("VADDPD", d, x, y) }
+func (a avx2) subD(d, x, y reg)      { a.three("VSUBPD", d, x, y) }
+func (a avx2) addDm(d, x reg, m mem) { a.threeM("VADDPD", d, x, m) }
+func (a avx2) addBias(d, x reg)      { a.put("VADDPS bias<>(SB), Y%d, Y%d", x, d) }
+
+func (a avx2) widen(d, s reg, h half) {
+	if h == low {
+		a.put("VCVTPS2PD X%d, Y%d", s, d)
+		return
+	}
+	a.put("VEXTRACTF128 $1, Y%d, X%d", s, d)
+	a.put("VCVTPS2PD X%d, Y%d", d, d)
+}
+
+func (a avx2) narrow(d, s, scratch reg, h half) {
+	a.put("VCVTPD2PSY Y%d, X%d", s, scratch)
+	if h == low {
+		a.put("VBLENDPS $0x0f, Y%d, Y%d, Y%d", scratch, d, d)
+	} else {
+		a.put("VINSERTF128 $1, X%d, Y%d, Y%d", scratch, d, d)
+	}
+}
+
+// loadQuad loads four samples of each line, lanes 0 to 3 below lanes 4 to 7.
+func (a avx2) loadQuad(d, scratch [4]reg) {
+	for i, d := range d {
+		a.put("MOVQ (Mix_source+%d)(SI), AX", 8*i)
+		a.put("MOVQ (Mix_source+%d)(SI), DI", 8*(i+4))
+		a.put("VMOVUPS (AX)(DX*1), X%d", d)
+		a.put("VINSERTF128 $1, (DI)(DX*1), Y%d, Y%d", d, d)
+	}
+	a.transpose(d, scratch)
+}
+
+func (a avx2) storeQuad(s, scratch [4]reg) {
+	a.transpose(s, scratch)
+	for i, s := range s {
+		a.put("MOVQ (Mix_target+%d)(SI), AX", 8*i)
+		a.put("MOVQ (Mix_target+%d)(SI), DI", 8*(i+4))
+		a.put("VMOVUPS X%d, (AX)(DX*1)", s)
+		a.put("VEXTRACTF128 $1, Y%d, (DI)(DX*1)", s)
+	}
+}
+
+// transpose turns the rows of both squares into columns.
+func (a avx2) transpose(x, t [4]reg) {
+	a.three("VUNPCKLPS", t[0], x[0], x[1])
+	a.three("VUNPCKHPS", t[1], x[0], x[1])
+	a.three("VUNPCKLPS", t[2], x[2], x[3])
+	a.three("VUNPCKHPS", t[3], x[2], x[3])
+	a.three("VUNPCKLPD", x[0], t[0], t[2])
+	a.three("VUNPCKHPD", x[1], t[0], t[2])
+	a.three("VUNPCKLPD", x[2], t[1], t[3])
+	a.three("VUNPCKHPD", x[3], t[1], t[3])
+}

@@ -1,0 +1,91 @@
+package main
+
+import (
+	"fmt"
+	"strings"
+)
+
+// reg is a vector register. One holds an f32 of every lane that a pass
+// computes; two, the low and the high half of the lanes, an f64.
+type reg int
+
+// mem is a vector in memory: a field of a structure of the package lanes, or
+// an offset in bytes from a pointer.
+type mem struct {
+	base  pointer
+	field string // as in go_asm.h; "" is none
+	off   int
+}
+
+func (m mem) plus(bytes int) mem { m.off += bytes; return m }
+
+// pointer is what a general register holds.
+type pointer int
+
+const (
+	bank  pointer = iota // the Bank, for floats
+	bankD                // the Bank, for doubles
+	mix                  // the frame in Mix.Left
+	force                // the frame in the Force
+	win                  // the group's first frame in Mix.window
+	sect                 // the Section
+	node                 // the Node before it
+)
+
+// half is which of the lanes of an f32 vector an f64 vector holds.
+type half int
+
+const (
+	low half = iota
+	high
+)
+
+// machine prints what a vector unit does. Of three operands the first is the
+// destination. d and f tell doubles from floats; m, an operand in memory.
+type machine interface {
+	goarch() string
+	width() int // bytes of a vector
+
+	begin(name string) // takes the arguments and begins a pass
+	end()              // ends the pass and returns
+	text() *strings.Builder
+
+	label(name string)
+	jump(name string)
+	jumpIfLess(name string, frames int) // as are left
+	jumpIfEqual(name string, frames int)
+	rewind(quads int)  // the lines, to so many quads before the first
+	advance(group int) // to the next quad in the lines
+	count(frames int)  // as done
+	point(to pointer, at mem)
+	move(p pointer, bytes int)
+	countSections()
+	repeatSections(name string) // while sections are left
+
+	load(d reg, m mem)
+	store(m mem, s reg)
+	copy(d, s reg)
+	mulF(d, a, b reg)
+	addF(d, a, b reg)
+	addFm(d, a reg, m mem)
+	mulD(d, a, b reg)
+	addD(d, a, b reg)
+	subD(d, a, b reg)
+	addDm(d, a reg, m mem)
+	addBias(d, a reg)
+	widen(d, s reg, h half)
+	narrow(d, s, scratch reg, h half) // the other half of d stays
+	loadQuad(d, scratch [4]reg)
+	storeQuad(s, scratch [4]reg) // destroys s
+}
+
+// printer is what machines share.
+type printer struct{ out strings.Builder }
+
+func (p *printer) text() *strings.Builder { return &p.out }
+
+func (p *printer) put(format string, args ...any) {
+	fmt.Fprintf(&p.out, "\t"+format+"\n", args...)
+}
+
+func (p *printer) label(name string) { fmt.Fprintf(&p.out, "\n%s:\n", name) }

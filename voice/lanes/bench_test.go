@@ -1,0 +1,40 @@
+package lanes
+
+import "testing"
+
+// BenchmarkKernel reports ns per string-sample of each kernel on banks of 128
+// strings in all, in control steps of 32 frames.
+func BenchmarkKernel(b *testing.B) {
+	const banks = 128 / Width
+	for _, k := range []Kernel{Best(), Portable()} {
+		for _, c := range []struct {
+			name     string
+			sections int
+			moving   bool
+		}{{"plain", 0, false}, {"plain moving", 0, true}, {"four sections", 4, false}, {"four sections moving", 4, true}} {
+			b.Run(k.String()+"/"+c.name, func(b *testing.B) {
+				var all [banks]*Bank
+				var lines [banks][]float32
+				for i := range all {
+					all[i], lines[i], _ = scene(uint64(i), c.sections)
+					all[i].DTap, all[i].DC1, all[i].DC2 = [Taps]floats{}, doubles{}, doubles{}
+					for s := range all[i].Section {
+						all[i].Section[s].DA1, all[i].Section[s].DA2 = doubles{}, doubles{}
+					}
+					for l := range all[i].At {
+						all[i].Back[l] = int64(30 + 40*l)
+					}
+				}
+				m := &Mix{}
+				for b.Loop() {
+					m.Clear(0, Frames)
+					for i := range all {
+						k.Render(all[i], m, lines[i], nil, c.moving, 0, Frames)
+					}
+				}
+				b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*banks*Width*Frames), "ns/string-sample")
+				b.ReportMetric(0, "ns/op")
+			})
+		}
+	}
+}

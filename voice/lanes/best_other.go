@@ -1,0 +1,6 @@
+//go:build !amd64
+
+package lanes
+
+// Best is the fastest kernel for this processor.
+func Best() Kernel { return Portable() }

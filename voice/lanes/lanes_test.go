@@ -1,0 +1,111 @@
+package lanes
+
+import (
+	"math"
+	"math/rand/v2"
+	"testing"
+)
+
+// scene is a bank with everything in motion, on lines of noise.
+func scene(seed uint64, sections int) (*Bank, []float32, *Force) {
+	r := rand.New(rand.NewPCG(seed, 1))
+	small := func(scale float64) float64 { return scale * (2*r.Float64() - 1) }
+	const slot = 600
+	line := make([]float32, slot*Width)
+	for i := range line {
+		line[i] = float32(small(0.5))
+	}
+	b := &Bank{Sections: int64(sections)}
+	for l := range Width {
+		b.Back[l] = int64(Taps - 1 + Shortest + r.IntN(300))
+		if r.IntN(3) == 0 {
+			b.Back[l] = int64(Taps - 1 + Shortest + r.IntN(6))
+		}
+		b.At[l] = int64(slot*l + 400 + r.IntN(32))
+		for t := range Taps {
+			b.Tap[t][l], b.DTap[t][l] = float32(small(0.2)), float32(small(1e-3))
+		}
+		b.C1[l], b.C2[l] = small(0.4), small(0.3)
+		b.DC1[l], b.DC2[l] = small(1e-3), small(1e-3)
+		b.V1[l], b.V2[l] = small(1), small(1)
+		b.Gain[l], b.Zero[l], b.Pole[l] = 1+small(0.1), small(0.5), small(0.5)
+		b.DGain[l], b.DZero[l], b.DPole[l] = small(1e-3), small(1e-3), small(1e-3)
+		b.Left[l], b.Right[l] = float32(small(1)), float32(small(1))
+		b.DLeft[l], b.DRight[l] = float32(small(0.01)), float32(small(0.01))
+		b.Shelf[l] = small(1)
+		for i := range sections {
+			s := &b.Section[i]
+			s.A1[l], s.A2[l] = small(0.5), small(0.4)
+			s.DA1[l], s.DA2[l] = small(1e-3), small(1e-3)
+		}
+		for i := range sections + 1 {
+			b.Node[i].X[l], b.Node[i].X1[l] = small(1), small(1)
+		}
+	}
+	force := &Force{}
+	for f := range force {
+		for l := range Width {
+			force[f][l] = float32(small(0.1))
+		}
+	}
+	return b, line, force
+}
+
+// play renders a scene for some control steps, cut into pieces.
+func play(k Kernel, seed uint64, sections int, moving bool, cut func() int) (*Bank, *Mix, []float32) {
+	b, line, force := scene(seed, sections)
+	m := &Mix{}
+	for range 4 {
+		m.Clear(0, Frames)
+		for from := 0; from < Frames; {
+			until := min(Frames, from+cut())
+			k.Render(b, m, line, force, moving, from, until)
+			for l := range b.At {
+				b.At[l] += int64(until - from)
+			}
+			from = until
+		}
+	}
+	m.window, m.source, m.target = Mix{}.window, Mix{}.source, Mix{}.target
+	return b, m, line
+}
+
+// TestKernelsAgree compares the bits of this processor's kernel with those of the
+// portable one, for all kinds of strings, however the frames are cut.
+func TestKernelsAgree(t *testing.T) {
+	best := Best()
+	t.Logf("this processor: %v", best)
+	r := rand.New(rand.NewPCG(7, 7))
+	for seed := range uint64(40) {
+		for sections := range MaxSections + 1 {
+			for _, moving := range []bool{false, true} {
+				want, wantMix, wantLine := play(Portable(), seed, sections, moving, func() int { return Frames })
+				for _, c := range []struct {
+					name string
+					k    Kernel
+					cut  func() int
+				}{
+					{"whole", best, func() int { return Frames }},
+					{"cut", best, func() int { return 1 + r.IntN(9) }},
+					{"portable, cut", Portable(), func() int { return 1 + r.IntN(9) }},
+				} {
+					got, gotMix, gotLine := play(c.k, seed, sections, moving, c.cut)
+					if *got != *want {
+						t.Fatalf("%s: seed %d, %d sections, moving %v: banks differ", c.name, seed, sections, moving)
+					}
+					if *gotMix != *wantMix {
+						t.Fatalf("%s: seed %d, %d sections, moving %v: mixes differ", c.name, seed, sections, moving)
+					}
+					for l := range want.At {
+						for i := want.At[l] - 4*Frames; i < want.At[l]; i++ {
+							if math.Float32bits(gotLine[i]) != math.Float32bits(wantLine[i]) {
+								t.Fatalf("%s: seed %d, %d sections, moving %v: lane %d differs at %d: %g, %g",
+									c.name, seed, sections, moving, l, i, gotLine[i], wantLine[i])
+							}
+						}
+					}
+				}
+			}
+		}
+	}
+}
