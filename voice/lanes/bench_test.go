@@ -10,26 +10,29 @@ func BenchmarkKernel(b *testing.B) {
 		for _, c := range []struct {
 			name     string
 			sections int
-			moving   bool
-		}{{"plain", 0, false}, {"plain moving", 0, true}, {"four sections", 4, false}, {"four sections moving", 4, true}} {
+			motion   Motion
+		}{{"plain", 0, Still}, {"plain moving", 0, Moving}, {"plain gliding", 0, Gliding},
+			{"four sections", 4, Still}, {"four sections moving", 4, Moving}, {"four sections gliding", 4, Gliding}} {
 			b.Run(k.String()+"/"+c.name, func(b *testing.B) {
 				var all [banks]*Bank
 				var lines [banks][]float32
 				for i := range all {
 					all[i], lines[i], _ = scene(uint64(i), c.sections)
-					all[i].DTap, all[i].DC1, all[i].DC2 = [Taps]floats{}, doubles{}, doubles{}
+					all[i].DLevel, all[i].DC1, all[i].DC2 = floats{}, doubles{}, doubles{}
 					for s := range all[i].Section {
 						all[i].Section[s].DA1, all[i].Section[s].DA2 = doubles{}, doubles{}
 					}
 					for l := range all[i].At {
+						g := &all[i].Glide[l]
+						g.D1, g.D2, g.D3 = 0, 0, 0
 						all[i].Back[l] = int64(30 + 40*l)
 					}
 				}
-				m := &Mix{}
+				m := &Mix{Rows: rows()}
 				for b.Loop() {
 					m.Clear(0, Frames)
 					for i := range all {
-						k.Render(all[i], m, lines[i], nil, c.moving, 0, Frames)
+						k.Render(all[i], m, lines[i], nil, c.motion, 0, Frames)
 					}
 				}
 				b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*banks*Width*Frames), "ns/string-sample")

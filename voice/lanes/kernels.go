@@ -28,16 +28,17 @@ func movingStiff(b *Bank, m *Mix, force *floats, from, frames int)
 func vector(name string) Kernel {
 	return Kernel{
 		name:  name,
-		plain: pair{onLines(stillPlain), onLines(movingPlain)},
-		stiff: pair{onLines(stillStiff), onLines(movingStiff)},
+		plain: kinds{onLines(stillPlain), onLines(movingPlain), each((*Bank).gliding)},
+		stiff: kinds{onLines(stillStiff), onLines(movingStiff), each((*Bank).gliding)},
 	}
 }
 
 // onLines tells a kernel where the lines are.
 func onLines(kernel func(b *Bank, m *Mix, force *floats, from, frames int)) run {
-	return func(b *Bank, m *Mix, line []float32, force *Force, from, frames int) {
+	return func(b *Bank, m *Mix, line []float32, force *Force, ahead, from, frames int) {
 		base := uintptr(unsafe.Pointer(unsafe.SliceData(line)))
 		for i, at := range b.At {
+			at += int64(ahead)
 			m.source[i] = base + 4*uintptr(at-b.Back[i]+Taps-1)
 			m.target[i] = base + 4*uintptr(at)
 		}

@@ -41,27 +41,39 @@ type (
 // zeros is silent. It holds no pointers; the kernels know its layout.
 //
 //	x = sum over i of Tap[i] line[at - Back + Taps-1 - i]
-//	v = x - C2 v'' - C1 v'
+//	v = Level x - C2 v'' - C1 v'
 //	v = Shelf(v), then through the allpass sections, where there are any
 //	y = line[at] = v + force
 //
-// In a kernel that moves, all that has a D-sister changes by it before each frame.
+// Still, Level is in the taps and not multiplied. Where lanes move, all that has a D-sister changes by it
+// before each frame. Gliding, the taps are those of a delay near the lane's own, and
+//
+//	x = sum of Tap + Offset (sum of Slope + Offset sum of Curve)
+//
+// where Offset, which is a cubic in time, is how far the delay is from there.
 type Bank struct {
-	Tap, DTap              [Taps]floats // the newest sample's first
-	Left, Right, Bridge    floats       // gains of the mix
-	DLeft, DRight, DBridge floats
-	Power                  floats // sum of the squares of y so far
-	C1, C2, DC1, DC2       doubles
-	V1, V2                 doubles // the loss filter's last two outputs
-	Gain, Zero, Pole       doubles // of the shelf
-	DGain, DZero, DPole    doubles
-	Shelf                  doubles // its last output
-	Section                [MaxSections]Section
-	Node                   [MaxSections + 1]Node
-	At                     [Width]int64 // where each lane's next sample goes in the line
-	Back                   [Width]int64 // from there to the oldest sample that its read needs
-	Sections               int64        // 0: no shelf either
-	_                      [7]int64
+	Tap                                 [Taps]floats // the newest sample's first
+	Slope                               [SlopeTaps]floats
+	Curve                               [CurveTaps]floats
+	Level, DLevel                       floats
+	Offset, DOffset, D2Offset, D3Offset floats // samples, and by differences of a frame
+	Left, Right, DLeft, DRight          floats // gains of the mix
+	Power                               floats // sum of the squares of y so far
+	C1, C2, DC1, DC2                    doubles
+	V1, V2                              doubles // the loss filter's last two outputs
+	Gain, Zero, Pole                    doubles // of the shelf
+	DGain, DZero, DPole                 doubles
+	Shelf                               doubles // its last output
+	Section                             [MaxSections]Section
+	Node                                [MaxSections + 1]Node
+	At                                  [Width]int64 // where each lane's next sample goes in the line
+	Back                                [Width]int64 // from there to the oldest sample that its read needs
+	Sections                            int64        // 0: no shelf either
+
+	// What only Go code knows.
+	Glide [Width]Glide
+	Block int64        // frames for which a glide's taps stand; divides Frames
+	DTap  [Taps]floats // of a lane that ramps by itself
 }
 
 // Section is a second-order allpass in each lane.
@@ -74,6 +86,7 @@ type Node struct{ X, X1 doubles }
 // control step, and what kernels need beside.
 type Mix struct {
 	Left, Right    [Frames]floats
+	Rows           *Rows // of gliding reads
 	window         [Frames + Taps + 4]floats
 	source, target [Width]uintptr
 }
@@ -87,16 +100,27 @@ func (m *Mix) Clear(from, until int) {
 // Force is what drives each lane in each frame of a control step.
 type Force [Frames]floats
 
+// Motion is what a kernel has to follow.
+type Motion uint8
+
+const (
+	Still   Motion = iota
+	Moving         // filters, levels and gains
+	Gliding        // the delay as well
+)
+
 // Kernel renders banks.
 type Kernel struct {
 	name         string
-	plain, stiff pair
+	plain, stiff kinds
 }
 
-type pair struct{ still, moving run }
+// kinds is by Motion.
+type kinds [Gliding + 1]run
 
-// run computes frames of a step from its frame from on.
-type run func(b *Bank, m *Mix, line []float32, force *Force, from, frames int)
+// run computes frames of a step from its frame from on. The lanes are ahead of
+// their At by so many frames.
+type run func(b *Bank, m *Mix, line []float32, force *Force, ahead, from, frames int)
 
 // String names the processor that the kernel is for.
 func (k Kernel) String() string { return k.name }
@@ -106,30 +130,37 @@ func (k Kernel) String() string { return k.name }
 // It leaves At as it is.
 //
 // It panics when a lane reaches outside line, or reads less than Shortest back.
-func (k Kernel) Render(b *Bank, m *Mix, line []float32, force *Force, moving bool, from, until int) {
-	if from >= until {
-		return
-	}
+func (k Kernel) Render(b *Bank, m *Mix, line []float32, force *Force, motion Motion, from, until int) {
 	if from < 0 || until > Frames {
 		panic("lanes: frames outside the control step")
-	}
-	for i, at := range b.At {
-		back := b.Back[i]
-		if back < Taps-1+Shortest || at-back < History || at+int64(until-from)+Spill > int64(len(line)) {
-			panic("lanes: a lane reaches outside its line")
-		}
 	}
 	if force == nil {
 		force = &nothing
 	}
-	kind := k.plain
+	do := k.plain[motion]
 	if b.Sections > 0 {
-		kind = k.stiff
+		do = k.stiff[motion]
 	}
-	if moving {
-		kind.moving(b, m, line, force, from, until-from)
-	} else {
-		kind.still(b, m, line, force, from, until-from)
+	for start := from; from < until; {
+		end := until
+		if motion == Gliding {
+			end = min(until, (from/int(b.Block)+1)*int(b.Block))
+			if from%int(b.Block) == 0 {
+				b.turn(m.Rows)
+			}
+		}
+		for i := range b.At {
+			b.check(i, Taps-1+Shortest, int64(until-start)+Spill, line)
+		}
+		do(b, m, line, force, from-start, from, end-from)
+		from = end
+	}
+}
+
+func (b *Bank) check(lane int, least, ahead int64, line []float32) {
+	at, back := b.At[lane], b.Back[lane]
+	if back < least || at-back < History || at+ahead > int64(len(line)) {
+		panic("lanes: a lane reaches outside its line")
 	}
 }
 

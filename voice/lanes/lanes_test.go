@@ -23,8 +23,9 @@ func scene(seed uint64, sections int) (*Bank, []float32, *Force) {
 		}
 		b.At[l] = int64(slot*l + 400 + r.IntN(32))
 		for t := range Taps {
-			b.Tap[t][l], b.DTap[t][l] = float32(small(0.2)), float32(small(1e-3))
+			b.Tap[t][l] = float32(small(0.2))
 		}
+		b.Level[l], b.DLevel[l] = float32(1+small(0.1)), float32(small(1e-3))
 		b.C1[l], b.C2[l] = small(0.4), small(0.3)
 		b.DC1[l], b.DC2[l] = small(1e-3), small(1e-3)
 		b.V1[l], b.V2[l] = small(1), small(1)
@@ -42,6 +43,12 @@ func scene(seed uint64, sections int) (*Bank, []float32, *Force) {
 			b.Node[i].X[l], b.Node[i].X1[l] = small(1), small(1)
 		}
 	}
+	b.Block = int64(1) << r.IntN(4)
+	for l := range b.Glide {
+		if r.IntN(3) > 0 {
+			b.glide(l, r)
+		}
+	}
 	force := &Force{}
 	for f := range force {
 		for l := range Width {
@@ -52,21 +59,21 @@ func scene(seed uint64, sections int) (*Bank, []float32, *Force) {
 }
 
 // play renders a scene for some control steps, cut into pieces.
-func play(k Kernel, seed uint64, sections int, moving bool, cut func() int) (*Bank, *Mix, []float32) {
+func play(k Kernel, seed uint64, sections int, motion Motion, cut func() int) (*Bank, *Mix, []float32) {
 	b, line, force := scene(seed, sections)
-	m := &Mix{}
+	m := &Mix{Rows: rows()}
 	for range 4 {
 		m.Clear(0, Frames)
 		for from := 0; from < Frames; {
 			until := min(Frames, from+cut())
-			k.Render(b, m, line, force, moving, from, until)
+			k.Render(b, m, line, force, motion, from, until)
 			for l := range b.At {
 				b.At[l] += int64(until - from)
 			}
 			from = until
 		}
 	}
-	m.window, m.source, m.target = Mix{}.window, Mix{}.source, Mix{}.target
+	m.Rows, m.window, m.source, m.target = nil, Mix{}.window, Mix{}.source, Mix{}.target
 	return b, m, line
 }
 
@@ -78,8 +85,8 @@ func TestKernelsAgree(t *testing.T) {
 	r := rand.New(rand.NewPCG(7, 7))
 	for seed := range uint64(40) {
 		for sections := range MaxSections + 1 {
-			for _, moving := range []bool{false, true} {
-				want, wantMix, wantLine := play(Portable(), seed, sections, moving, func() int { return Frames })
+			for motion := range Gliding + 1 {
+				want, wantMix, wantLine := play(Portable(), seed, sections, motion, func() int { return Frames })
 				for _, c := range []struct {
 					name string
 					k    Kernel
@@ -89,18 +96,18 @@ func TestKernelsAgree(t *testing.T) {
 					{"cut", best, func() int { return 1 + r.IntN(9) }},
 					{"portable, cut", Portable(), func() int { return 1 + r.IntN(9) }},
 				} {
-					got, gotMix, gotLine := play(c.k, seed, sections, moving, c.cut)
+					got, gotMix, gotLine := play(c.k, seed, sections, motion, c.cut)
 					if *got != *want {
-						t.Fatalf("%s: seed %d, %d sections, moving %v: banks differ", c.name, seed, sections, moving)
+						t.Fatalf("%s: seed %d, %d sections, motion %d: banks differ", c.name, seed, sections, motion)
 					}
 					if *gotMix != *wantMix {
-						t.Fatalf("%s: seed %d, %d sections, moving %v: mixes differ", c.name, seed, sections, moving)
+						t.Fatalf("%s: seed %d, %d sections, motion %d: mixes differ", c.name, seed, sections, motion)
 					}
 					for l := range want.At {
 						for i := want.At[l] - 4*Frames; i < want.At[l]; i++ {
 							if math.Float32bits(gotLine[i]) != math.Float32bits(wantLine[i]) {
-								t.Fatalf("%s: seed %d, %d sections, moving %v: lane %d differs at %d: %g, %g",
-									c.name, seed, sections, moving, l, i, gotLine[i], wantLine[i])
+								t.Fatalf("%s: seed %d, %d sections, motion %d: lane %d differs at %d: %g, %g",
+									c.name, seed, sections, motion, l, i, gotLine[i], wantLine[i])
 							}
 						}
 					}
@@ -108,4 +115,35 @@ func TestKernelsAgree(t *testing.T) {
 			}
 		}
 	}
+}
+
+// glide sets a lane going, slowly enough to stay in its line.
+func (b *Bank) glide(l int, r *rand.Rand) {
+	slow := func(scale float64) int64 { return int64(scale * (2*r.Float64() - 1) * (1 << 32)) }
+	b.Glide[l] = Glide{On: true, Delay: (b.Back[l]+20)<<32 + slow(1), D1: slow(0.1), D2: slow(1e-3), D3: slow(1e-5)}
+	b.DOffset[l], b.D2Offset[l], b.D3Offset[l] = float32(r.Float64()*0.02), 1e-4, 1e-6
+	for t := range SlopeTaps {
+		b.Slope[t][l] = r.Float32()
+	}
+	for t := range CurveTaps {
+		b.Curve[t][l] = r.Float32()
+	}
+}
+
+// rows are of no use but to be told apart.
+func rows() *Rows {
+	r := rand.New(rand.NewPCG(3, 3))
+	t := &Rows{}
+	for i := range t {
+		for j := range t[i].Tap {
+			t[i].Tap[j] = 0.2 * (2*r.Float32() - 1)
+		}
+		for j := range t[i].Slope {
+			t[i].Slope[j] = 0.2 * (2*r.Float32() - 1)
+		}
+		for j := range t[i].Curve {
+			t[i].Curve[j] = 0.2 * (2*r.Float32() - 1)
+		}
+	}
+	return t
 }

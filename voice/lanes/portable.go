@@ -2,10 +2,37 @@ package lanes
 
 // Portable is the kernel for any processor, one lane at a time.
 func Portable() Kernel {
+	moving, gliding := each((*Bank).moving), each((*Bank).gliding)
 	return Kernel{
 		name:  "portable",
-		plain: pair{each((*Bank).plain), each((*Bank).moving)},
-		stiff: pair{each((*Bank).stiff), each((*Bank).moving)},
+		plain: kinds{each((*Bank).plain), moving, gliding},
+		stiff: kinds{each((*Bank).stiff), moving, gliding},
+	}
+}
+
+// Solo renders frames of one lane alone, as Kernel.Render does of all. The taps of a
+// lane that is Moving change by DTap, and it may read the frame before.
+func (b *Bank) Solo(lane int, m *Mix, line []float32, force *Force, motion Motion, from, until int) {
+	do := (*Bank).ramping
+	switch {
+	case motion == Still && b.Sections == 0:
+		do = (*Bank).plain
+	case motion == Still:
+		do = (*Bank).stiff
+	case motion == Gliding:
+		do = (*Bank).gliding
+	}
+	for start := from; from < until; {
+		end := until
+		if motion == Gliding {
+			end = min(until, (from/int(b.Block)+1)*int(b.Block))
+			if from%int(b.Block) == 0 {
+				b.turnLane(lane, m.Rows)
+			}
+		}
+		b.check(lane, Taps, int64(until-start), line)
+		do(b, b.pass(lane, m, line, force, from-start, from, end-from))
+		from = end
 	}
 }
 
@@ -17,25 +44,30 @@ type pass struct {
 	left, right    []floats
 }
 
-func each(do func(*Bank, *pass)) run {
-	return func(b *Bank, m *Mix, line []float32, force *Force, from, frames int) {
-		until := from + frames
-		for lane, at := range b.At {
-			first := at - b.Back[lane]
-			do(b, &pass{
-				lane:   lane,
-				source: line[first : first+int64(frames)+Taps-1],
-				target: line[at : at+int64(frames)],
-				force:  force[from:until],
-				left:   m.Left[from:until],
-				right:  m.Right[from:until],
-			})
+func (b *Bank) pass(lane int, m *Mix, line []float32, force *Force, ahead, from, frames int) pass {
+	at := b.At[lane] + int64(ahead)
+	first := at - b.Back[lane]
+	until := from + frames
+	return pass{
+		lane:   lane,
+		source: line[first : first+int64(frames)+Taps-1],
+		target: line[at : at+int64(frames)],
+		force:  force[from:until],
+		left:   m.Left[from:until],
+		right:  m.Right[from:until],
+	}
+}
+
+func each(do func(*Bank, pass)) run {
+	return func(b *Bank, m *Mix, line []float32, force *Force, ahead, from, frames int) {
+		for lane := range Width {
+			do(b, b.pass(lane, m, line, force, ahead, from, frames))
 		}
 	}
 }
 
 // plain renders a still lane without stiffness.
-func (b *Bank) plain(p *pass) {
+func (b *Bank) plain(p pass) {
 	l := p.lane & (Width - 1)
 	h := b.taps(l)
 	c1, c2, v1, v2 := b.C1[l], b.C2[l], b.V1[l], b.V2[l]
@@ -63,15 +95,18 @@ func (b *Bank) taps(lane int) (h [Taps]float32) {
 }
 
 // read is the dot product of the taps, the newest sample's first, with samples, the oldest first.
-func read(s []float32, h *[Taps]float32) float32 {
+func read(s []float32, h *[Taps]float32) float32 { return readOn(bias, s, h) }
+
+// readOn adds the read to x.
+func readOn(x float32, s []float32, h *[Taps]float32) float32 {
 	s = s[:Taps]
-	x := bias + float32(s[0]*h[11]) + float32(s[1]*h[10]) + float32(s[2]*h[9]) + float32(s[3]*h[8])
+	x = x + float32(s[0]*h[11]) + float32(s[1]*h[10]) + float32(s[2]*h[9]) + float32(s[3]*h[8])
 	x = x + float32(s[4]*h[7]) + float32(s[5]*h[6]) + float32(s[6]*h[5]) + float32(s[7]*h[4])
 	return x + float32(s[8]*h[3]) + float32(s[9]*h[2]) + float32(s[10]*h[1]) + float32(s[11]*h[0])
 }
 
 // stiff renders a still lane with shelf and sections.
-func (b *Bank) stiff(p *pass) {
+func (b *Bank) stiff(p pass) {
 	l := p.lane & (Width - 1)
 	h := b.taps(l)
 	for i := range p.target {
@@ -79,8 +114,18 @@ func (b *Bank) stiff(p *pass) {
 	}
 }
 
-// moving renders a lane in which anything moves.
-func (b *Bank) moving(p *pass) {
+// moving renders a lane in which anything but the delay moves.
+func (b *Bank) moving(p pass) {
+	l := p.lane & (Width - 1)
+	h := b.taps(l)
+	for i := range p.target {
+		b.move(l)
+		p.end(b, i, b.lossy(l, read(p.source[i:i+Taps:i+Taps], &h)))
+	}
+}
+
+// ramping renders a lane whose taps move as well.
+func (b *Bank) ramping(p pass) {
 	l := p.lane & (Width - 1)
 	h := b.taps(l)
 	for i := range p.target {
@@ -88,19 +133,49 @@ func (b *Bank) moving(p *pass) {
 			h[t] += b.DTap[t][l]
 		}
 		b.move(l)
-		v := b.lose(l, read(p.source[i:i+Taps:i+Taps], &h))
-		if b.Sections > 0 {
-			v = b.disperse(l, v)
-		}
-		p.end(b, i, v)
+		p.end(b, i, b.lossy(l, read(p.source[i:i+Taps:i+Taps], &h)))
 	}
 	for t := range h {
 		b.Tap[t][l] = h[t]
 	}
 }
 
-// move takes a lane's filters and gains a frame on.
+// gliding renders a lane whose delay moves.
+func (b *Bank) gliding(p pass) {
+	l := p.lane & (Width - 1)
+	h := b.taps(l)
+	for i := range p.target {
+		s := p.source[i : i+Taps : i+Taps]
+		x := float32(0)
+		for t := CurveTaps - 1; t >= 0; t-- {
+			x += float32(b.Curve[t][l] * s[Taps-1-firstCurve-t])
+		}
+		x *= b.Offset[l]
+		for t := SlopeTaps - 1; t >= 0; t-- {
+			x += float32(b.Slope[t][l] * s[Taps-1-firstSlope-t])
+		}
+		x *= b.Offset[l]
+		x = readOn(x+bias, s, &h)
+		b.Offset[l] += b.DOffset[l]
+		b.DOffset[l] += b.D2Offset[l]
+		b.D2Offset[l] += b.D3Offset[l]
+		b.move(l)
+		p.end(b, i, b.lossy(l, x))
+	}
+}
+
+// lossy takes what was read through a moving lane's level and filters.
+func (b *Bank) lossy(l int, x float32) float64 {
+	v := b.lose(l, x*b.Level[l])
+	if b.Sections > 0 {
+		v = b.disperse(l, v)
+	}
+	return v
+}
+
+// move takes a lane's level, filters and gains a frame on.
 func (b *Bank) move(l int) {
+	b.Level[l] += b.DLevel[l]
 	b.C1[l] += b.DC1[l]
 	b.C2[l] += b.DC2[l]
 	b.Left[l] += b.DLeft[l]

@@ -133,7 +133,7 @@ func (k *kernel) group(n int) {
 // read loads the lines' next samples and sums the taps' products, the oldest
 // sample's first, into registers 0 to n-1. Each tap and each sample is loaded once for all frames.
 func (k *kernel) read(n int) {
-	const tap, step = 8, 9
+	const tap = 8
 	k.loadQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7})
 	for i := range n {
 		k.store(mem{base: win, off: (taps + i) * floats}, reg(i))
@@ -142,9 +142,6 @@ func (k *kernel) read(n int) {
 	for back := range taps {
 		at := mem{bank, "Bank_Tap", (taps - 1 - back) * floats}
 		k.load(tap, at)
-		if k.moving {
-			k.load(step, mem{bank, "Bank_DTap", at.off})
-		}
 		first := 0
 		if back > 0 {
 			first = n - 1
@@ -154,9 +151,6 @@ func (k *kernel) read(n int) {
 		}
 		for f := range n {
 			product := reg(10 + f%2)
-			if k.moving {
-				k.addF(tap, tap, step)
-			}
 			k.mulF(product, sample(f, back), tap)
 			if back == 0 {
 				k.addBias(reg(f), product)
@@ -164,10 +158,22 @@ func (k *kernel) read(n int) {
 				k.addF(reg(f), reg(f), product)
 			}
 		}
-		if k.moving {
-			k.store(at, tap)
-		}
 	}
+	if k.moving {
+		k.level(n)
+	}
+}
+
+// level takes n frames, in registers 0 to n-1, by the lanes' level.
+func (k *kernel) level(n int) {
+	const level, step = 8, 9
+	k.load(level, mem{bank, "Bank_Level", 0})
+	k.load(step, mem{bank, "Bank_DLevel", 0})
+	for f := range n {
+		k.addF(level, level, step)
+		k.mulF(reg(f), reg(f), level)
+	}
+	k.store(mem{bank, "Bank_Level", 0}, level)
 }
 
 // finish takes what was read of n frames through the filters, adds the force, and
