@@ -1,16 +1,25 @@
 package voice
 
-import "math"
+import (
+	"math"
+
+	"tautwire/voice/lanes"
+)
 
 // Maker compiles strings for one sample rate. It holds the tables that all
 // strings of the rate share and may be used from several goroutines.
 type Maker struct {
-	rate float64
-	ip   *interpolator
+	rate      float64
+	ip        *interpolator
+	rows      *lanes.Rows
+	smoothing *smoothing
 }
 
 // NewMaker prepares to make strings for a sample rate in Hz.
-func NewMaker(rate float64) *Maker { return &Maker{rate: rate, ip: newInterpolator()} }
+func NewMaker(rate float64) *Maker {
+	ip := newInterpolator()
+	return &Maker{rate: rate, ip: ip, rows: newRows(ip), smoothing: newSmoothing(rate)}
+}
 
 // Rate is the sample rate in Hz.
 func (m *Maker) Rate() float64 { return m.rate }

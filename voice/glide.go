@@ -3,11 +3,11 @@ package voice
 import (
 	"math"
 	"math/cmplx"
+
+	"tautwire/voice/lanes"
 )
 
 const (
-	// glideTime is each of the three one-poles (s) that smooth a string's length.
-	glideTime = 0.003
 	// slew is how fast a string's delay may change, samples per sample.
 	slew = 0.5
 	// settled is how near (samples) a gliding delay comes before it stands still.
@@ -24,8 +24,8 @@ type glide struct {
 	from    float64 // delay that feeds the smoothing (samples)
 	slope   float64
 	s       [3]float64 // the smoothed delay; the last is what is read
-	pole    float64    // of a frame
-	step    float64    // the same of a control step
+	speed   float64    // of the last, samples a frame
+	step    float64    // what a one-pole takes of a control step
 	target  coefficients
 	stage   [3]coefficients
 	direct  [3]float64 // the smoothed pitch (Hz) of a direct read
@@ -34,7 +34,7 @@ type glide struct {
 
 // hold clamps a pitch to what the line and the rate can sound.
 func (l *loop) hold(f0 float64) float64 {
-	longest := float64(len(l.line))/2 - 4*Grid
+	longest := float64(l.size)/2 - 4*Grid
 	return min(max(f0, l.mode.rate/longest, l.mode.lowest), topPitch*l.mode.rate)
 }
 
@@ -42,7 +42,7 @@ func (l *loop) hold(f0 float64) float64 {
 func (l *loop) settle() {
 	g := &l.glide
 	l.mode.at(g.pitch, g.touch, &g.target)
-	g.from, g.slope = g.target.delay, 0
+	g.from, g.slope, g.speed = g.target.delay, 0, 0
 	for i := range g.s {
 		g.s[i], g.stage[i], g.direct[i] = g.target.delay, g.target, g.pitch
 	}
@@ -166,30 +166,11 @@ func (l *loop) safeGain() float64 {
 	if low <= 0 {
 		return 0
 	}
-	d := math.Abs(c.loss.c1-l.c1) + math.Abs(c.loss.c2-l.c2)
+	d := math.Abs(c.loss.c1-l.bank.C1[l.lane]) + math.Abs(c.loss.c2-l.bank.C2[l.lane])
 	return min(c.gain, ceiling*max(0, low-d*d/(2*low)))
 }
 
-// tapsNow writes the read's taps for the smoothed coefficients, with all gains
-// in them, and returns the whole part of the delay.
-func (l *loop) tapsNow(out *[taps]float64) (length int) {
-	g := &l.glide
-	if !g.short {
-		length = int(g.s[2])
-		l.ip.at(g.s[2]-float64(length), out)
-		gain := l.safeGain()
-		for i := range out {
-			out[i] *= gain
-		}
-	} else {
-		length = shortest
-		l.directNow(out)
-	}
-	l.damp(out)
-	return length
-}
-
-// directNow writes the taps of a direct read at the smoothed pitch, mixed with
+// directNow writes the taps of a direct read at the smoothed pitch, with all gains in them, mixed with
 // those of a fractional delay where both can serve.
 func (l *loop) directNow(out *[taps]float64) {
 	g := &l.glide
@@ -200,104 +181,214 @@ func (l *loop) directNow(out *[taps]float64) {
 	directTaps(z, func(z complex128) complex128 { return c.rest(z, l.sections) }, out)
 	if c.direct < 1 {
 		var h [taps]float64
-		l.ip.at(min(1, c.delay-shortest), &h)
+		l.ip().at(min(1, c.delay-shortest), &h)
 		for i := range out {
 			out[i] = c.direct*out[i] + (1-c.direct)*c.gain*h[i]
 		}
 	}
 	c.delay = g.stage[2].delay
 	g.stage[2] = c
+	k := l.damped.perTrip(g.pitch)
+	for i := range out {
+		out[i] *= k
+	}
 }
+
+func (l *loop) ip() *interpolator { return l.pool.maker.ip }
 
 // stand fixes every coefficient where it is.
 func (l *loop) stand() {
 	var h [taps]float64
-	l.takeFilters()
-	l.length = l.tapsNow(&h)
-	l.takeFilters() // a direct read brings its own
-	for i := range h {
-		l.h[i], l.dh[i] = float32(h[i]), 0
+	g, b, lane := &l.glide, &l.bank.Bank, l.lane
+	l.level = 1
+	if g.short {
+		l.length = shortest
+		l.directNow(&h) // which brings filters of its own
+		l.takeFilters()
+	} else {
+		l.takeFilters()
+		l.length = int(g.s[2])
+		l.ip().at(g.s[2]-float64(l.length), &h)
+		l.level = float32(l.safeGain() * l.damped.perTrip(g.pitch))
 	}
+	for i := range h {
+		b.Tap[i][lane], b.DTap[i][lane] = l.level*float32(h[i]), 0
+	}
+	l.standTaps()
+	b.Level[lane], b.DLevel[lane] = 1, 0
 	l.motion = still
+	l.house()
 }
 
-// freeze gives a gliding string the taps of where it is now.
-func (l *loop) freeze() {
-	var h [taps]float64
-	delay := l.glide.s[2]
-	l.length = int(delay)
-	l.ip.at(delay-float64(l.length), &h)
-	for i := range h {
-		l.h[i] = l.gain * float32(h[i])
+// standTaps leaves the taps for the whole part of the delay as they are.
+func (l *loop) standTaps() {
+	b, lane := &l.bank.Bank, l.lane
+	for i := range b.Slope {
+		b.Slope[i][lane] = 0
 	}
+	for i := range b.Curve {
+		b.Curve[i][lane] = 0
+	}
+	b.Offset[lane], b.DOffset[lane], b.D2Offset[lane], b.D3Offset[lane] = 0, 0, 0, 0
+	b.Glide[lane] = lanes.Glide{}
+	b.Back[lane] = int64(l.length + taps - 1 - center)
+	l.glide.speed = 0
+}
+
+// unlevel takes the level of a still string out of its taps, so that it can move.
+func (l *loop) unlevel() {
+	g, b, lane := &l.glide, &l.bank.Bank, l.lane
+	b.Level[lane] = l.levelNow()
+	if l.motion == ramping {
+		return
+	}
+	var h [taps]float64
+	l.length = int(g.s[2])
+	l.ip().at(g.s[2]-float64(l.length), &h)
+	for i := range h {
+		b.Tap[i][lane], b.DTap[i][lane] = float32(h[i]), 0
+	}
+	l.standTaps()
+}
+
+// levelNow is the level of the read.
+func (l *loop) levelNow() float32 {
+	b, lane := &l.bank.Bank, l.lane
+	switch {
+	case l.motion == ramping || l.motion == gliding:
+		return b.Level[lane]
+	case l.motion == still && l.length != shortest:
+		return l.level
+	}
+	var sum float32 // the taps of a delay add up to the read's gain
+	for i := range b.Tap {
+		sum += b.Tap[i][lane]
+	}
+	return sum
 }
 
 // takeFilters sets the loss and the sections to the smoothed coefficients.
 func (l *loop) takeFilters() {
-	c := &l.glide.stage[2]
-	l.c1, l.c2 = c.loss.c1, c.loss.c2
-	l.shelf[0], l.shelf[1], l.shelf[2] = c.loss.shelf.filter()
-	l.a = c.sections
+	c, b, lane := &l.glide.stage[2], &l.bank.Bank, l.lane
+	b.C1[lane], b.C2[lane] = c.loss.c1, c.loss.c2
+	b.DC1[lane], b.DC2[lane] = 0, 0
+	b.Gain[lane], b.Zero[lane], b.Pole[lane] = c.loss.shelf.filter()
+	b.DGain[lane], b.DZero[lane], b.DPole[lane] = 0, 0, 0
+	for i := range l.sections {
+		s := &b.Section[i]
+		s.A1[lane], s.A2[lane] = c.sections[i][0], c.sections[i][1]
+		s.DA1[lane], s.DA2[lane] = 0, 0
+	}
 }
 
-// beginRamp moves the taps and filters from where they are to where they are
-// to be at the end of the step, the line's length standing.
+// beginRamp moves the level and the filters, or the taps of a direct read, from where they are to where they
+// are to be at the end of the step, the delay standing.
 func (l *loop) beginRamp() {
-	var h [taps]float64
-	if l.motion == gliding {
-		l.freeze()
+	g, b, lane := &l.glide, &l.bank.Bank, l.lane
+	if !g.short {
+		l.unlevel()
+		l.rampFilters()
+		b.DLevel[lane] = (float32(l.safeGain()*l.damped.perTrip(g.pitch)) - b.Level[lane]) / Grid
+		l.motion = ramping
+		l.house()
+		return
 	}
-	before := l.length
-	length := l.tapsNow(&h)
-	if length != before {
-		l.shiftTaps(length - before)
-		l.length = length
+	if l.motion == ramping || l.motion == gliding {
+		l.relevel()
+	}
+	var h [taps]float64
+	l.directNow(&h)
+	if l.length != shortest {
+		l.shiftTaps(shortest - l.length)
+		l.length = shortest
+		b.Back[lane] = int64(l.length + taps - 1 - center)
 	}
 	for i := range h {
-		l.dh[i] = (float32(h[i]) - l.h[i]) / Grid
+		b.DTap[i][lane] = (float32(h[i]) - b.Tap[i][lane]) / Grid
 	}
+	b.Level[lane], b.DLevel[lane] = 1, 0
 	l.rampFilters()
-	l.motion = ramping
+	l.motion = changing
+	l.house()
+}
+
+// relevel puts the level of a moving string into its taps, as they are now.
+func (l *loop) relevel() {
+	b, lane := &l.bank.Bank, l.lane
+	if l.motion == gliding {
+		l.unlevel()
+	}
+	for i := range b.Tap {
+		b.Tap[i][lane] *= b.Level[lane]
+	}
 }
 
 // shiftTaps moves the taps by whole samples, so that they read the same
 // samples from a line longer by n.
 func (l *loop) shiftTaps(n int) {
-	old := l.h
-	for i := range l.h {
-		l.h[i] = 0
+	b, lane := &l.bank.Bank, l.lane
+	var old [taps]float32
+	for i := range old {
+		old[i] = b.Tap[i][lane]
+	}
+	for i := range old {
+		b.Tap[i][lane] = 0
 		if j := i + n; j >= 0 && j < taps {
-			l.h[i] = old[j]
+			b.Tap[i][lane] = old[j]
 		}
 	}
 }
 
 func (l *loop) rampFilters() {
-	c := &l.glide.stage[2]
-	l.dc1, l.dc2 = (c.loss.c1-l.c1)/Grid, (c.loss.c2-l.c2)/Grid
-	k, zero, pole := c.loss.shelf.filter()
-	l.dShelf = [3]float64{(k - l.shelf[0]) / Grid, (zero - l.shelf[1]) / Grid, (pole - l.shelf[2]) / Grid}
+	c, b, lane := &l.glide.stage[2], &l.bank.Bank, l.lane
+	b.DC1[lane], b.DC2[lane] = (c.loss.c1-b.C1[lane])/Grid, (c.loss.c2-b.C2[lane])/Grid
+	if l.sections == 0 {
+		return
+	}
+	gain, zero, pole := c.loss.shelf.filter()
+	b.DGain[lane] = (gain - b.Gain[lane]) / Grid
+	b.DZero[lane] = (zero - b.Zero[lane]) / Grid
+	b.DPole[lane] = (pole - b.Pole[lane]) / Grid
 	for i := range l.sections {
-		l.da[i][0] = (c.sections[i][0] - l.a[i][0]) / Grid
-		l.da[i][1] = (c.sections[i][1] - l.a[i][1]) / Grid
+		s := &b.Section[i]
+		s.DA1[lane] = (c.sections[i][0] - s.A1[lane]) / Grid
+		s.DA2[lane] = (c.sections[i][1] - s.A2[lane]) / Grid
 	}
 }
 
-// beginGlide lets the length follow the pitch frame by frame.
+// beginGlide lets the delay follow the pitch.
 func (l *loop) beginGlide() {
-	g := &l.glide
-	gain := float32(l.safeGain() * l.damped.perTrip(g.pitch))
-	if l.motion != gliding {
-		var sum float32
-		for _, h := range l.h {
-			sum += h
-		}
-		l.gain = sum // the taps of a delay add up to the read's gain
-	}
+	g, b, lane := &l.glide, &l.bank.Bank, l.lane
+	b.Level[lane] = l.levelNow()
+	level := float32(l.safeGain() * l.damped.perTrip(g.pitch))
+	b.DLevel[lane] = (level - b.Level[lane]) / Grid
 	aim := max(g.target.delay, shortest+0.5)
 	// a touch moves the delay too, by the lag of its darker filter
 	g.slope = min(slew, max(-slew, (aim-g.from)/Grid))
-	l.dg = (gain - l.gain) / Grid
+	before, speed := g.s[2], g.speed
+	g.speed = l.pool.maker.smoothing.follow(&g.s, g.from, g.slope)
+	g.from += Grid * g.slope
+	l.path = newPath(before, g.s[2], speed, g.speed)
 	l.rampFilters()
 	l.motion = gliding
+	l.house()
+	f := &l.bank.Glide[l.lane].Finger
+	f.Firm = float32(l.damped.finger)
+	f.Side = int64(l.mode.rate / g.pitch / float64(max(2, l.damped.node)) * (1 << 32))
+	f.Floor = int64(l.start)
+}
+
+// set gives a lane the path, its taps standing for Block frames.
+func (p *path) set(b *lanes.Bank, lane int) {
+	k := float64(b.Block)
+	g := &b.Glide[lane]
+	g.On = true
+	const one = 1 << 32
+	g.Delay = int64((p[0] + p[1] + p[2] + p[3]) * one)
+	g.D1 = int64((float64(p[1]*k) + float64(p[2]*(k*k+2*k)) + float64(p[3]*(k*k*k+3*k*k+3*k))) * one)
+	g.D2 = int64((float64(2*p[2]*k*k) + float64(p[3]*(6*k*k+6*k*k*k))) * one)
+	g.D3 = int64(float64(6*p[3]*k*k*k) * one)
+	b.DOffset[lane] = float32(p[1] + float64(3*p[2]) + float64(7*p[3]))
+	b.D2Offset[lane] = float32(float64(2*p[2]) + float64(12*p[3]))
+	b.D3Offset[lane] = float32(6 * p[3])
 }

@@ -8,11 +8,12 @@ import (
 	"testing"
 )
 
-// tuned puts a string of a mode on a line of its own.
+// tuned puts a string of a mode on a voice of its own.
 func tuned(m *mode, ip *interpolator, f0 float64) *loop {
-	var l loop
-	l.tune(m, ip, make([]float32, int(2*m.rate/f0)+2048), f0)
-	return &l
+	maker := &Maker{rate: m.rate, ip: ip, rows: newRows(ip), smoothing: newSmoothing(m.rate)}
+	v := newVoice(maker, 1<<17)
+	v.Fit(&Design{maker: maker, pitch: f0, modes: [2]*mode{m}, strings: []strand{{mix: 1}}})
+	return &v.loops[0]
 }
 
 // partialsOf calls f for every partial of a loop below top (Hz) that the law lets lose
@@ -107,8 +108,8 @@ func TestLoopStaysBelowOne(t *testing.T) {
 	r := rand.New(rand.NewPCG(1, 1))
 	check := func(what string, l *loop) {
 		t.Helper()
-		if !(twoPole{l.c1, l.c2}).stable() {
-			t.Fatalf("%s: the loss filter's poles are outside: %g %g", what, l.c1, l.c2)
+		if !(twoPole{l.bank.C1[l.lane], l.bank.C2[l.lane]}).stable() {
+			t.Fatalf("%s: the loss filter's poles are outside: %g %g", what, l.bank.C1[l.lane], l.bank.C2[l.lane])
 		}
 		for i := 0; i <= 700; i++ {
 			w := math.Pi * float64(i) / 700
@@ -160,27 +161,18 @@ func TestLoopStaysBelowOneOnTheWay(t *testing.T) {
 		law := newLaw(0.05*math.Pow(2400, r.Float64()), r.Float64())
 		m := newMode(law, newLaw(muted, 0), f0, float64(r.IntN(2))*1e-3*r.Float64(), rate)
 		l := tuned(m, ip, f0)
-		l.line = make([]float32, 1<<17)
-		l.w = 1 << 16
-		l.glide.aim = l.hold(f0 * math.Exp2(8*r.Float64()-4))
+		l.glide.aim, l.calm = l.hold(f0*math.Exp2(8*r.Float64()-4)), false
 		l.glide.palmAim = r.Float64()
-		out, e := make([]float32, Grid), make([]float32, Grid)
 		for step := range 60 {
-			l.control()
-			part := 1 + step%(Grid-1)
-			l.render(out[:part], e)
-			rest := *l
-			if l.motion == gliding {
-				l.freeze()
-			}
+			l.pool.Step()
+			l.pool.Advance(1 + step%(Grid-1))
 			for i := range 300 {
 				w := math.Pi * float64(i*i) / (300 * 300)
 				if gain, _ := l.response(w); cmplx.Abs(gain) >= 1 {
 					t.Fatalf("rate %g, from %.2f to %.2f Hz, step %d: gain %.9f at w = %.4f", rate, f0, l.glide.aim, step, cmplx.Abs(gain), w)
 				}
 			}
-			rest.render(out[part:], e[part:])
-			*l = rest
+			l.pool.Advance(Grid)
 		}
 	}
 }

@@ -41,12 +41,12 @@ func (v *Voice) rehearse(velocity float64, seed uint64) {
 	d := v.design
 	rate := float64(noiseRate) // the noise's own, which needs the least work
 	if d.shape.length*rate < fewSamples {
-		rate = v.maker.rate // a peak between few samples depends on where they are
+		rate = v.pool.maker.rate // a peak between few samples depends on where they are
 	}
 	frames := int(d.shape.length*rate) + 3*taps
 	var trial [maxLoops]stroke
 	for i := range d.strings {
-		trial[i].start(&d.shape, v.maker.ip, v.loops[i].glide.aim, 1, rate, velocity, strandSeed(seed, i))
+		trial[i].start(&d.shape, v.pool.maker.ip, v.loops[i].glide.aim, 1, rate, velocity, strandSeed(seed, i))
 	}
 	peak := 0.0
 	for range frames {

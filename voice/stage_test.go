@@ -5,6 +5,7 @@ import (
 	"math/rand/v2"
 	"testing"
 
+	"tautwire/voice/lanes"
 	"tautwire/voice/measure"
 )
 
@@ -80,14 +81,33 @@ func partial(t *testing.T, signal []float32, rate, f, spacing float64) measure.M
 // response is the gain of a whole trip at w, with the very taps and
 // coefficients that the loop computes with, and its group delay in samples.
 func (l *loop) response(w float64) (gain complex128, trip float64) {
+	b, lane := &l.bank.Bank, l.lane
+	offset := float64(b.Offset[lane])
+	tap := func(i int) float64 {
+		h := float64(b.Tap[i][lane])
+		if j := i - (taps-lanes.SlopeTaps)/2; j >= 0 && j < lanes.SlopeTaps {
+			h += offset * float64(b.Slope[j][lane])
+		}
+		if j := i - (taps-lanes.CurveTaps)/2; j >= 0 && j < lanes.CurveTaps {
+			h += offset * offset * float64(b.Curve[j][lane])
+		}
+		return h * float64(b.Level[lane])
+	}
 	at := func(w float64) complex128 {
 		var sum complex128
-		for i, h := range l.h {
-			sum += complex(float64(h), 0) * unit(-w*float64(l.length-center+i))
+		newest := int(b.Back[lane]) - (taps - 1)
+		for i := range taps {
+			sum += complex(tap(i), 0) * unit(-w*float64(newest+i))
 		}
-		c := coefficients{loss: loss{twoPole: twoPole{l.c1, l.c2}}, sections: l.a}
+		c := coefficients{loss: loss{twoPole: twoPole{b.C1[lane], b.C2[lane]}}}
+		for i := range l.sections {
+			c.sections[i] = [2]float64{b.Section[i].A1[lane], b.Section[i].A2[lane]}
+		}
 		z := unit(w)
-		shelf := complex(l.shelf[0], 0) * (z - complex(l.shelf[1], 0)) / (z - complex(l.shelf[2], 0))
+		shelf := complex128(1)
+		if l.sections > 0 {
+			shelf = complex(b.Gain[lane], 0) * (z - complex(b.Zero[lane], 0)) / (z - complex(b.Pole[lane], 0))
+		}
 		return sum * shelf * c.rest(z, l.sections)
 	}
 	const step = 1e-6

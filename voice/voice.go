@@ -19,55 +19,94 @@ const maxLoops = 6
 // strokes is how many excitations of a string may overlap.
 const strokes = 2
 
-// Voice is the strings of one key, sounding. It is used from one goroutine.
+// Gain is a voice's amplitude on its way to the mix.
+type Gain struct{ Left, Right float32 }
+
+// gains move from one to the other over a control step.
+type gains struct{ from, to Gain }
+
+// at is the gain of a loop that has a part of the voice, at a frame of the step.
+func (g *gains) at(frame int, part float32) Gain {
+	way := float32(frame+1) / Grid
+	return Gain{
+		Left:  part * (g.from.Left + float32(way*(g.to.Left-g.from.Left))),
+		Right: part * (g.from.Right + float32(way*(g.to.Right-g.from.Right))),
+	}
+}
+
+// Voice is the strings of one key, sounding. It is used from one goroutine, and so is its Pool.
 type Voice struct {
-	maker *Maker
-	line  []float32
+	pool        *Pool
+	start, size int // of the pool's line
 
-	design  *Design
-	loops   [maxLoops]loop
-	strokes [maxLoops][strokes]stroke
-	fresh   bool // strung, and not yet rendered
-
-	phase int // frames of the present control step that are done
+	design *Design
+	loops  [maxLoops]loop
+	fresh  bool // strung, and not yet rendered
+	struck int  // the frame of the step at which it was
 
 	cents, strain float64 // from the design's pitch: asked for, and by tension
 	palm          float64 // 0 to 1
 	dark          float64 // 0 to 1
 	energy        float64
-	power         float64 // summed over the present control step
 	leak          float64 // of the energy, a control step
 
+	gains  gains
 	fading bool
-	fade   float32
-
-	e, y [Grid]float32
+	faded  float32 // 1 to 0, at a frame of the step
+	fadeOf int
 }
 
-// NewVoice allocates a voice and all the memory that it will ever need: one
-// string sounds down to lowest (Hz), several share the same lines.
-func (m *Maker) NewVoice(lowest float64) *Voice {
-	return newVoice(m, int(2*m.rate/lowest)+16*Grid)
-}
+// NewVoice allocates a voice in a pool of its own; see Pool.
+func (m *Maker) NewVoice(lowest float64) *Voice { return newVoice(m, linesFor(lowest, m.rate)) }
 
 func newVoice(m *Maker, frames int) *Voice {
-	return &Voice{maker: m, line: make([]float32, frames)}
+	p := newPool(m, 1, frames)
+	p.lone = true
+	return p.Voice(0)
 }
 
 // Fit puts a design's strings on the voice, at rest and undamped, with no stroke.
 func (v *Voice) Fit(d *Design) {
+	v.Reset()
+	if v.pool.lone {
+		v.pool.now = Grid // its steps begin with it
+	}
 	v.design = d
-	slot := len(v.line) / len(d.strings)
+	v.pool.live = append(v.pool.live, v)
+	const hear = 0.02 // s
+	v.leak = min(1, Grid/(v.pool.maker.rate*max(hear, 2/d.pitch)))
+	v.fresh, v.struck, v.fading = true, v.pool.now, false
+	v.cents, v.strain, v.palm, v.dark = 0, 0, 0, 0
+	v.gains = gains{}
+	slot := v.size / len(d.strings)
 	for i, s := range d.strings {
-		v.loops[i].tune(d.modes[s.mode], v.maker.ip, v.line[i*slot:(i+1)*slot], d.pitch*octaves(s.cents))
-		for j := range v.strokes[i] {
-			v.strokes[i][j] = stroke{}
+		v.loops[i] = loop{
+			mode: d.modes[s.mode], voice: v, pool: v.pool, mix: s.mix,
+			start: v.start + i*slot, size: slot,
+		}
+		v.loops[i].tune(d.pitch * octaves(s.cents))
+	}
+}
+
+// Reset takes the strings off: the voice is silent at once.
+func (v *Voice) Reset() {
+	v.energy = 0
+	if v.design == nil {
+		return
+	}
+	for i := range v.design.strings {
+		v.loops[i].unhouse()
+	}
+	v.design = nil
+	live := v.pool.live
+	last := len(live) - 1
+	for i, other := range live {
+		if other == v {
+			live[i] = live[last]
+			v.pool.live = live[:last]
+			return
 		}
 	}
-	const hear = 0.02 // s
-	v.leak = min(1, Grid/(v.maker.rate*max(hear, 2/d.pitch)))
-	v.fresh, v.phase, v.energy, v.power, v.fading, v.fade = true, 0, 0, 0, false, 1
-	v.cents, v.strain, v.palm, v.dark = 0, 0, 0, 0
 }
 
 // Strike sets the strings going with a velocity above 0 to 127. A voice that
@@ -86,11 +125,11 @@ func (v *Voice) Strike(d *Design, velocity float64, seed uint64) {
 	}
 	for i := range d.strings {
 		l := &v.loops[i]
-		s := &v.strokes[i][0]
-		if other := &v.strokes[i][1]; !s.over() && (other.over() || other.frame > s.frame) {
+		s := &l.strokes[0]
+		if other := &l.strokes[1]; !s.over() && (other.over() || other.frame > s.frame) {
 			s = other
 		}
-		s.start(&d.shape, v.maker.ip, l.glide.aim, l.meanKeeps(), v.maker.rate, velocity, strandSeed(seed, i))
+		s.start(&d.shape, v.pool.maker.ip, l.glide.aim, l.meanKeeps(), v.pool.maker.rate, velocity, strandSeed(seed, i))
 		if gain > 0 {
 			s.gain *= float32(gain)
 		}
@@ -102,7 +141,7 @@ func (v *Voice) Strike(d *Design, velocity float64, seed uint64) {
 
 // latest is the stroke of loop i that began last.
 func (v *Voice) latest(i int) *stroke {
-	a, b := &v.strokes[i][0], &v.strokes[i][1]
+	a, b := &v.loops[i].strokes[0], &v.loops[i].strokes[1]
 	if a.shape == nil || (b.shape != nil && b.frame < a.frame) {
 		return b
 	}
@@ -126,19 +165,23 @@ func (v *Voice) retune() {
 	for i, s := range v.design.strings {
 		l := &v.loops[i]
 		f0 := l.hold(v.design.pitch * octaves(cents+s.cents))
-		if v.fresh && f0 != l.glide.aim {
-			damped := l.damped
-			l.tune(l.mode, l.ip, l.line, f0)
-			l.damped = damped
-			for j := range v.strokes[i] {
-				if st := &v.strokes[i][j]; st.shape != nil {
-					st.echo = st.shape.position * v.maker.rate / f0
+		if f0 == l.glide.aim {
+			continue
+		}
+		if v.unheard() {
+			l.tune(f0)
+			for j := range l.strokes {
+				if st := &l.strokes[j]; st.shape != nil {
+					st.echo = st.shape.position * v.pool.maker.rate / f0
 				}
 			}
 		}
-		l.glide.aim = f0
+		l.glide.aim, l.calm = f0, l.calm && l.glide.pitch == f0
 	}
 }
+
+// unheard says that the voice has been strung and nothing of it rendered yet.
+func (v *Voice) unheard() bool { return v.fresh && v.struck == v.pool.now }
 
 // Damp lays the damper on: 0 lets ring, 1 makes T60 the design's release, more
 // is faster in proportion. It takes hold over some 5 ms.
@@ -147,7 +190,9 @@ func (v *Voice) Damp(amount float64) {
 		return
 	}
 	for i := range v.design.strings {
-		v.loops[i].damped.aim = amount * v.design.release
+		l := &v.loops[i]
+		l.damped.aim = amount * v.design.release
+		l.calm = l.calm && l.damped.aim == l.damped.rate
 	}
 }
 
@@ -169,8 +214,9 @@ func (v *Voice) dullen() {
 		return
 	}
 	for i := range v.design.strings {
-		g := &v.loops[i].glide
-		g.palmAim, g.darkAim = v.palm, max(v.palm, v.dark)
+		l := &v.loops[i]
+		l.glide.palmAim, l.glide.darkAim = v.palm, max(v.palm, v.dark)
+		l.calm = l.calm && l.glide.arrived()
 	}
 }
 
@@ -182,56 +228,136 @@ func (v *Voice) Touch(node int, amount float64) {
 		return
 	}
 	for i := range v.design.strings {
-		d := &v.loops[i].damped
-		d.node, d.fingerAim = max(node, 2), min(1, max(0, amount))*firmest
+		l := &v.loops[i]
+		l.damped.node, l.damped.fingerAim = max(node, 2), min(1, max(0, amount))*firmest
+		l.calm = l.calm && !l.damped.touched()
 	}
 }
 
 // Fade brings the voice to silence over 2 ms, for another note to take it.
-func (v *Voice) Fade() { v.fading = true }
+func (v *Voice) Fade() {
+	if v.design == nil || v.fading {
+		return
+	}
+	for i := range v.design.strings {
+		l := &v.loops[i]
+		l.bank.catchUp(v.pool, v.pool.now)
+		// mixed by hand from now on
+		b := &l.bank.Bank
+		b.Left[l.lane], b.Right[l.lane], b.DLeft[l.lane], b.DRight[l.lane] = 0, 0, 0, 0
+	}
+	v.fading, v.faded, v.fadeOf = true, 1, v.pool.now
+}
 
-// Reset takes the strings off: the voice is silent at once.
-func (v *Voice) Reset() { v.design, v.energy = nil, 0 }
+// fadeAt is the factor of a fading voice at a frame of the step.
+func (v *Voice) fadeAt(frame int) float32 {
+	return ease(max(0, v.faded-float32(float32(frame+1-v.fadeOf)*v.fadeStep())))
+}
+
+func (v *Voice) fadeStep() float32 {
+	const fadeTime = 0.002 // s
+	return float32(1 / (fadeTime * v.pool.maker.rate))
+}
+
+// Mix sets the gains at which the voice goes to its pool's mix: from one to another over the control step
+// that is about to begin, or, from within one, both the same, at once.
+func (v *Voice) Mix(from, to Gain) {
+	if v.design == nil || v.gains == (gains{from, to}) {
+		return
+	}
+	v.gains = gains{from, to}
+	if v.fading {
+		return
+	}
+	for i := range v.design.strings {
+		l := &v.loops[i]
+		b, lane := &l.bank.Bank, l.lane
+		b.Left[lane], b.Right[lane] = l.mix*from.Left, l.mix*from.Right
+		b.DLeft[lane], b.DRight[lane] = l.mix*(to.Left-from.Left)/Grid, l.mix*(to.Right-from.Right)/Grid
+		l.shifting = from != to
+	}
+}
+
+// Push adds a force on the bridge, which all the strings feel, from a frame of the present
+// control step on. It comes before that frame is rendered.
+func (v *Voice) Push(frame int, force []float32) {
+	if v.design == nil {
+		return
+	}
+	for i := range v.design.strings {
+		l := &v.loops[i]
+		l.bank.push(l.lane, frame, force)
+	}
+}
+
+// Last adds to out, at a gain, the last len(out) frames that were rendered: the voice alone, before the mix.
+func (v *Voice) Last(out []float32, gain float32) {
+	if v.design == nil {
+		return
+	}
+	for i := range v.design.strings {
+		l := &v.loops[i]
+		g := gain * l.mix
+		for k, y := range l.past(len(out)) {
+			out[k] += float32(g * y)
+		}
+	}
+}
 
 // Energy is the mean square of what the voice lately put out.
 func (v *Voice) Energy() float64 { return v.energy }
 
-// Render writes len(out) frames, mono. drive, nil or as long, is a force on
+// Render writes len(out) frames, mono, of a voice that is alone in its pool. drive, nil or as long, is a force on
 // the bridge that the strings feel. What a call renders does not depend on how the
 // stream is cut into calls.
 func (v *Voice) Render(out, drive []float32) {
-	if v.design == nil {
-		clear(out)
-		return
-	}
-	v.fresh = false
+	p := v.pool
 	for len(out) > 0 {
-		if v.phase == 0 {
-			v.control()
+		if p.now == Grid {
+			p.Step()
 		}
-		n := min(len(out), Grid-v.phase)
-		var d []float32
+		n := min(len(out), Grid-p.now)
 		if drive != nil {
-			d, drive = drive[:n], drive[n:]
+			v.Push(p.now, drive[:n])
+			drive = drive[n:]
 		}
-		v.chunk(out[:n], d)
+		from := p.now
+		p.Advance(from + n)
+		clear(out[:n])
+		v.Last(out[:n], 1)
+		if v.fading {
+			for i := range out[:n] {
+				out[i] *= v.fadeAt(from + i)
+			}
+		}
 		out = out[n:]
-		v.phase = (v.phase + n) % Grid
 	}
 }
 
-// control prepares the next Grid frames.
-func (v *Voice) control() {
-	v.energy += (v.power/Grid - v.energy) * v.leak
-	v.power = 0
+// step prepares the next control step.
+func (v *Voice) step() {
+	v.fresh = false
+	power := 0.0
+	for i := range v.design.strings {
+		l := &v.loops[i]
+		power += float64(float64(l.mix) * l.take())
+	}
+	if v.fading {
+		v.faded = max(0, v.faded-float32(float32(Grid-v.fadeOf)*v.fadeStep()))
+		v.fadeOf = 0
+		power *= float64(v.faded * v.faded)
+	}
+	v.energy += float64((power/Grid - v.energy) * v.leak)
 	if d := v.design; d.tension > 0 && d.hardest > 0 {
 		v.tighten(d.tension * min(1, v.energy/d.hardest))
 	}
 	for i := range v.design.strings {
 		l := &v.loops[i]
-		l.control()
-		for j := range v.strokes[i] {
-			if s := &v.strokes[i][j]; !s.over() {
+		if !l.calm {
+			l.control()
+		}
+		for j := range l.strokes {
+			if s := &l.strokes[j]; !s.over() {
 				s.follow(l.glide.pitch)
 			}
 		}
@@ -252,56 +378,6 @@ func (v *Voice) tighten(cents float64) {
 	v.retune()
 }
 
-// chunk renders frames that lie within one control step.
-func (v *Voice) chunk(out, drive []float32) {
-	for i, s := range v.design.strings {
-		y := out
-		if i > 0 {
-			y = v.y[:len(out)]
-		}
-		v.loops[i].render(y, v.force(i, len(out), drive))
-		switch {
-		case i > 0:
-			for k, x := range y {
-				out[k] += float32(s.mix * x)
-			}
-		case s.mix != 1:
-			for k, x := range y {
-				out[k] = s.mix * x
-			}
-		}
-	}
-	if v.fading {
-		v.fadeOut(out)
-	}
-	for _, x := range out {
-		v.power += float64(x * x)
-	}
-}
-
-// force is what drives loop i over n frames, or nil when nothing does.
-func (v *Voice) force(i, n int, drive []float32) []float32 {
-	if drive == nil && v.strokes[i][0].over() && v.strokes[i][1].over() {
-		return nil
-	}
-	e := v.e[:n]
-	clear(e)
-	copy(e, drive)
-	for j := range v.strokes[i] {
-		v.strokes[i][j].render(e)
-	}
-	return e
-}
-
-func (v *Voice) fadeOut(out []float32) {
-	const fadeTime = 0.002 // s
-	step := float32(1 / (fadeTime * v.maker.rate))
-	for i := range out {
-		v.fade = max(0, v.fade-step)
-		out[i] *= ease(v.fade)
-	}
-}
-
 // ease makes a straight way from 0 to 1 one without corners: the least polynomial whose first
 // four derivatives are 0 at both ends. A straight fade of 2 ms clicks at -62 dB by
 // the test of measure.Click, this one at -125 dB.
@@ -314,15 +390,15 @@ func ease(x float32) float32 {
 // Silent says that the strings are below -120 dBFS with no stroke under way:
 // the voice may be used for another key.
 func (v *Voice) Silent() bool {
-	if v.design == nil || v.fading && v.fade <= 0 {
+	if v.design == nil || v.fading && v.faded <= 0 {
 		return true
 	}
 	for i := range v.design.strings {
 		if !v.loops[i].atRest() {
 			return false
 		}
-		for j := range v.strokes[i] {
-			if !v.strokes[i][j].over() {
+		for j := range v.loops[i].strokes {
+			if !v.loops[i].strokes[j].over() {
 				return false
 			}
 		}

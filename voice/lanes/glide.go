@@ -32,6 +32,17 @@ type Rows [RowsInSample]Row
 type Glide struct {
 	On                bool
 	Delay, D1, D2, D3 int64
+
+	center int64 // the delay for which the taps are
+	Finger Finger
+}
+
+// Finger lies on a string at a part of its length: it mixes what is read with what is there Side,
+// in 2^-32 samples, before and after, each taken Firm. Nothing is read before Floor.
+type Finger struct {
+	Firm  float32
+	Side  int64
+	Floor int64
 }
 
 // turn gives each gliding lane the row of taps that is nearest to its delay in the
@@ -48,8 +59,9 @@ func (b *Bank) turnLane(lane int, rows *Rows) {
 	if !g.On {
 		return
 	}
-	middle := g.Delay + g.D1>>1
+	middle := g.Delay + (g.D1-g.D1/b.Block)>>1 // of the first and the last frame
 	center := middle&^(1<<shift-1) + 1<<(shift-1)
+	g.center = center
 	b.Offset[lane] = float32(int32(g.Delay-center)) / (1 << 32)
 	b.Back[lane] = middle>>32 + Taps - 1 - Newest
 	row := &rows[uint32(middle)>>shift]
@@ -65,4 +77,45 @@ func (b *Bank) turnLane(lane int, rows *Rows) {
 	g.Delay += g.D1
 	g.D1 += g.D2
 	g.D2 += g.D3
+}
+
+// touched renders a gliding lane with a finger on it.
+func (b *Bank) touched(p pass, line []float32, at int64, rows *Rows) {
+	l := p.lane & (Width - 1)
+	g := &b.Glide[l]
+	f := g.Finger
+	h := b.taps(l)
+	for i := range p.target {
+		x := b.readGliding(l, p.source[i:i+Taps:i+Taps], &h)
+		delay := g.center + int64(float64(b.Offset[l])*(1<<32))
+		here := at + int64(i)
+		before, after := delay-f.Side, delay+f.Side
+		if before>>32 > Newest && here-after>>32-Taps >= f.Floor {
+			sides := rows.read(line, here, before) + rows.read(line, here, after)
+			x = float32((1-2*f.Firm)*x) + float32(f.Firm*sides)
+		}
+		b.bend(l)
+		b.move(l)
+		p.end(b, i, b.lossy(l, x))
+	}
+}
+
+// read is what a line holds a delay, in 2^-32 samples, before at.
+func (r *Rows) read(line []float32, at, delay int64) float32 {
+	const shift = 32 - rowBits
+	row := &r[uint32(delay)>>shift]
+	center := delay&^(1<<shift-1) + 1<<(shift-1)
+	offset := float32(int32(delay-center)) / (1 << 32)
+	first := at - delay>>32 - (Taps - 1 - Newest)
+	s := line[first : first+Taps]
+	x := float32(0)
+	for i, k := range row.Curve {
+		x += float32(k * s[Taps-1-firstCurve-i])
+	}
+	x *= offset
+	for i, k := range row.Slope {
+		x += float32(k * s[Taps-1-firstSlope-i])
+	}
+	x *= offset
+	return readOn(x, s, &row.Tap)
 }

@@ -97,6 +97,18 @@ func (m *Mix) Clear(from, until int) {
 	clear(m.Right[from:until])
 }
 
+// Sum adds up the lanes of frames from a frame on.
+func (m *Mix) Sum(left, right []float32, from int) {
+	for i := range left {
+		left[i] = m.Left[from+i].sum()
+		right[i] = m.Right[from+i].sum()
+	}
+}
+
+func (x *floats) sum() float32 {
+	return ((x[0] + x[4]) + (x[2] + x[6])) + ((x[1] + x[5]) + (x[3] + x[7]))
+}
+
 // Force is what drives each lane in each frame of a control step.
 type Force [Frames]floats
 
@@ -166,3 +178,57 @@ func (b *Bank) check(lane int, least, ahead int64, line []float32) {
 
 // nothing is no force. It is never written.
 var nothing Force
+
+// Copy takes a lane of another bank to a lane of b, all but its line's place
+// in the mix of the step.
+func (b *Bank) Copy(to int, other *Bank, from int) {
+	for i := range b.Tap {
+		b.Tap[i][to], b.DTap[i][to] = other.Tap[i][from], other.DTap[i][from]
+	}
+	for i := range b.Slope {
+		b.Slope[i][to] = other.Slope[i][from]
+	}
+	for i := range b.Curve {
+		b.Curve[i][to] = other.Curve[i][from]
+	}
+	d, s := b.singles(), other.singles()
+	for i := range d {
+		d[i][to] = s[i][from]
+	}
+	dd, ss := b.doubles(), other.doubles()
+	for i := range dd {
+		dd[i][to] = ss[i][from]
+	}
+	b.At[to], b.Back[to], b.Glide[to] = other.At[from], other.Back[from], other.Glide[from]
+}
+
+// Rest silences a lane, which reads and writes the line at the place given.
+func (b *Bank) Rest(lane int, at int64) {
+	var still Bank
+	b.Copy(lane, &still, 0)
+	b.At[lane], b.Back[lane] = at, Taps-1+Shortest
+}
+
+func (b *Bank) singles() [11]*floats {
+	return [...]*floats{&b.Level, &b.DLevel, &b.Offset, &b.DOffset, &b.D2Offset, &b.D3Offset, &b.Left, &b.Right, &b.DLeft, &b.DRight, &b.Power}
+}
+
+// filterDoubles is how many doubles a lane has beside those of its sections.
+const filterDoubles = 13
+
+func (b *Bank) doubles() (all [filterDoubles + 4*MaxSections + 2*(MaxSections+1)]*doubles) {
+	copy(all[:], []*doubles{
+		&b.C1, &b.C2, &b.DC1, &b.DC2, &b.V1, &b.V2,
+		&b.Gain, &b.Zero, &b.Pole, &b.DGain, &b.DZero, &b.DPole, &b.Shelf,
+	})
+	rest := all[filterDoubles:]
+	for i := range b.Section {
+		s := &b.Section[i]
+		rest[4*i], rest[4*i+1], rest[4*i+2], rest[4*i+3] = &s.A1, &s.A2, &s.DA1, &s.DA2
+	}
+	rest = rest[4*MaxSections:]
+	for i := range b.Node {
+		rest[2*i], rest[2*i+1] = &b.Node[i].X, &b.Node[i].X1
+	}
+	return all
+}

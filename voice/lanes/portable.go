@@ -13,6 +13,9 @@ func Portable() Kernel {
 // Solo renders frames of one lane alone, as Kernel.Render does of all. The taps of a
 // lane that is Moving change by DTap, and it may read the frame before.
 func (b *Bank) Solo(lane int, m *Mix, line []float32, force *Force, motion Motion, from, until int) {
+	if force == nil {
+		force = &nothing
+	}
 	do := (*Bank).ramping
 	switch {
 	case motion == Still && b.Sections == 0:
@@ -31,7 +34,12 @@ func (b *Bank) Solo(lane int, m *Mix, line []float32, force *Force, motion Motio
 			}
 		}
 		b.check(lane, Taps, int64(until-start), line)
-		do(b, b.pass(lane, m, line, force, from-start, from, end-from))
+		p := b.pass(lane, m, line, force, from-start, from, end-from)
+		if motion == Gliding && b.Glide[lane].Finger.Firm > 0 {
+			b.touched(p, line, b.At[lane]+int64(from-start), m.Rows)
+		} else {
+			do(b, p)
+		}
 		from = end
 	}
 }
@@ -145,23 +153,32 @@ func (b *Bank) gliding(p pass) {
 	l := p.lane & (Width - 1)
 	h := b.taps(l)
 	for i := range p.target {
-		s := p.source[i : i+Taps : i+Taps]
-		x := float32(0)
-		for t := CurveTaps - 1; t >= 0; t-- {
-			x += float32(b.Curve[t][l] * s[Taps-1-firstCurve-t])
-		}
-		x *= b.Offset[l]
-		for t := SlopeTaps - 1; t >= 0; t-- {
-			x += float32(b.Slope[t][l] * s[Taps-1-firstSlope-t])
-		}
-		x *= b.Offset[l]
-		x = readOn(x+bias, s, &h)
-		b.Offset[l] += b.DOffset[l]
-		b.DOffset[l] += b.D2Offset[l]
-		b.D2Offset[l] += b.D3Offset[l]
+		x := b.readGliding(l, p.source[i:i+Taps:i+Taps], &h)
+		b.bend(l)
 		b.move(l)
 		p.end(b, i, b.lossy(l, x))
 	}
+}
+
+// readGliding reads samples, the oldest first, at the lane's offset from its taps.
+func (b *Bank) readGliding(l int, s []float32, h *[Taps]float32) float32 {
+	x := float32(0)
+	for t := CurveTaps - 1; t >= 0; t-- {
+		x += float32(b.Curve[t][l] * s[Taps-1-firstCurve-t])
+	}
+	x *= b.Offset[l]
+	for t := SlopeTaps - 1; t >= 0; t-- {
+		x += float32(b.Slope[t][l] * s[Taps-1-firstSlope-t])
+	}
+	x *= b.Offset[l]
+	return readOn(x+bias, s, h)
+}
+
+// bend takes a lane's delay a frame on.
+func (b *Bank) bend(l int) {
+	b.Offset[l] += b.DOffset[l]
+	b.DOffset[l] += b.D2Offset[l]
+	b.D2Offset[l] += b.D3Offset[l]
 }
 
 // lossy takes what was read through a moving lane's level and filters.

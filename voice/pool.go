@@ -1,0 +1,118 @@
+package voice
+
+import "tautwire/voice/lanes"
+
+// Pool is a fixed number of voices that sound together. Their strings lie side by
+// side in banks of eight, so that a vector unit computes them at once, and are mixed there.
+//
+// The stream is cut into control steps of Grid frames: at the start of each, Step leads
+// all that moves slowly on; within it, Advance renders. What is asked of a voice takes effect
+// at the frame that has been reached, whatever that is, and costs only its own bank a cut.
+type Pool struct {
+	maker  *Maker
+	kernel lanes.Kernel
+	line   []float32 // of all strings, one after the other; before them, what idle lanes use
+	voices []Voice
+	live   []*Voice // that have a design
+	banks  []bank
+	mix    lanes.Mix
+	now    int  // frames of the present step that are done
+	lone   bool // there is one voice, which is its own clock
+
+	e [Grid]float32 // a stroke's force
+}
+
+// idle is how much of the line idle lanes use.
+const idle = lanes.History + taps + lanes.Shortest + Grid + lanes.Spill
+
+// NewPool allocates voices and all the memory that they will ever need: one
+// string sounds down to lowest (Hz), several share the same lines.
+func (m *Maker) NewPool(voices int, lowest float64) *Pool {
+	return newPool(m, voices, linesFor(lowest, m.rate))
+}
+
+// linesFor is how many frames the lines of a voice take that sounds down to lowest (Hz).
+func linesFor(lowest, rate float64) int { return int(2*rate/lowest) + 16*Grid }
+
+func newPool(m *Maker, voices, frames int) *Pool {
+	loops := voices * maxLoops
+	p := &Pool{
+		maker:  m,
+		kernel: lanes.Best(),
+		line:   make([]float32, idle+voices*frames),
+		voices: make([]Voice, voices),
+		live:   make([]*Voice, 0, voices),
+		// each kind of bank may have one that is not full
+		banks: make([]bank, loops/lanes.Width+2*(maxSections+1)+1),
+	}
+	p.mix.Rows, p.now = m.rows, Grid
+	for i := range p.banks {
+		p.banks[i].clear()
+	}
+	for i := range p.voices {
+		v := &p.voices[i]
+		v.pool, v.start, v.size = p, idle+i*frames, frames
+	}
+	return p
+}
+
+// Len is the number of voices.
+func (p *Pool) Len() int { return len(p.voices) }
+
+// Voice is the i-th voice.
+func (p *Pool) Voice(i int) *Voice { return &p.voices[i] }
+
+// Step begins the next control step. The one before must have been rendered whole.
+func (p *Pool) Step() {
+	p.now = 0
+	p.mix.Clear(0, Grid)
+	for _, v := range p.live {
+		v.step()
+	}
+	for i := range p.banks {
+		p.banks[i].begin()
+	}
+}
+
+// Advance renders all voices up to a frame of the present step.
+func (p *Pool) Advance(until int) {
+	for i := range p.banks {
+		p.banks[i].catchUp(p, until)
+	}
+	p.now = until
+}
+
+// Arrive tells, without rendering, that a frame of the present step has been reached.
+func (p *Pool) Arrive(frame int) { p.now = frame }
+
+// Sum adds up the voices' frames of the present step from a frame on, in stereo.
+func (p *Pool) Sum(left, right []float32, from int) { p.mix.Sum(left, right, from) }
+
+// Again mixes the frames of the present step anew that have been rendered since a
+// frame, from what the strings hold: after one has been taken off whose numbers had run away.
+func (p *Pool) Again(from int) {
+	p.mix.Clear(from, p.now)
+	for i := range p.banks {
+		p.banks[i].remix(p, from, p.now)
+	}
+}
+
+// place deals a loop a lane among its like.
+func (p *Pool) place(l *loop, solo bool) {
+	var empty *bank
+	for i := range p.banks {
+		b := &p.banks[i]
+		if b.used == 0 {
+			if empty == nil {
+				empty = b
+			}
+			continue
+		}
+		if b.used < lanes.Width && b.solo == solo && int(b.Sections) == l.sections {
+			b.take(p, l)
+			return
+		}
+	}
+	empty.solo, empty.Sections = solo, int64(l.sections)
+	empty.take(p, l)
+}
