@@ -76,7 +76,7 @@ func (b *bank) begin() {
 // beginGlides sets the gliding loops on their way, the taps to stand for
 // as many frames as the fastest (samples a frame) allows.
 func (b *bank) beginGlides(fastest float64) {
-	const near = 0.1 // samples: how far the delay may be from the taps' own
+	const near = 0.06 // samples: how far the delay may be from the taps' own
 	b.Block = Grid
 	for b.Block > 1 && fastest*float64(b.Block-1)/2 > near {
 		b.Block /= 2

@@ -83,6 +83,9 @@ func partial(t *testing.T, signal []float32, rate, f, spacing float64) measure.M
 func (l *loop) response(w float64) (gain complex128, trip float64) {
 	b, lane := &l.bank.Bank, l.lane
 	offset := float64(b.Offset[lane])
+	if l.motion == gliding { // that of the last frame
+		offset -= float64(b.DOffset[lane] - (b.D2Offset[lane] - b.D3Offset[lane]))
+	}
 	tap := func(i int) float64 {
 		h := float64(b.Tap[i][lane])
 		if j := i - (taps-lanes.SlopeTaps)/2; j >= 0 && j < lanes.SlopeTaps {

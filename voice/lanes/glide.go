@@ -2,11 +2,11 @@ package lanes
 
 const (
 	// RowsInSample is how many rows of taps there are for a sample of delay.
-	RowsInSample = 64
-	rowBits      = 6
+	RowsInSample = 128
+	rowBits      = 7
 
 	SlopeTaps = 8 // taps of a row's slope, in the middle of the read
-	CurveTaps = 4
+	CurveTaps = 6
 
 	firstSlope = (Taps - SlopeTaps) / 2 // the newest sample's tap
 	firstCurve = (Taps - CurveTaps) / 2
