@@ -13,6 +13,7 @@ import (
 // Every decision is taken from values of the grid and of the event alone, so that the
 // same performance gets the same strings whatever the period.
 type allocator struct {
+	pool  *voice.Pool
 	slots []slot
 	free  []int16 // a stack
 	live  []int16 // slots that are rendered, in the order of their strokes
@@ -41,14 +42,8 @@ type slot struct {
 	cents, damp, mute, node, dark float64
 
 	// Gains at the start of this step of the grid and at its end.
-	from, to gains
-
-	out [voice.Grid]float32
+	from, to voice.Gain
 }
-
-// gains are a string's amplitudes on its way to the mix. The bridge is what the
-// other strings feel of it.
-type gains struct{ left, right, bridge float32 }
 
 const (
 	none = -1
@@ -66,16 +61,26 @@ const (
 func newAllocator(maker *voice.Maker, strings int) allocator {
 	n := strings + spareStrings
 	a := allocator{
+		pool:  maker.NewPool(n, lowestPlayed),
 		slots: make([]slot, n),
 		free:  make([]int16, n),
 		live:  make([]int16, 0, n),
 		limit: strings,
 	}
 	for i := range a.slots {
-		a.slots[i].voice = maker.NewVoice(lowestPlayed)
+		a.slots[i].voice = a.pool.Voice(i)
 		a.free[i] = int16(n - 1 - i)
 	}
 	return a
+}
+
+// takesOff reports whether a stroke, on a slot or on none, takes off at once what
+// may still sound there.
+func (a *allocator) takesOff(index int16) bool {
+	if index == none {
+		return len(a.free) == 0
+	}
+	return a.slots[index].voice.Silent()
 }
 
 // take returns a silent slot, already live. It tells whether another string had to
@@ -259,10 +264,10 @@ func (s *slot) tell(channels *[16]channel, wave float64) {
 }
 
 // aim returns the gains of the slot as its channel stands.
-func (s *slot) aim(channels *[16]channel, pan *panTable) gains {
+func (s *slot) aim(channels *[16]channel, pan *panTable) voice.Gain {
 	c := &channels[s.channel]
 	key := &s.patch.keys[s.key]
 	gain := key.gain * float32(c.gain.value)
 	left, right := pan.gains(c.place.value + key.pan)
-	return gains{left: gain * left, right: gain * right, bridge: gain}
+	return voice.Gain{Left: gain * left, Right: gain * right}
 }

@@ -1,82 +1,53 @@
 package engine
 
-// mix renders n frames, which cross neither an event nor a multiple of voice.Grid,
-// into left and right.
+// mix renders n frames up to e.frame, which lie within one step of the grid, into left and right.
 func (e *Engine) mix(n int) {
 	left, right := e.left[:n], e.right[:n]
-	at := int(e.frame % int64(len(e.ramp)))
+	at := e.place() - n
 	ramp := e.ramp[at : at+n]
-	for _, index := range e.strings.live {
-		s := &e.strings.slots[index]
-		s.voice.Render(s.out[:n], nil)
-	}
-	e.sum(left, right, ramp)
+	pool := e.strings.pool
+	pool.Advance(at + n)
+	pool.Sum(left, right, at)
 	if !allSane(left) || !allSane(right) {
-		e.cure(n)
-		e.sum(left, right, ramp)
+		e.cure(at, n)
+		pool.Sum(left, right, at)
 		e.scrub(left)
 		e.scrub(right)
 	}
 	if e.sympathy.needed(e.stage.patch) {
-		e.resonate(left, right, ramp)
+		e.resonate(left, right, at)
 	}
 	e.change.process(e.stage.body, left, right, ramp)
 	e.master.process(left, right, ramp)
 }
 
-// sum adds the strings in the order of their strokes.
-func (e *Engine) sum(left, right, ramp []float32) {
-	clear(left)
-	clear(right)
-	for _, index := range e.strings.live {
-		s := &e.strings.slots[index]
-		out := s.out[:len(left)]
-		if s.from == s.to {
-			addSteady(left, right, out, s.to)
-		} else {
-			addMoving(left, right, out, ramp, s.from, s.to)
-		}
-	}
-}
-
-func addSteady(left, right, out []float32, g gains) {
-	left, right = left[:len(out)], right[:len(out)]
-	for i, y := range out {
-		left[i] += float32(y * g.left)
-		right[i] += float32(y * g.right)
-	}
-}
-
-func addMoving(left, right, out, ramp []float32, from, to gains) {
-	left, right, ramp = left[:len(out)], right[:len(out)], ramp[:len(out)]
-	stepLeft, stepRight := to.left-from.left, to.right-from.right
-	for i, y := range out {
-		left[i] += float32(y * (from.left + float32(stepLeft*ramp[i])))
-		right[i] += float32(y * (from.right + float32(stepRight*ramp[i])))
-	}
-}
+// place is where e.frame is in the step of the grid that ends with it or around it.
+func (e *Engine) place() int { return int((e.frame-1)%int64(len(e.ramp))) + 1 }
 
 // resonate adds what sounds in sympathy.
-func (e *Engine) resonate(left, right, ramp []float32) {
+func (e *Engine) resonate(left, right []float32, at int) {
+	e.sympathy.hear(left, right)
 	for _, index := range e.strings.live {
 		s := &e.strings.slots[index]
-		e.sympathy.hear(s.key, s.out[:len(left)], s.from.bridge, s.to.bridge, ramp)
+		e.sympathy.leaveOut(s.key, s.voice, at, len(left))
 	}
-	e.sympathy.add(left, right, ramp)
+	e.sympathy.add(left, right, at)
 }
 
-// cure silences the frames of strings whose numbers have run away; the string itself
-// is retired on the grid.
-func (e *Engine) cure(n int) {
+// cure takes strings off whose numbers have run away in the last n frames; they are retired
+// on the grid.
+func (e *Engine) cure(at, n int) {
+	out := e.sympathy.out[:n]
 	for _, index := range e.strings.live {
 		s := &e.strings.slots[index]
-		for i, y := range s.out[:n] {
-			if !sane(float64(y)) {
-				s.out[i] = 0
-				s.wild = true
-			}
+		clear(out)
+		s.voice.Bridge(out, at)
+		if !allSane(out) {
+			s.wild = true
+			s.voice.Reset()
 		}
 	}
+	e.strings.pool.Again(at)
 }
 
 // scrub keeps from the body, which would never forget it, what is still no number.

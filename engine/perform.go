@@ -131,6 +131,9 @@ func (e *Engine) noteOn(c *channel, number, key uint8, ev Event) {
 	if design == nil {
 		return
 	}
+	if e.strings.takesOff(index) {
+		e.flush() // while what is left of its sound is there
+	}
 	fresh := index == none
 	if fresh {
 		var stolen bool
@@ -149,6 +152,7 @@ func (e *Engine) noteOn(c *channel, number, key uint8, ev Event) {
 	if fresh {
 		s.to = s.aim(&e.channels, e.pan)
 		s.from = s.to
+		s.voice.Mix(s.to, s.to)
 	}
 }
 
@@ -161,6 +165,7 @@ func (e *Engine) noteOff(c *channel, key uint8, velocity float32) {
 
 // soundOff silences a channel. When no other sounds, the body is silenced as well.
 func (e *Engine) soundOff(c *channel, number uint8) {
+	e.flush() // what sounds in sympathy needs all that came before
 	c.releaseAll()
 	c.caught.clear()
 	if e.strings.silence(number, &e.channels) == 0 && e.stage.body != nil {

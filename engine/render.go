@@ -71,6 +71,9 @@ type Engine struct {
 	master    master
 	limiter   *limiter
 
+	rest  []float32 // of the period that is being rendered
+	mixed int64     // the frame from which on
+
 	ramp        [voice.Grid]float32 // 0 to below 1 over a step of the grid
 	left, right [voice.Grid]float32
 	volume      atomic.Uint32 // what SetVolume set, bits of a float32
@@ -210,7 +213,7 @@ func (e *Engine) Render(out []float32) {
 		e.awake = false
 	}
 	e.gather(frames)
-	rest := out
+	e.rest, e.mixed = out, e.frame
 	for end := e.frame + frames; e.frame < end; {
 		grid := e.frame%voice.Grid == 0
 		if grid {
@@ -220,14 +223,27 @@ func (e *Engine) Render(out []float32) {
 		if grid {
 			e.step()
 		}
-		n := int(until - e.frame)
-		e.mix(n)
-		interleave(rest[:2*n], e.left[:n], e.right[:n])
-		rest = rest[2*n:]
 		e.frame = until
+		e.strings.pool.Arrive(e.place())
+		if until == end || until%voice.Grid == 0 {
+			e.flush()
+		}
 	}
 	e.limiter.process(out)
 	e.meter(out)
+}
+
+// flush renders what has not been since the last time, up to the present frame. It comes at the end of
+// each step of the grid and of each period; between them an event takes the
+// strings that it is about there, and leaves the others for later.
+func (e *Engine) flush() {
+	n := int(e.frame - e.mixed)
+	if n == 0 {
+		return
+	}
+	e.mix(n)
+	interleave(e.rest[:2*n], e.left[:n], e.right[:n])
+	e.rest, e.mixed = e.rest[2*n:], e.frame
 }
 
 func interleave(out, left, right []float32) {
@@ -267,6 +283,7 @@ func (e *Engine) step() {
 		e.channels[i].step(e.glideStep)
 	}
 	e.stepStrings()
+	e.strings.pool.Step()
 	e.sympathy.step(&e.channels, e.stage.patch, e.pan)
 	if e.change.step() {
 		e.stage.body.reset()
@@ -294,7 +311,8 @@ func (e *Engine) stepStrings() {
 		s.tell(&e.channels, e.wave)
 		s.from = s.to
 		s.to = s.aim(&e.channels, e.pan)
-		s.energy = energy * float64(s.to.bridge*s.to.bridge)
+		s.voice.Mix(s.from, s.to)
+		s.energy = energy * float64(s.to.Left*s.to.Left+s.to.Right*s.to.Right)
 	}
 	e.strings.live = kept
 }

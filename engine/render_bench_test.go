@@ -27,25 +27,24 @@ func BenchmarkHeldKeys(b *testing.B) {
 		var left, right [period]float32
 		for b.Loop() {
 			for k := range src {
-				addSteady(left[:], right[:], src[k][:], gains{left: 0.5, right: 0.5})
+				for i, y := range src[k] {
+					left[i] += float32(y * 0.5)
+					right[i] += float32(y * 0.5)
+				}
 			}
 		}
 		report(b)
 	})
 	b.Run("strings alone", func(b *testing.B) {
 		c := compiled(b, patch, testRate)
-		var voices []*voice.Voice
+		pool := c.maker.NewPool(keys, lowestPlayed)
 		for key := range keys {
-			v := c.maker.NewVoice(lowestPlayed)
-			v.Strike(c.keys[30+key].design, 100, uint64(key))
-			voices = append(voices, v)
+			pool.Voice(key).Strike(c.keys[30+key].design, 100, uint64(key))
 		}
-		var out [voice.Grid]float32
 		for b.Loop() {
 			for range period / voice.Grid {
-				for _, v := range voices {
-					v.Render(out[:], nil)
-				}
+				pool.Step()
+				pool.Advance(voice.Grid)
 			}
 		}
 		report(b)

@@ -5,6 +5,7 @@ import (
 	"testing"
 
 	"tautwire/config"
+	"tautwire/voice"
 	"tautwire/voice/measure"
 )
 
@@ -241,7 +242,7 @@ func cures(t *testing.T, p *config.Patch) {
 		e := offline(t, p, 8)
 		out := play(e, []Event{at(0, NoteOn, swift, 100), at(0, NoteOn, 60, 100), at(0, Control, 64, 127)}, 5000, every(64))
 		bad := e.channels[0].string[swift]
-		e.strings.slots[bad].voice.Render(make([]float32, 1), []float32{poison})
+		e.strings.slots[bad].voice.Push(e.place()%voice.Grid, []float32{poison})
 		after := play(e, nil, 20000, every(64))
 		for i := e.Delay(); i < e.Delay()+64; i++ {
 			if after[2*i] == 0 {

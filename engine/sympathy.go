@@ -11,15 +11,17 @@ import "tautwire/voice"
 // It is bounded: one string a key, from lowestSympathy to highestSympathy, and those
 // that are silent on a bridge at rest are not computed.
 type sympathy struct {
+	pool    *voice.Pool
 	strings [highestSympathy - lowestSympathy + 1]sympathetic
 	live    int // strings that are computed
-	held    [128]float32
 
-	bridge [voice.Grid]float32      // the motion of all played strings
-	own    [128][voice.Grid]float32 // each key's part in it
-	owned  [128]bool                // whether own holds anything
+	bridge [voice.Grid]float32                                       // the motion of all played strings
+	own    [highestSympathy - lowestSympathy + 1][voice.Grid]float32 // each key's part in it
+	owned  [highestSympathy - lowestSympathy + 1]bool                // whether own holds anything
 	drive  [voice.Grid]float32
 	out    [voice.Grid]float32
+	left   [voice.Grid]float32
+	right  [voice.Grid]float32
 	peak   float32 // of the bridge since the last step
 	tuning [128]float64
 }
@@ -46,12 +48,12 @@ type sympathetic struct {
 	live, fading bool
 	damp, cents  float64
 	from, to     float32 // coupling at the start and the end of the step
-	left, right  float32
 }
 
 func (s *sympathy) init(maker *voice.Maker) {
+	s.pool = maker.NewPool(len(s.strings), lowestDriven)
 	for i := range s.strings {
-		s.strings[i].voice = maker.NewVoice(lowestDriven)
+		s.strings[i].voice = s.pool.Voice(i)
 	}
 	for key := range s.tuning {
 		s.tuning[key] = -1
@@ -77,6 +79,7 @@ func (s *sympathy) needed(patch *Compiled) bool { return patch.resonance > 0 || 
 
 // step wakes, damps and retires strings, on a multiple of voice.Grid.
 func (s *sympathy) step(channels *[16]channel, patch *Compiled, pan *panTable) {
+	defer s.pool.Step()
 	if !s.needed(patch) {
 		return
 	}
@@ -137,7 +140,9 @@ func (s *sympathetic) start(own *compiledKey, patch *Compiled, pan *panTable) {
 	s.voice.Fit(own.single)
 	s.patch, s.live, s.fading = patch, true, false
 	s.damp, s.cents, s.from, s.to = 0, 0, 0, 0
-	s.left, s.right = pan.gains(0.5 + own.pan)
+	left, right := pan.gains(0.5 + own.pan)
+	gain := voice.Gain{Left: left, Right: right}
+	s.voice.Mix(gain, gain)
 }
 
 func (s *sympathetic) fade() {
@@ -166,62 +171,84 @@ func (s *sympathetic) tune(key uint8, tuning float64) {
 	}
 }
 
-// hear adds a played string's part to the bridge.
-func (s *sympathy) hear(key uint8, out []float32, from, to float32, ramp []float32) {
-	own := s.own[key][:len(out)]
-	if !s.owned[key] {
-		s.owned[key] = true
-		clear(own)
-	}
-	bridge := s.bridge[:len(out)]
-	ramp = ramp[:len(out)]
-	step := to - from
-	for i, y := range out {
-		part := float32(y * (from + float32(step*ramp[i])))
-		own[i] += part
-		bridge[i] += part
+// hear takes the bridge's motion from the mix of the played strings.
+func (s *sympathy) hear(left, right []float32) {
+	right = right[:len(left)]
+	bridge := s.bridge[:len(left)]
+	for i, x := range left {
+		bridge[i] = float32((x + right[i]) * voice.BridgeGain)
+		s.peak = max(s.peak, abs(bridge[i]))
 	}
 }
 
-// add sounds the strings along for n frames and adds them to the mix.
-func (s *sympathy) add(left, right, ramp []float32) {
-	n := len(left)
-	bridge := s.bridge[:n]
-	for _, x := range bridge {
-		s.peak = max(s.peak, abs(x))
+// leaveOut keeps from a key's own string what a voice of the key gave to the bridge in n frames from
+// a frame of the step on.
+func (s *sympathy) leaveOut(key uint8, v *voice.Voice, at, n int) {
+	if key < lowestSympathy || key > highestSympathy || !s.strings[key-lowestSympathy].live {
+		return
 	}
+	own := s.own[key-lowestSympathy][:n]
+	if !s.owned[key-lowestSympathy] {
+		s.owned[key-lowestSympathy] = true
+		clear(own)
+	}
+	v.Bridge(own, at)
+}
+
+// add sounds the strings along and adds them to the mix, from a frame of the step on.
+func (s *sympathy) add(left, right []float32, at int) {
+	n := len(left)
 	if s.live > 0 {
 		for i := range s.strings {
 			if s.strings[i].live {
-				s.add1(&s.strings[i], lowestSympathy+i, left, right, ramp)
+				s.push(i, at, n)
 			}
 		}
+		s.pool.Advance(at + n)
+		s.pool.Sum(s.left[:n], s.right[:n], at)
+		if !allSane(s.left[:n]) || !allSane(s.right[:n]) {
+			s.cure(at, n)
+		}
+		for i := range left {
+			left[i] += s.left[i]
+			right[i] += s.right[i]
+		}
 	}
-	clear(bridge)
 	clear(s.owned[:])
 }
 
-func (s *sympathy) add1(string *sympathetic, key int, left, right, ramp []float32) {
-	n := len(left)
-	bridge, drive, out := s.bridge[:n], s.drive[:n], s.out[:n]
-	right, ramp = right[:n], ramp[:n]
-	step := string.to - string.from
-	if s.owned[key] {
-		own := s.own[key][:n]
-		for i, x := range bridge {
-			drive[i] = (x - own[i]) * (string.from + float32(step*ramp[i]))
+// push drives a string with the bridge's motion, but for its own key's part.
+func (s *sympathy) push(i, at, n int) {
+	string := &s.strings[i]
+	bridge, drive := s.bridge[:n], s.drive[:n]
+	step := (string.to - string.from) / voice.Grid
+	gain := func(k int) float32 { return string.from + float32(step*float32(at+k)) }
+	if s.owned[i] {
+		own := s.own[i][:n]
+		for k, x := range bridge {
+			drive[k] = (x - own[k]) * gain(k)
 		}
 	} else {
-		for i, x := range bridge {
-			drive[i] = x * (string.from + float32(step*ramp[i]))
+		for k, x := range bridge {
+			drive[k] = x * gain(k)
 		}
 	}
-	string.voice.Render(out, drive)
-	for i, y := range out {
-		if !sane(float64(y)) {
+	string.voice.Push(at, drive)
+}
+
+// cure silences strings whose numbers have run away.
+func (s *sympathy) cure(at, n int) {
+	out := s.out[:n]
+	for i := range s.strings {
+		if !s.strings[i].live {
 			continue
 		}
-		left[i] += float32(y * string.left)
-		right[i] += float32(y * string.right)
+		clear(out)
+		s.strings[i].voice.Bridge(out, at)
+		if !allSane(out) {
+			s.strings[i].stop()
+		}
 	}
+	s.pool.Again(at)
+	s.pool.Sum(s.left[:n], s.right[:n], at)
 }

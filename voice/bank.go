@@ -35,6 +35,7 @@ func (b *bank) take(p *Pool, l *loop) {
 			b.loops[lane], l.bank, l.lane = l, b, lane
 			b.used++
 			b.space = 0
+			b.Hush(lane)
 			return
 		}
 	}
@@ -44,6 +45,7 @@ func (b *bank) take(p *Pool, l *loop) {
 func (b *bank) leave(p *Pool, l *loop) {
 	b.catchUp(p, p.now)
 	b.Rest(l.lane, lanes.History+taps-1+lanes.Shortest)
+	b.Hush(l.lane)
 	b.loops[l.lane] = nil
 	b.used--
 	l.bank = nil
@@ -64,7 +66,7 @@ func (b *bank) begin() {
 		case l.motion == gliding:
 			b.motion = lanes.Gliding
 			fastest = max(fastest, l.path.fastest())
-		case l.motion != still || l.shifting:
+		case l.motion != still:
 			b.motion = max(b.motion, lanes.Moving)
 		}
 	}
@@ -107,17 +109,19 @@ func (b *bank) catchUp(p *Pool, until int) {
 	if b.solo {
 		for lane, l := range b.loops {
 			if l != nil {
-				b.Solo(lane, &p.mix, p.line, force, l.motion.alone(), from, until)
+				b.Solo(lane, &p.bench, force, l.motion.alone(), from, until)
 			}
 		}
 	} else {
-		p.kernel.Render(&b.Bank, &p.mix, p.line, force, b.motion, from, until)
+		p.kernel.Render(&b.Bank, &p.bench, force, b.motion, from, until)
 	}
 	for lane, l := range b.loops {
 		if l != nil {
 			b.At[lane] += int64(n)
 			if l.voice.fading {
-				b.fade(p, l, from, until)
+				for f := from; f < until; f++ {
+					b.Out[f][lane] *= l.voice.fadeAt(f)
+				}
 			}
 		}
 	}
@@ -159,33 +163,5 @@ func (b *bank) push(lane, from int, e []float32) {
 	force := b.force[from : from+len(e)]
 	for i, x := range e {
 		force[i][lane] += x
-	}
-}
-
-// fade mixes a loop that is fading, which the kernel leaves out.
-func (b *bank) fade(p *Pool, l *loop, from, until int) {
-	v := l.voice
-	for i, y := range l.past(until - from) {
-		f := from + i
-		y *= v.fadeAt(f)
-		p.mix.Left[f][l.lane] += float32(y * v.gains.at(f, l.mix).Left)
-		p.mix.Right[f][l.lane] += float32(y * v.gains.at(f, l.mix).Right)
-	}
-}
-
-// remix adds what the loops rendered to the mix once more.
-func (b *bank) remix(p *Pool, from, until int) {
-	for _, l := range b.loops {
-		switch {
-		case l == nil:
-		case l.voice.fading:
-			b.fade(p, l, from, until)
-		default:
-			for i, y := range l.past(until - from) {
-				g := l.voice.gains.at(from+i, l.mix)
-				p.mix.Left[from+i][l.lane] += float32(y * g.Left)
-				p.mix.Right[from+i][l.lane] += float32(y * g.Right)
-			}
-		}
 	}
 }

@@ -34,7 +34,7 @@ type glide struct {
 
 // hold clamps a pitch to what the line and the rate can sound.
 func (l *loop) hold(f0 float64) float64 {
-	longest := float64(l.size)/2 - 4*Grid
+	longest := float64(l.size-8*Grid) / lineTurns
 	return min(max(f0, l.mode.rate/longest, l.mode.lowest), topPitch*l.mode.rate)
 }
 
@@ -374,7 +374,7 @@ func (l *loop) beginGlide() {
 	l.house()
 	f := &l.bank.Glide[l.lane].Finger
 	f.Firm = float32(l.damped.finger)
-	f.Side = int64(l.mode.rate / g.pitch / float64(max(2, l.damped.node)) * (1 << 32))
+	f.Side = int64(l.trip() / float64(max(2, l.damped.node)) * (1 << 32))
 	f.Floor = int64(l.start)
 }
 

@@ -57,12 +57,11 @@ type loop struct {
 	bank        *bank
 	lane        int
 
-	motion   motion
-	calm     bool    // nothing moves, nor is going to
-	shifting bool    // the gains of the mix move
-	length   int     // the whole part of the delay
-	level    float32 // of the read, while still: in the taps
-	path     path    // of the delay, while gliding
+	motion motion
+	calm   bool    // nothing moves, nor is going to
+	length int     // the whole part of the delay
+	level  float32 // of the read, while still: in the taps
+	path   path    // of the delay, while gliding
 
 	glide   glide
 	damped  damping
@@ -89,9 +88,9 @@ func (l *loop) tune(f0 float64) {
 	l.room = l.need()
 	keep := l.keep()
 	l.bank.At[l.lane] = int64(l.start + keep)
-	clear(l.pool.line[l.start : l.start+keep])
+	clear(l.pool.bench.Line[l.start : l.start+keep])
 	l.stand()
-	l.calm = true
+	l.calm = false // what has been asked of the string is still to come
 }
 
 // house gives the loop a lane that can compute it.
@@ -127,8 +126,13 @@ func (l *loop) unhouse() {
 func (l *loop) keep() int {
 	// A finger in the middle reads half a trip further back. It may come at any
 	// time, and must find the same then however the stream has been cut.
-	const reach = 1.5
-	return int(reach*l.glide.s[2]) + taps + 2*Grid
+	return int(l.glide.s[2]+l.trip()/2) + taps + 2*Grid
+}
+
+// trip is about how long a trip takes as the delay is on its way, samples.
+func (l *loop) trip() float64 {
+	g := &l.glide
+	return g.s[2] + max(0, l.mode.rate/g.pitch-g.target.delay)
 }
 
 // need is how much of its part of the line a loop is to use: enough that it is seldom moved,
@@ -141,7 +145,7 @@ func (l *loop) slide(n int) int {
 	at := int(l.bank.At[l.lane])
 	if at+n+lanes.Spill > l.start+l.room {
 		keep := min(l.keep(), at-l.start)
-		copy(l.pool.line[l.start:], l.pool.line[at-keep:at])
+		copy(l.pool.bench.Line[l.start:], l.pool.bench.Line[at-keep:at])
 		at = l.start + keep
 		l.bank.At[l.lane] = int64(at)
 		l.room = l.need()
@@ -152,7 +156,7 @@ func (l *loop) slide(n int) int {
 // past is the last n frames.
 func (l *loop) past(n int) []float32 {
 	at := l.bank.At[l.lane]
-	return l.pool.line[at-int64(n) : at]
+	return l.pool.bench.Line[at-int64(n) : at]
 }
 
 // take returns the loop's power (sum of squares) since the last step, and keeps

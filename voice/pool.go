@@ -11,12 +11,13 @@ import "tautwire/voice/lanes"
 type Pool struct {
 	maker  *Maker
 	kernel lanes.Kernel
-	line   []float32 // of all strings, one after the other; before them, what idle lanes use
+	bench  lanes.Bench // with the lines of all strings; before them, what idle lanes use
 	voices []Voice
 	live   []*Voice // that have a design
 	banks  []bank
 	mix    lanes.Mix
 	now    int  // frames of the present step that are done
+	mixed  int  // of them, those that are in the mix
 	lone   bool // there is one voice, which is its own clock
 
 	e [Grid]float32 // a stroke's force
@@ -32,20 +33,24 @@ func (m *Maker) NewPool(voices int, lowest float64) *Pool {
 }
 
 // linesFor is how many frames the lines of a voice take that sounds down to lowest (Hz).
-func linesFor(lowest, rate float64) int { return int(2*rate/lowest) + 16*Grid }
+func linesFor(lowest, rate float64) int { return int(lineTurns*rate/lowest) + 16*Grid }
+
+// lineTurns is how many periods of its lowest pitch a line must hold: what a trip can reach, and
+// room to go on.
+const lineTurns = 1.75
 
 func newPool(m *Maker, voices, frames int) *Pool {
 	loops := voices * maxLoops
 	p := &Pool{
 		maker:  m,
 		kernel: lanes.Best(),
-		line:   make([]float32, idle+voices*frames),
+		bench:  lanes.Bench{Line: make([]float32, idle+voices*frames), Rows: m.rows},
 		voices: make([]Voice, voices),
 		live:   make([]*Voice, 0, voices),
 		// each kind of bank may have one that is not full
 		banks: make([]bank, loops/lanes.Width+2*(maxSections+1)+1),
 	}
-	p.mix.Rows, p.now = m.rows, Grid
+	p.now = Grid
 	for i := range p.banks {
 		p.banks[i].clear()
 	}
@@ -64,7 +69,7 @@ func (p *Pool) Voice(i int) *Voice { return &p.voices[i] }
 
 // Step begins the next control step. The one before must have been rendered whole.
 func (p *Pool) Step() {
-	p.now = 0
+	p.now, p.mixed = 0, 0
 	p.mix.Clear(0, Grid)
 	for _, v := range p.live {
 		v.step()
@@ -74,12 +79,16 @@ func (p *Pool) Step() {
 	}
 }
 
-// Advance renders all voices up to a frame of the present step.
+// Advance renders all voices up to a frame of the present step, and mixes them.
 func (p *Pool) Advance(until int) {
 	for i := range p.banks {
-		p.banks[i].catchUp(p, until)
+		b := &p.banks[i]
+		b.catchUp(p, until)
+		if b.used > 0 {
+			p.kernel.Mix(&b.Bank, &p.mix, p.mixed, until)
+		}
 	}
-	p.now = until
+	p.now, p.mixed = until, until
 }
 
 // Arrive tells, without rendering, that a frame of the present step has been reached.
@@ -88,12 +97,15 @@ func (p *Pool) Arrive(frame int) { p.now = frame }
 // Sum adds up the voices' frames of the present step from a frame on, in stereo.
 func (p *Pool) Sum(left, right []float32, from int) { p.mix.Sum(left, right, from) }
 
-// Again mixes the frames of the present step anew that have been rendered since a
-// frame, from what the strings hold: after one has been taken off whose numbers had run away.
+// Again mixes the frames of the present step anew that have been mixed since a
+// frame: after a voice has been taken off whose numbers had run away.
 func (p *Pool) Again(from int) {
-	p.mix.Clear(from, p.now)
+	p.mix.Clear(from, p.mixed)
 	for i := range p.banks {
-		p.banks[i].remix(p, from, p.now)
+		if b := &p.banks[i]; b.used > 0 {
+			b.Rewind(p.mixed - from)
+			p.kernel.Mix(&b.Bank, &p.mix, from, p.mixed)
+		}
 	}
 }
 

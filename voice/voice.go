@@ -25,15 +25,6 @@ type Gain struct{ Left, Right float32 }
 // gains move from one to the other over a control step.
 type gains struct{ from, to Gain }
 
-// at is the gain of a loop that has a part of the voice, at a frame of the step.
-func (g *gains) at(frame int, part float32) Gain {
-	way := float32(frame+1) / Grid
-	return Gain{
-		Left:  part * (g.from.Left + float32(way*(g.to.Left-g.from.Left))),
-		Right: part * (g.from.Right + float32(way*(g.to.Right-g.from.Right))),
-	}
-}
-
 // Voice is the strings of one key, sounding. It is used from one goroutine, and so is its Pool.
 type Voice struct {
 	pool        *Pool
@@ -125,6 +116,7 @@ func (v *Voice) Strike(d *Design, velocity float64, seed uint64) {
 	}
 	for i := range d.strings {
 		l := &v.loops[i]
+		l.bank.catchUp(v.pool, v.pool.now)
 		s := &l.strokes[0]
 		if other := &l.strokes[1]; !s.over() && (other.over() || other.frame > s.frame) {
 			s = other
@@ -240,18 +232,15 @@ func (v *Voice) Fade() {
 		return
 	}
 	for i := range v.design.strings {
-		l := &v.loops[i]
-		l.bank.catchUp(v.pool, v.pool.now)
-		// mixed by hand from now on
-		b := &l.bank.Bank
-		b.Left[l.lane], b.Right[l.lane], b.DLeft[l.lane], b.DRight[l.lane] = 0, 0, 0, 0
+		v.loops[i].bank.catchUp(v.pool, v.pool.now)
 	}
 	v.fading, v.faded, v.fadeOf = true, 1, v.pool.now
 }
 
 // fadeAt is the factor of a fading voice at a frame of the step.
 func (v *Voice) fadeAt(frame int) float32 {
-	return ease(max(0, v.faded-float32(float32(frame+1-v.fadeOf)*v.fadeStep())))
+	gone := max(0, frame+1-v.fadeOf)
+	return ease(max(0, v.faded-float32(float32(gone)*v.fadeStep())))
 }
 
 func (v *Voice) fadeStep() float32 {
@@ -266,15 +255,11 @@ func (v *Voice) Mix(from, to Gain) {
 		return
 	}
 	v.gains = gains{from, to}
-	if v.fading {
-		return
-	}
 	for i := range v.design.strings {
 		l := &v.loops[i]
 		b, lane := &l.bank.Bank, l.lane
 		b.Left[lane], b.Right[lane] = l.mix*from.Left, l.mix*from.Right
 		b.DLeft[lane], b.DRight[lane] = l.mix*(to.Left-from.Left)/Grid, l.mix*(to.Right-from.Right)/Grid
-		l.shifting = from != to
 	}
 }
 
@@ -290,16 +275,34 @@ func (v *Voice) Push(frame int, force []float32) {
 	}
 }
 
-// Last adds to out, at a gain, the last len(out) frames that were rendered: the voice alone, before the mix.
-func (v *Voice) Last(out []float32, gain float32) {
+// BridgeGain is what the bridge feels of both sides of the mix.
+const BridgeGain = math.Sqrt2 / 2
+
+// Bridge adds to out what the voice gives to the mix from a frame of the step on, as the bridge feels it.
+func (v *Voice) Bridge(out []float32, at int) {
 	if v.design == nil {
 		return
 	}
+	const part = 1.0 / Grid
+	from, to := v.gains.from, v.gains.to
+	gain := float32((from.Left + from.Right) * BridgeGain)
+	slope := float32((to.Left+to.Right)*BridgeGain) - gain
 	for i := range v.design.strings {
 		l := &v.loops[i]
-		g := gain * l.mix
-		for k, y := range l.past(len(out)) {
-			out[k] += float32(g * y)
+		heard := l.bank.Out[at:]
+		for k := range out {
+			out[k] += float32(float32(l.mix*heard[k][l.lane]) * (gain + float32(slope*float32(float32(at+k+1)*part))))
+		}
+	}
+}
+
+// heard writes what the voice sounds from a frame of the step on, before the mix.
+func (v *Voice) heard(out []float32, at int) {
+	clear(out)
+	for i := range v.design.strings {
+		l := &v.loops[i]
+		for k := range out {
+			out[k] += float32(l.mix * l.bank.Out[at+k][l.lane])
 		}
 	}
 }
@@ -312,24 +315,21 @@ func (v *Voice) Energy() float64 { return v.energy }
 // stream is cut into calls.
 func (v *Voice) Render(out, drive []float32) {
 	p := v.pool
+	if v.design == nil {
+		clear(out)
+		return
+	}
 	for len(out) > 0 {
 		if p.now == Grid {
 			p.Step()
 		}
-		n := min(len(out), Grid-p.now)
+		from, n := p.now, min(len(out), Grid-p.now)
 		if drive != nil {
-			v.Push(p.now, drive[:n])
+			v.Push(from, drive[:n])
 			drive = drive[n:]
 		}
-		from := p.now
 		p.Advance(from + n)
-		clear(out[:n])
-		v.Last(out[:n], 1)
-		if v.fading {
-			for i := range out[:n] {
-				out[i] *= v.fadeAt(from + i)
-			}
-		}
+		v.heard(out[:n], from)
 		out = out[n:]
 	}
 }

@@ -28,11 +28,13 @@ func BenchmarkKernel(b *testing.B) {
 						all[i].Back[l] = int64(30 + 40*l)
 					}
 				}
-				m := &Mix{Rows: rows()}
+				m, w := &Mix{}, &Bench{Rows: rows()}
 				for b.Loop() {
 					m.Clear(0, Frames)
 					for i := range all {
-						k.Render(all[i], m, lines[i], nil, c.motion, 0, Frames)
+						w.Line = lines[i]
+						k.Render(all[i], w, nil, c.motion, 0, Frames)
+						k.Mix(all[i], m, 0, Frames)
 					}
 				}
 				b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*banks*Width*Frames), "ns/string-sample")

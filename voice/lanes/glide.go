@@ -80,7 +80,7 @@ func (b *Bank) turnLane(lane int, rows *Rows) {
 }
 
 // touched renders a gliding lane with a finger on it.
-func (b *Bank) touched(p pass, line []float32, at int64, rows *Rows) {
+func (b *Bank) touched(p pass, w *Bench, at int64) {
 	l := p.lane & (Width - 1)
 	g := &b.Glide[l]
 	f := g.Finger
@@ -91,7 +91,7 @@ func (b *Bank) touched(p pass, line []float32, at int64, rows *Rows) {
 		here := at + int64(i)
 		before, after := delay-f.Side, delay+f.Side
 		if before>>32 > Newest && here-after>>32-Taps >= f.Floor {
-			sides := rows.read(line, here, before) + rows.read(line, here, after)
+			sides := w.Rows.read(w.Line, here, before) + w.Rows.read(w.Line, here, after)
 			x = float32((1-2*f.Firm)*x) + float32(f.Firm*sides)
 		}
 		b.bend(l)

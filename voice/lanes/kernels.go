@@ -9,20 +9,23 @@ import (
 
 //go:generate go run ./asm
 
-// The kernels that the program in the folder asm writes. They take force and
-// Mix.window by address, and the lines by those in Mix.
+// The kernels that the program in the folder asm writes. They find the lines by the
+// addresses in Bench.
 
 //go:noescape
-func stillPlain(b *Bank, m *Mix, force *floats, from, frames int)
+func stillPlain(b *Bank, w *Bench, force *floats, from, frames int)
 
 //go:noescape
-func movingPlain(b *Bank, m *Mix, force *floats, from, frames int)
+func movingPlain(b *Bank, w *Bench, force *floats, from, frames int)
 
 //go:noescape
-func stillStiff(b *Bank, m *Mix, force *floats, from, frames int)
+func stillStiff(b *Bank, w *Bench, force *floats, from, frames int)
 
 //go:noescape
-func movingStiff(b *Bank, m *Mix, force *floats, from, frames int)
+func movingStiff(b *Bank, w *Bench, force *floats, from, frames int)
+
+//go:noescape
+func mix(b *Bank, m *Mix, from, frames int)
 
 // vector is the kernel of a vector unit.
 func vector(name string) Kernel {
@@ -30,19 +33,20 @@ func vector(name string) Kernel {
 		name:  name,
 		plain: kinds{onLines(stillPlain), onLines(movingPlain), each((*Bank).gliding)},
 		stiff: kinds{onLines(stillStiff), onLines(movingStiff), each((*Bank).gliding)},
+		mix:   mix,
 	}
 }
 
 // onLines tells a kernel where the lines are.
-func onLines(kernel func(b *Bank, m *Mix, force *floats, from, frames int)) run {
-	return func(b *Bank, m *Mix, line []float32, force *Force, ahead, from, frames int) {
-		base := uintptr(unsafe.Pointer(unsafe.SliceData(line)))
+func onLines(kernel func(b *Bank, w *Bench, force *floats, from, frames int)) run {
+	return func(b *Bank, w *Bench, force *Force, ahead, from, frames int) {
+		base := uintptr(unsafe.Pointer(unsafe.SliceData(w.Line)))
 		for i, at := range b.At {
 			at += int64(ahead)
-			m.source[i] = base + 4*uintptr(at-b.Back[i]+Taps-1)
-			m.target[i] = base + 4*uintptr(at)
+			w.source[i] = base + 4*uintptr(at-b.Back[i]+Taps-1)
+			w.target[i] = base + 4*uintptr(at)
 		}
-		kernel(b, m, &force[from], from, frames)
-		runtime.KeepAlive(line)
+		kernel(b, w, &force[from], from, frames)
+		runtime.KeepAlive(w.Line)
 	}
 }

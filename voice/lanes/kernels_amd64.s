@@ -15,31 +15,31 @@ DATA bias<>+24(SB)/4, $1e-18
 DATA bias<>+28(SB)/4, $1e-18
 GLOBL bias<>(SB), RODATA|NOPTR, $32
 
-// func stillPlain(b *Bank, m *Mix, force *floats, from, frames int)
+// func stillPlain(b *Bank, w *Bench, force *floats, from, frames int)
 TEXT ·stillPlain(SB), NOSPLIT, $0-40
 	MOVQ b+0(FP), BX
-	MOVQ m+8(FP), SI
+	MOVQ w+8(FP), SI
 	MOVQ force+16(FP), R9
 	MOVQ from+24(FP), R8
 	MOVQ frames+32(FP), CX
 	SHLQ $5, R8
-	ADDQ SI, R8
-	LEAQ Mix_window(SI), R10
+	LEAQ Bank_Out(BX)(R8*1), R8
+	LEAQ Bench_window(SI), R10
 	MOVQ $-48, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -55,20 +55,20 @@ TEXT ·stillPlain(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 64(R10)
 	VMOVUPS Y3, 96(R10)
 	ADDQ $16, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -84,20 +84,20 @@ TEXT ·stillPlain(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 192(R10)
 	VMOVUPS Y3, 224(R10)
 	ADDQ $16, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -113,625 +113,24 @@ TEXT ·stillPlain(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 320(R10)
 	VMOVUPS Y3, 352(R10)
 	ADDQ $16, DX
-	CMPQ CX, $4
-	JLT groups
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
-	VMOVUPS (AX)(DX*1), X0
-	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
-	VMOVUPS (AX)(DX*1), X1
-	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
-	VMOVUPS (AX)(DX*1), X2
-	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
-	VMOVUPS (AX)(DX*1), X3
-	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
-	VUNPCKLPS Y1, Y0, Y4
-	VUNPCKHPS Y1, Y0, Y5
-	VUNPCKLPS Y3, Y2, Y6
-	VUNPCKHPS Y3, Y2, Y7
-	VUNPCKLPD Y6, Y4, Y0
-	VUNPCKHPD Y6, Y4, Y1
-	VUNPCKLPD Y7, Y5, Y2
-	VUNPCKHPD Y7, Y5, Y3
-	VMOVUPS Y0, 384(R10)
-	VMOVUPS Y1, 416(R10)
-	VMOVUPS Y2, 448(R10)
-	VMOVUPS Y3, 480(R10)
-	VMOVUPS (Bank_Tap+352)(BX), Y8
-	VMOVUPS 32(R10), Y4
-	VMOVUPS 64(R10), Y5
-	VMOVUPS 96(R10), Y6
-	VMOVUPS 128(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS bias<>(SB), Y10, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS bias<>(SB), Y11, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS bias<>(SB), Y10, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS bias<>(SB), Y11, Y3
-	VMOVUPS (Bank_Tap+320)(BX), Y8
-	VMOVUPS 160(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+288)(BX), Y8
-	VMOVUPS 192(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+256)(BX), Y8
-	VMOVUPS 224(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+224)(BX), Y8
-	VMOVUPS 256(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+192)(BX), Y8
-	VMOVUPS 288(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+160)(BX), Y8
-	VMOVUPS 320(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+128)(BX), Y8
-	VMOVUPS 352(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+96)(BX), Y8
-	VMOVUPS 384(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+64)(BX), Y8
-	VMOVUPS 416(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+32)(BX), Y8
-	VMOVUPS 448(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+0)(BX), Y8
-	VMOVUPS 480(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VCVTPS2PD X0, Y4
-	VCVTPS2PD X1, Y5
-	VCVTPS2PD X2, Y6
-	VCVTPS2PD X3, Y7
-	VMOVUPS (Bank_V1+0)(BX), Y8
-	VMOVUPS (Bank_V2+0)(BX), Y9
-	VMOVUPS (Bank_C1+0)(BX), Y10
-	VMOVUPS (Bank_C2+0)(BX), Y11
-	VMULPD Y11, Y9, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y10, Y8, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y11, Y8, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y10, Y4, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y11, Y4, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y10, Y5, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y11, Y5, Y14
-	VSUBPD Y14, Y7, Y7
-	VMULPD Y10, Y6, Y14
-	VSUBPD Y14, Y7, Y7
-	VMOVUPS Y7, (Bank_V1+0)(BX)
-	VMOVUPS Y6, (Bank_V2+0)(BX)
-	VCVTPD2PSY Y4, X15
-	VBLENDPS $0x0f, Y15, Y0, Y0
-	VCVTPD2PSY Y5, X15
-	VBLENDPS $0x0f, Y15, Y1, Y1
-	VCVTPD2PSY Y6, X15
-	VBLENDPS $0x0f, Y15, Y2, Y2
-	VCVTPD2PSY Y7, X15
-	VBLENDPS $0x0f, Y15, Y3, Y3
-	VEXTRACTF128 $1, Y0, X4
-	VCVTPS2PD X4, Y4
-	VEXTRACTF128 $1, Y1, X5
-	VCVTPS2PD X5, Y5
-	VEXTRACTF128 $1, Y2, X6
-	VCVTPS2PD X6, Y6
-	VEXTRACTF128 $1, Y3, X7
-	VCVTPS2PD X7, Y7
-	VMOVUPS (Bank_V1+32)(BX), Y8
-	VMOVUPS (Bank_V2+32)(BX), Y9
-	VMOVUPS (Bank_C1+32)(BX), Y10
-	VMOVUPS (Bank_C2+32)(BX), Y11
-	VMULPD Y11, Y9, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y10, Y8, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y11, Y8, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y10, Y4, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y11, Y4, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y10, Y5, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y11, Y5, Y14
-	VSUBPD Y14, Y7, Y7
-	VMULPD Y10, Y6, Y14
-	VSUBPD Y14, Y7, Y7
-	VMOVUPS Y7, (Bank_V1+32)(BX)
-	VMOVUPS Y6, (Bank_V2+32)(BX)
-	VCVTPD2PSY Y4, X15
-	VINSERTF128 $1, X15, Y0, Y0
-	VCVTPD2PSY Y5, X15
-	VINSERTF128 $1, X15, Y1, Y1
-	VCVTPD2PSY Y6, X15
-	VINSERTF128 $1, X15, Y2, Y2
-	VCVTPD2PSY Y7, X15
-	VINSERTF128 $1, X15, Y3, Y3
-	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
-	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
-	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
-	VADDPS 96(R9), Y3, Y3
-	VMOVAPS Y3, Y15
-	VUNPCKLPS Y1, Y0, Y4
-	VUNPCKHPS Y1, Y0, Y5
-	VUNPCKLPS Y3, Y2, Y6
-	VUNPCKHPS Y3, Y2, Y7
-	VUNPCKLPD Y6, Y4, Y0
-	VUNPCKHPD Y6, Y4, Y1
-	VUNPCKLPD Y7, Y5, Y2
-	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
-	VMOVUPS X0, (AX)(DX*1)
-	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
-	VMOVUPS X1, (AX)(DX*1)
-	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
-	VMOVUPS X2, (AX)(DX*1)
-	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
-	VMOVUPS X3, (AX)(DX*1)
-	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	ADDQ $16, DX
-	ADDQ $128, R9
-	ADDQ $128, R10
-	SUBQ $4, CX
-
-more:
-	CMPQ CX, $4
-	JLT last
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
-	VMOVUPS (AX)(DX*1), X0
-	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
-	VMOVUPS (AX)(DX*1), X1
-	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
-	VMOVUPS (AX)(DX*1), X2
-	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
-	VMOVUPS (AX)(DX*1), X3
-	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
-	VUNPCKLPS Y1, Y0, Y4
-	VUNPCKHPS Y1, Y0, Y5
-	VUNPCKLPS Y3, Y2, Y6
-	VUNPCKHPS Y3, Y2, Y7
-	VUNPCKLPD Y6, Y4, Y0
-	VUNPCKHPD Y6, Y4, Y1
-	VUNPCKLPD Y7, Y5, Y2
-	VUNPCKHPD Y7, Y5, Y3
-	VMOVUPS Y0, 384(R10)
-	VMOVUPS Y1, 416(R10)
-	VMOVUPS Y2, 448(R10)
-	VMOVUPS Y3, 480(R10)
-	VMOVUPS (Bank_Tap+352)(BX), Y8
-	VMOVUPS 32(R10), Y4
-	VMOVUPS 64(R10), Y5
-	VMOVUPS 96(R10), Y6
-	VMOVUPS 128(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS bias<>(SB), Y10, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS bias<>(SB), Y11, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS bias<>(SB), Y10, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS bias<>(SB), Y11, Y3
-	VMOVUPS (Bank_Tap+320)(BX), Y8
-	VMOVUPS 160(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+288)(BX), Y8
-	VMOVUPS 192(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+256)(BX), Y8
-	VMOVUPS 224(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+224)(BX), Y8
-	VMOVUPS 256(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+192)(BX), Y8
-	VMOVUPS 288(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+160)(BX), Y8
-	VMOVUPS 320(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+128)(BX), Y8
-	VMOVUPS 352(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+96)(BX), Y8
-	VMOVUPS 384(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+64)(BX), Y8
-	VMOVUPS 416(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+32)(BX), Y8
-	VMOVUPS 448(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+0)(BX), Y8
-	VMOVUPS 480(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y15, Y8
-	VADDPS (Mix_Left+96)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+96)(R8)
-	VMULPS Y5, Y15, Y9
-	VADDPS (Mix_Right+96)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+96)(R8)
-	VMULPS Y15, Y15, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	ADDQ $128, R8
-	VCVTPS2PD X0, Y4
-	VCVTPS2PD X1, Y5
-	VCVTPS2PD X2, Y6
-	VCVTPS2PD X3, Y7
-	VMOVUPS (Bank_V1+0)(BX), Y8
-	VMOVUPS (Bank_V2+0)(BX), Y9
-	VMOVUPS (Bank_C1+0)(BX), Y10
-	VMOVUPS (Bank_C2+0)(BX), Y11
-	VMULPD Y11, Y9, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y10, Y8, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y11, Y8, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y10, Y4, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y11, Y4, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y10, Y5, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y11, Y5, Y14
-	VSUBPD Y14, Y7, Y7
-	VMULPD Y10, Y6, Y14
-	VSUBPD Y14, Y7, Y7
-	VMOVUPS Y7, (Bank_V1+0)(BX)
-	VMOVUPS Y6, (Bank_V2+0)(BX)
-	VCVTPD2PSY Y4, X15
-	VBLENDPS $0x0f, Y15, Y0, Y0
-	VCVTPD2PSY Y5, X15
-	VBLENDPS $0x0f, Y15, Y1, Y1
-	VCVTPD2PSY Y6, X15
-	VBLENDPS $0x0f, Y15, Y2, Y2
-	VCVTPD2PSY Y7, X15
-	VBLENDPS $0x0f, Y15, Y3, Y3
-	VEXTRACTF128 $1, Y0, X4
-	VCVTPS2PD X4, Y4
-	VEXTRACTF128 $1, Y1, X5
-	VCVTPS2PD X5, Y5
-	VEXTRACTF128 $1, Y2, X6
-	VCVTPS2PD X6, Y6
-	VEXTRACTF128 $1, Y3, X7
-	VCVTPS2PD X7, Y7
-	VMOVUPS (Bank_V1+32)(BX), Y8
-	VMOVUPS (Bank_V2+32)(BX), Y9
-	VMOVUPS (Bank_C1+32)(BX), Y10
-	VMOVUPS (Bank_C2+32)(BX), Y11
-	VMULPD Y11, Y9, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y10, Y8, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y11, Y8, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y10, Y4, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y11, Y4, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y10, Y5, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y11, Y5, Y14
-	VSUBPD Y14, Y7, Y7
-	VMULPD Y10, Y6, Y14
-	VSUBPD Y14, Y7, Y7
-	VMOVUPS Y7, (Bank_V1+32)(BX)
-	VMOVUPS Y6, (Bank_V2+32)(BX)
-	VCVTPD2PSY Y4, X15
-	VINSERTF128 $1, X15, Y0, Y0
-	VCVTPD2PSY Y5, X15
-	VINSERTF128 $1, X15, Y1, Y1
-	VCVTPD2PSY Y6, X15
-	VINSERTF128 $1, X15, Y2, Y2
-	VCVTPD2PSY Y7, X15
-	VINSERTF128 $1, X15, Y3, Y3
-	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
-	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
-	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
-	VADDPS 96(R9), Y3, Y3
-	VMOVAPS Y3, Y15
-	VUNPCKLPS Y1, Y0, Y4
-	VUNPCKHPS Y1, Y0, Y5
-	VUNPCKLPS Y3, Y2, Y6
-	VUNPCKHPS Y3, Y2, Y7
-	VUNPCKLPD Y6, Y4, Y0
-	VUNPCKHPD Y6, Y4, Y1
-	VUNPCKLPD Y7, Y5, Y2
-	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
-	VMOVUPS X0, (AX)(DX*1)
-	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
-	VMOVUPS X1, (AX)(DX*1)
-	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
-	VMOVUPS X2, (AX)(DX*1)
-	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
-	VMOVUPS X3, (AX)(DX*1)
-	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	ADDQ $16, DX
-	ADDQ $128, R9
-	ADDQ $128, R10
-	SUBQ $4, CX
-	JMP more
-
-last:
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y15, Y8
-	VADDPS (Mix_Left+96)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+96)(R8)
-	VMULPS Y5, Y15, Y9
-	VADDPS (Mix_Right+96)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+96)(R8)
-	VMULPS Y15, Y15, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	ADDQ $128, R8
 
 groups:
 	CMPQ CX, $4
 	JLT rest
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -941,14 +340,24 @@ groups:
 	VINSERTF128 $1, X15, Y2, Y2
 	VCVTPD2PSY Y7, X15
 	VINSERTF128 $1, X15, Y3, Y3
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
+	VMOVUPS Y2, 64(R8)
+	VMULPS Y2, Y2, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 96(R9), Y3, Y3
-	VMOVAPS Y3, Y15
+	VMOVUPS Y3, 96(R8)
+	VMULPS Y3, Y3, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -957,58 +366,22 @@ groups:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y15, Y8
-	VADDPS (Mix_Left+96)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+96)(R8)
-	VMULPS Y5, Y15, Y9
-	VADDPS (Mix_Right+96)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+96)(R8)
-	VMULPS Y15, Y15, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
 	ADDQ $16, DX
 	ADDQ $128, R8
 	ADDQ $128, R9
@@ -1023,20 +396,20 @@ rest:
 	JEQ two
 	CMPQ CX, $3
 	JEQ three
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -1123,8 +496,12 @@ rest:
 	VMOVUPS Y8, (Bank_V2+32)(BX)
 	VCVTPD2PSY Y4, X15
 	VINSERTF128 $1, X15, Y0, Y0
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -1133,51 +510,39 @@ rest:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
 	JMP done
 
 two:
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -1305,10 +670,16 @@ two:
 	VINSERTF128 $1, X15, Y0, Y0
 	VCVTPD2PSY Y5, X15
 	VINSERTF128 $1, X15, Y1, Y1
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -1317,59 +688,39 @@ two:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
 	JMP done
 
 three:
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -1538,12 +889,20 @@ three:
 	VINSERTF128 $1, X15, Y1, Y1
 	VCVTPD2PSY Y6, X15
 	VINSERTF128 $1, X15, Y2, Y2
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
+	VMOVUPS Y2, 64(R8)
+	VMULPS Y2, Y2, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -1552,80 +911,52 @@ three:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
 
 done:
 	VZEROUPPER
 	RET
 
-// func movingPlain(b *Bank, m *Mix, force *floats, from, frames int)
+// func movingPlain(b *Bank, w *Bench, force *floats, from, frames int)
 TEXT ·movingPlain(SB), NOSPLIT, $0-40
 	MOVQ b+0(FP), BX
-	MOVQ m+8(FP), SI
+	MOVQ w+8(FP), SI
 	MOVQ force+16(FP), R9
 	MOVQ from+24(FP), R8
 	MOVQ frames+32(FP), CX
 	SHLQ $5, R8
-	ADDQ SI, R8
-	LEAQ Mix_window(SI), R10
+	LEAQ Bank_Out(BX)(R8*1), R8
+	LEAQ Bench_window(SI), R10
 	MOVQ $-48, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -1641,20 +972,20 @@ TEXT ·movingPlain(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 64(R10)
 	VMOVUPS Y3, 96(R10)
 	ADDQ $16, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -1670,20 +1001,20 @@ TEXT ·movingPlain(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 192(R10)
 	VMOVUPS Y3, 224(R10)
 	ADDQ $16, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -1703,20 +1034,20 @@ TEXT ·movingPlain(SB), NOSPLIT, $0-40
 groups:
 	CMPQ CX, $4
 	JLT rest
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -1961,14 +1292,24 @@ groups:
 	VINSERTF128 $1, X15, Y2, Y2
 	VCVTPD2PSY Y7, X15
 	VINSERTF128 $1, X15, Y3, Y3
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
+	VMOVUPS Y2, 64(R8)
+	VMULPS Y2, Y2, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 96(R9), Y3, Y3
-	VMOVAPS Y3, Y15
+	VMOVUPS Y3, 96(R8)
+	VMULPS Y3, Y3, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -1977,68 +1318,22 @@ groups:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y15, Y8
-	VADDPS (Mix_Left+96)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+96)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y15, Y9
-	VADDPS (Mix_Right+96)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+96)(R8)
-	VMULPS Y15, Y15, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	VMOVUPS Y4, (Bank_Left+0)(BX)
-	VMOVUPS Y5, (Bank_Right+0)(BX)
 	ADDQ $16, DX
 	ADDQ $128, R8
 	ADDQ $128, R9
@@ -2053,20 +1348,20 @@ rest:
 	JEQ two
 	CMPQ CX, $3
 	JEQ three
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -2170,8 +1465,12 @@ rest:
 	VMOVUPS Y11, (Bank_C2+32)(BX)
 	VCVTPD2PSY Y4, X15
 	VINSERTF128 $1, X15, Y0, Y0
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -2180,55 +1479,39 @@ rest:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	VMOVUPS Y4, (Bank_Left+0)(BX)
-	VMOVUPS Y5, (Bank_Right+0)(BX)
 	JMP done
 
 two:
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -2379,10 +1662,16 @@ two:
 	VINSERTF128 $1, X15, Y0, Y0
 	VCVTPD2PSY Y5, X15
 	VINSERTF128 $1, X15, Y1, Y1
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -2391,65 +1680,39 @@ two:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	VMOVUPS Y4, (Bank_Left+0)(BX)
-	VMOVUPS Y5, (Bank_Right+0)(BX)
 	JMP done
 
 three:
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -2647,12 +1910,20 @@ three:
 	VINSERTF128 $1, X15, Y1, Y1
 	VCVTPD2PSY Y6, X15
 	VINSERTF128 $1, X15, Y2, Y2
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
+	VMOVUPS Y2, 64(R8)
+	VMULPS Y2, Y2, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -2661,88 +1932,52 @@ three:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	VMOVUPS Y4, (Bank_Left+0)(BX)
-	VMOVUPS Y5, (Bank_Right+0)(BX)
 
 done:
 	VZEROUPPER
 	RET
 
-// func stillStiff(b *Bank, m *Mix, force *floats, from, frames int)
+// func stillStiff(b *Bank, w *Bench, force *floats, from, frames int)
 TEXT ·stillStiff(SB), NOSPLIT, $0-40
 	MOVQ b+0(FP), BX
-	MOVQ m+8(FP), SI
+	MOVQ w+8(FP), SI
 	MOVQ force+16(FP), R9
 	MOVQ from+24(FP), R8
 	MOVQ frames+32(FP), CX
 	SHLQ $5, R8
-	ADDQ SI, R8
-	LEAQ Mix_window(SI), R10
+	LEAQ Bank_Out(BX)(R8*1), R8
+	LEAQ Bench_window(SI), R10
 	MOVQ $-48, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -2758,20 +1993,20 @@ TEXT ·stillStiff(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 64(R10)
 	VMOVUPS Y3, 96(R10)
 	ADDQ $16, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -2787,20 +2022,20 @@ TEXT ·stillStiff(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 192(R10)
 	VMOVUPS Y3, 224(R10)
 	ADDQ $16, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -2816,22 +2051,24 @@ TEXT ·stillStiff(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 320(R10)
 	VMOVUPS Y3, 352(R10)
 	ADDQ $16, DX
+
+groups:
 	CMPQ CX, $4
-	JLT groups
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	JLT rest
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -3201,14 +2438,24 @@ sections2:
 	VINSERTF128 $1, X15, Y2, Y2
 	VCVTPD2PSY Y7, X15
 	VINSERTF128 $1, X15, Y3, Y3
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
+	VMOVUPS Y2, 64(R8)
+	VMULPS Y2, Y2, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 96(R9), Y3, Y3
-	VMOVAPS Y3, Y15
+	VMOVUPS Y3, 96(R8)
+	VMULPS Y3, Y3, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -3217,981 +2464,22 @@ sections2:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	ADDQ $16, DX
-	ADDQ $128, R9
-	ADDQ $128, R10
-	SUBQ $4, CX
-
-more:
-	CMPQ CX, $4
-	JLT last
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
-	VMOVUPS (AX)(DX*1), X0
-	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
-	VMOVUPS (AX)(DX*1), X1
-	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
-	VMOVUPS (AX)(DX*1), X2
-	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
-	VMOVUPS (AX)(DX*1), X3
-	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
-	VUNPCKLPS Y1, Y0, Y4
-	VUNPCKHPS Y1, Y0, Y5
-	VUNPCKLPS Y3, Y2, Y6
-	VUNPCKHPS Y3, Y2, Y7
-	VUNPCKLPD Y6, Y4, Y0
-	VUNPCKHPD Y6, Y4, Y1
-	VUNPCKLPD Y7, Y5, Y2
-	VUNPCKHPD Y7, Y5, Y3
-	VMOVUPS Y0, 384(R10)
-	VMOVUPS Y1, 416(R10)
-	VMOVUPS Y2, 448(R10)
-	VMOVUPS Y3, 480(R10)
-	VMOVUPS (Bank_Tap+352)(BX), Y8
-	VMOVUPS 32(R10), Y4
-	VMOVUPS 64(R10), Y5
-	VMOVUPS 96(R10), Y6
-	VMOVUPS 128(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS bias<>(SB), Y10, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS bias<>(SB), Y11, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS bias<>(SB), Y10, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS bias<>(SB), Y11, Y3
-	VMOVUPS (Bank_Tap+320)(BX), Y8
-	VMOVUPS 160(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+288)(BX), Y8
-	VMOVUPS 192(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+256)(BX), Y8
-	VMOVUPS 224(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+224)(BX), Y8
-	VMOVUPS 256(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+192)(BX), Y8
-	VMOVUPS 288(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+160)(BX), Y8
-	VMOVUPS 320(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+128)(BX), Y8
-	VMOVUPS 352(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+96)(BX), Y8
-	VMOVUPS 384(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+64)(BX), Y8
-	VMOVUPS 416(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+32)(BX), Y8
-	VMOVUPS 448(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+0)(BX), Y8
-	VMOVUPS 480(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y15, Y8
-	VADDPS (Mix_Left+96)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+96)(R8)
-	VMULPS Y5, Y15, Y9
-	VADDPS (Mix_Right+96)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+96)(R8)
-	VMULPS Y15, Y15, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	ADDQ $128, R8
-	VCVTPS2PD X0, Y4
-	VCVTPS2PD X1, Y5
-	VCVTPS2PD X2, Y6
-	VCVTPS2PD X3, Y7
-	VMOVUPS (Bank_V1+0)(BX), Y8
-	VMOVUPS (Bank_V2+0)(BX), Y9
-	VMOVUPS (Bank_C1+0)(BX), Y10
-	VMOVUPS (Bank_C2+0)(BX), Y11
-	VMULPD Y11, Y9, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y10, Y8, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y11, Y8, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y10, Y4, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y11, Y4, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y10, Y5, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y11, Y5, Y14
-	VSUBPD Y14, Y7, Y7
-	VMULPD Y10, Y6, Y14
-	VSUBPD Y14, Y7, Y7
-	VMOVUPS Y7, (Bank_V1+0)(BX)
-	VMOVUPS Y6, (Bank_V2+0)(BX)
-	VMOVUPS (Bank_Gain+0)(BX), Y9
-	VMOVUPS (Bank_Zero+0)(BX), Y10
-	VMOVUPS (Bank_Pole+0)(BX), Y11
-	VMOVUPS (Bank_Shelf+0)(BX), Y12
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y4, Y8
-	VSUBPD Y14, Y4, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y4
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y5, Y8
-	VSUBPD Y14, Y5, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y5
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y6, Y8
-	VSUBPD Y14, Y6, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y6
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y7, Y8
-	VSUBPD Y14, Y7, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y7
-	VMOVUPS Y12, (Bank_Shelf+0)(BX)
-	LEAQ (Bank_Section+0)(BX), R11
-	LEAQ (Bank_Node+0)(BX), R12
-	MOVQ Bank_Sections(BX), R13
-
-sections3:
-	VMOVUPS (Section_A1+0)(R11), Y8
-	VMOVUPS (Section_A2+0)(R11), Y9
-	VMOVUPS (Node_X+0)(R12), Y10
-	VMOVUPS (Node_X1+0)(R12), Y11
-	VMOVUPS (Node_X+128)(R12), Y12
-	VMOVUPS (Node_X1+128)(R12), Y13
-	VSUBPD Y13, Y4, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y11, Y14, Y14
-	VSUBPD Y12, Y10, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y11
-	VSUBPD Y12, Y5, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y10, Y14, Y14
-	VSUBPD Y11, Y4, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y10
-	VSUBPD Y11, Y6, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y4, Y14, Y14
-	VSUBPD Y10, Y5, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y4
-	VSUBPD Y10, Y7, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y5, Y14, Y14
-	VSUBPD Y4, Y6, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y5
-	VMOVUPS Y7, (Node_X+0)(R12)
-	VMOVUPS Y6, (Node_X1+0)(R12)
-	VMOVAPS Y5, Y7
-	VMOVAPS Y4, Y6
-	VMOVAPS Y10, Y5
-	VMOVAPS Y11, Y4
-	ADDQ $256, R11
-	ADDQ $128, R12
-	DECQ R13
-	JNZ sections3
-	VMOVUPS Y7, (Node_X+0)(R12)
-	VMOVUPS Y6, (Node_X1+0)(R12)
-	VCVTPD2PSY Y4, X15
-	VBLENDPS $0x0f, Y15, Y0, Y0
-	VCVTPD2PSY Y5, X15
-	VBLENDPS $0x0f, Y15, Y1, Y1
-	VCVTPD2PSY Y6, X15
-	VBLENDPS $0x0f, Y15, Y2, Y2
-	VCVTPD2PSY Y7, X15
-	VBLENDPS $0x0f, Y15, Y3, Y3
-	VEXTRACTF128 $1, Y0, X4
-	VCVTPS2PD X4, Y4
-	VEXTRACTF128 $1, Y1, X5
-	VCVTPS2PD X5, Y5
-	VEXTRACTF128 $1, Y2, X6
-	VCVTPS2PD X6, Y6
-	VEXTRACTF128 $1, Y3, X7
-	VCVTPS2PD X7, Y7
-	VMOVUPS (Bank_V1+32)(BX), Y8
-	VMOVUPS (Bank_V2+32)(BX), Y9
-	VMOVUPS (Bank_C1+32)(BX), Y10
-	VMOVUPS (Bank_C2+32)(BX), Y11
-	VMULPD Y11, Y9, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y10, Y8, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y11, Y8, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y10, Y4, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y11, Y4, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y10, Y5, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y11, Y5, Y14
-	VSUBPD Y14, Y7, Y7
-	VMULPD Y10, Y6, Y14
-	VSUBPD Y14, Y7, Y7
-	VMOVUPS Y7, (Bank_V1+32)(BX)
-	VMOVUPS Y6, (Bank_V2+32)(BX)
-	VMOVUPS (Bank_Gain+32)(BX), Y9
-	VMOVUPS (Bank_Zero+32)(BX), Y10
-	VMOVUPS (Bank_Pole+32)(BX), Y11
-	VMOVUPS (Bank_Shelf+32)(BX), Y12
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y4, Y8
-	VSUBPD Y14, Y4, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y4
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y5, Y8
-	VSUBPD Y14, Y5, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y5
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y6, Y8
-	VSUBPD Y14, Y6, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y6
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y7, Y8
-	VSUBPD Y14, Y7, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y7
-	VMOVUPS Y12, (Bank_Shelf+32)(BX)
-	LEAQ (Bank_Section+0)(BX), R11
-	LEAQ (Bank_Node+0)(BX), R12
-	MOVQ Bank_Sections(BX), R13
-
-sections4:
-	VMOVUPS (Section_A1+32)(R11), Y8
-	VMOVUPS (Section_A2+32)(R11), Y9
-	VMOVUPS (Node_X+32)(R12), Y10
-	VMOVUPS (Node_X1+32)(R12), Y11
-	VMOVUPS (Node_X+160)(R12), Y12
-	VMOVUPS (Node_X1+160)(R12), Y13
-	VSUBPD Y13, Y4, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y11, Y14, Y14
-	VSUBPD Y12, Y10, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y11
-	VSUBPD Y12, Y5, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y10, Y14, Y14
-	VSUBPD Y11, Y4, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y10
-	VSUBPD Y11, Y6, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y4, Y14, Y14
-	VSUBPD Y10, Y5, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y4
-	VSUBPD Y10, Y7, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y5, Y14, Y14
-	VSUBPD Y4, Y6, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y5
-	VMOVUPS Y7, (Node_X+32)(R12)
-	VMOVUPS Y6, (Node_X1+32)(R12)
-	VMOVAPS Y5, Y7
-	VMOVAPS Y4, Y6
-	VMOVAPS Y10, Y5
-	VMOVAPS Y11, Y4
-	ADDQ $256, R11
-	ADDQ $128, R12
-	DECQ R13
-	JNZ sections4
-	VMOVUPS Y7, (Node_X+32)(R12)
-	VMOVUPS Y6, (Node_X1+32)(R12)
-	VCVTPD2PSY Y4, X15
-	VINSERTF128 $1, X15, Y0, Y0
-	VCVTPD2PSY Y5, X15
-	VINSERTF128 $1, X15, Y1, Y1
-	VCVTPD2PSY Y6, X15
-	VINSERTF128 $1, X15, Y2, Y2
-	VCVTPD2PSY Y7, X15
-	VINSERTF128 $1, X15, Y3, Y3
-	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
-	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
-	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
-	VADDPS 96(R9), Y3, Y3
-	VMOVAPS Y3, Y15
-	VUNPCKLPS Y1, Y0, Y4
-	VUNPCKHPS Y1, Y0, Y5
-	VUNPCKLPS Y3, Y2, Y6
-	VUNPCKHPS Y3, Y2, Y7
-	VUNPCKLPD Y6, Y4, Y0
-	VUNPCKHPD Y6, Y4, Y1
-	VUNPCKLPD Y7, Y5, Y2
-	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
-	VMOVUPS X0, (AX)(DX*1)
-	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
-	VMOVUPS X1, (AX)(DX*1)
-	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
-	VMOVUPS X2, (AX)(DX*1)
-	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
-	VMOVUPS X3, (AX)(DX*1)
-	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	ADDQ $16, DX
-	ADDQ $128, R9
-	ADDQ $128, R10
-	SUBQ $4, CX
-	JMP more
-
-last:
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y15, Y8
-	VADDPS (Mix_Left+96)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+96)(R8)
-	VMULPS Y5, Y15, Y9
-	VADDPS (Mix_Right+96)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+96)(R8)
-	VMULPS Y15, Y15, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	ADDQ $128, R8
-
-groups:
-	CMPQ CX, $4
-	JLT rest
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
-	VMOVUPS (AX)(DX*1), X0
-	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
-	VMOVUPS (AX)(DX*1), X1
-	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
-	VMOVUPS (AX)(DX*1), X2
-	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
-	VMOVUPS (AX)(DX*1), X3
-	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
-	VUNPCKLPS Y1, Y0, Y4
-	VUNPCKHPS Y1, Y0, Y5
-	VUNPCKLPS Y3, Y2, Y6
-	VUNPCKHPS Y3, Y2, Y7
-	VUNPCKLPD Y6, Y4, Y0
-	VUNPCKHPD Y6, Y4, Y1
-	VUNPCKLPD Y7, Y5, Y2
-	VUNPCKHPD Y7, Y5, Y3
-	VMOVUPS Y0, 384(R10)
-	VMOVUPS Y1, 416(R10)
-	VMOVUPS Y2, 448(R10)
-	VMOVUPS Y3, 480(R10)
-	VMOVUPS (Bank_Tap+352)(BX), Y8
-	VMOVUPS 32(R10), Y4
-	VMOVUPS 64(R10), Y5
-	VMOVUPS 96(R10), Y6
-	VMOVUPS 128(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS bias<>(SB), Y10, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS bias<>(SB), Y11, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS bias<>(SB), Y10, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS bias<>(SB), Y11, Y3
-	VMOVUPS (Bank_Tap+320)(BX), Y8
-	VMOVUPS 160(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+288)(BX), Y8
-	VMOVUPS 192(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+256)(BX), Y8
-	VMOVUPS 224(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+224)(BX), Y8
-	VMOVUPS 256(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+192)(BX), Y8
-	VMOVUPS 288(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+160)(BX), Y8
-	VMOVUPS 320(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+128)(BX), Y8
-	VMOVUPS 352(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+96)(BX), Y8
-	VMOVUPS 384(R10), Y7
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+64)(BX), Y8
-	VMOVUPS 416(R10), Y4
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+32)(BX), Y8
-	VMOVUPS 448(R10), Y5
-	VMULPS Y8, Y6, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y7, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y4, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y5, Y11
-	VADDPS Y11, Y3, Y3
-	VMOVUPS (Bank_Tap+0)(BX), Y8
-	VMOVUPS 480(R10), Y6
-	VMULPS Y8, Y7, Y10
-	VADDPS Y10, Y0, Y0
-	VMULPS Y8, Y4, Y11
-	VADDPS Y11, Y1, Y1
-	VMULPS Y8, Y5, Y10
-	VADDPS Y10, Y2, Y2
-	VMULPS Y8, Y6, Y11
-	VADDPS Y11, Y3, Y3
-	VCVTPS2PD X0, Y4
-	VCVTPS2PD X1, Y5
-	VCVTPS2PD X2, Y6
-	VCVTPS2PD X3, Y7
-	VMOVUPS (Bank_V1+0)(BX), Y8
-	VMOVUPS (Bank_V2+0)(BX), Y9
-	VMOVUPS (Bank_C1+0)(BX), Y10
-	VMOVUPS (Bank_C2+0)(BX), Y11
-	VMULPD Y11, Y9, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y10, Y8, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y11, Y8, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y10, Y4, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y11, Y4, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y10, Y5, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y11, Y5, Y14
-	VSUBPD Y14, Y7, Y7
-	VMULPD Y10, Y6, Y14
-	VSUBPD Y14, Y7, Y7
-	VMOVUPS Y7, (Bank_V1+0)(BX)
-	VMOVUPS Y6, (Bank_V2+0)(BX)
-	VMOVUPS (Bank_Gain+0)(BX), Y9
-	VMOVUPS (Bank_Zero+0)(BX), Y10
-	VMOVUPS (Bank_Pole+0)(BX), Y11
-	VMOVUPS (Bank_Shelf+0)(BX), Y12
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y4, Y8
-	VSUBPD Y14, Y4, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y4
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y5, Y8
-	VSUBPD Y14, Y5, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y5
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y6, Y8
-	VSUBPD Y14, Y6, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y6
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y7, Y8
-	VSUBPD Y14, Y7, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y7
-	VMOVUPS Y12, (Bank_Shelf+0)(BX)
-	LEAQ (Bank_Section+0)(BX), R11
-	LEAQ (Bank_Node+0)(BX), R12
-	MOVQ Bank_Sections(BX), R13
-
-sections5:
-	VMOVUPS (Section_A1+0)(R11), Y8
-	VMOVUPS (Section_A2+0)(R11), Y9
-	VMOVUPS (Node_X+0)(R12), Y10
-	VMOVUPS (Node_X1+0)(R12), Y11
-	VMOVUPS (Node_X+128)(R12), Y12
-	VMOVUPS (Node_X1+128)(R12), Y13
-	VSUBPD Y13, Y4, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y11, Y14, Y14
-	VSUBPD Y12, Y10, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y11
-	VSUBPD Y12, Y5, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y10, Y14, Y14
-	VSUBPD Y11, Y4, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y10
-	VSUBPD Y11, Y6, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y4, Y14, Y14
-	VSUBPD Y10, Y5, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y4
-	VSUBPD Y10, Y7, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y5, Y14, Y14
-	VSUBPD Y4, Y6, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y5
-	VMOVUPS Y7, (Node_X+0)(R12)
-	VMOVUPS Y6, (Node_X1+0)(R12)
-	VMOVAPS Y5, Y7
-	VMOVAPS Y4, Y6
-	VMOVAPS Y10, Y5
-	VMOVAPS Y11, Y4
-	ADDQ $256, R11
-	ADDQ $128, R12
-	DECQ R13
-	JNZ sections5
-	VMOVUPS Y7, (Node_X+0)(R12)
-	VMOVUPS Y6, (Node_X1+0)(R12)
-	VCVTPD2PSY Y4, X15
-	VBLENDPS $0x0f, Y15, Y0, Y0
-	VCVTPD2PSY Y5, X15
-	VBLENDPS $0x0f, Y15, Y1, Y1
-	VCVTPD2PSY Y6, X15
-	VBLENDPS $0x0f, Y15, Y2, Y2
-	VCVTPD2PSY Y7, X15
-	VBLENDPS $0x0f, Y15, Y3, Y3
-	VEXTRACTF128 $1, Y0, X4
-	VCVTPS2PD X4, Y4
-	VEXTRACTF128 $1, Y1, X5
-	VCVTPS2PD X5, Y5
-	VEXTRACTF128 $1, Y2, X6
-	VCVTPS2PD X6, Y6
-	VEXTRACTF128 $1, Y3, X7
-	VCVTPS2PD X7, Y7
-	VMOVUPS (Bank_V1+32)(BX), Y8
-	VMOVUPS (Bank_V2+32)(BX), Y9
-	VMOVUPS (Bank_C1+32)(BX), Y10
-	VMOVUPS (Bank_C2+32)(BX), Y11
-	VMULPD Y11, Y9, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y10, Y8, Y14
-	VSUBPD Y14, Y4, Y4
-	VMULPD Y11, Y8, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y10, Y4, Y14
-	VSUBPD Y14, Y5, Y5
-	VMULPD Y11, Y4, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y10, Y5, Y14
-	VSUBPD Y14, Y6, Y6
-	VMULPD Y11, Y5, Y14
-	VSUBPD Y14, Y7, Y7
-	VMULPD Y10, Y6, Y14
-	VSUBPD Y14, Y7, Y7
-	VMOVUPS Y7, (Bank_V1+32)(BX)
-	VMOVUPS Y6, (Bank_V2+32)(BX)
-	VMOVUPS (Bank_Gain+32)(BX), Y9
-	VMOVUPS (Bank_Zero+32)(BX), Y10
-	VMOVUPS (Bank_Pole+32)(BX), Y11
-	VMOVUPS (Bank_Shelf+32)(BX), Y12
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y4, Y8
-	VSUBPD Y14, Y4, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y4
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y5, Y8
-	VSUBPD Y14, Y5, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y5
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y6, Y8
-	VSUBPD Y14, Y6, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y6
-	VMULPD Y10, Y8, Y14
-	VMOVAPS Y7, Y8
-	VSUBPD Y14, Y7, Y15
-	VMULPD Y9, Y15, Y15
-	VMULPD Y11, Y12, Y14
-	VADDPD Y14, Y15, Y12
-	VMOVAPS Y12, Y7
-	VMOVUPS Y12, (Bank_Shelf+32)(BX)
-	LEAQ (Bank_Section+0)(BX), R11
-	LEAQ (Bank_Node+0)(BX), R12
-	MOVQ Bank_Sections(BX), R13
-
-sections6:
-	VMOVUPS (Section_A1+32)(R11), Y8
-	VMOVUPS (Section_A2+32)(R11), Y9
-	VMOVUPS (Node_X+32)(R12), Y10
-	VMOVUPS (Node_X1+32)(R12), Y11
-	VMOVUPS (Node_X+160)(R12), Y12
-	VMOVUPS (Node_X1+160)(R12), Y13
-	VSUBPD Y13, Y4, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y11, Y14, Y14
-	VSUBPD Y12, Y10, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y11
-	VSUBPD Y12, Y5, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y10, Y14, Y14
-	VSUBPD Y11, Y4, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y10
-	VSUBPD Y11, Y6, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y4, Y14, Y14
-	VSUBPD Y10, Y5, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y4
-	VSUBPD Y10, Y7, Y14
-	VMULPD Y9, Y14, Y14
-	VADDPD Y5, Y14, Y14
-	VSUBPD Y4, Y6, Y15
-	VMULPD Y8, Y15, Y15
-	VADDPD Y15, Y14, Y5
-	VMOVUPS Y7, (Node_X+32)(R12)
-	VMOVUPS Y6, (Node_X1+32)(R12)
-	VMOVAPS Y5, Y7
-	VMOVAPS Y4, Y6
-	VMOVAPS Y10, Y5
-	VMOVAPS Y11, Y4
-	ADDQ $256, R11
-	ADDQ $128, R12
-	DECQ R13
-	JNZ sections6
-	VMOVUPS Y7, (Node_X+32)(R12)
-	VMOVUPS Y6, (Node_X1+32)(R12)
-	VCVTPD2PSY Y4, X15
-	VINSERTF128 $1, X15, Y0, Y0
-	VCVTPD2PSY Y5, X15
-	VINSERTF128 $1, X15, Y1, Y1
-	VCVTPD2PSY Y6, X15
-	VINSERTF128 $1, X15, Y2, Y2
-	VCVTPD2PSY Y7, X15
-	VINSERTF128 $1, X15, Y3, Y3
-	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
-	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
-	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
-	VADDPS 96(R9), Y3, Y3
-	VMOVAPS Y3, Y15
-	VUNPCKLPS Y1, Y0, Y4
-	VUNPCKHPS Y1, Y0, Y5
-	VUNPCKLPS Y3, Y2, Y6
-	VUNPCKHPS Y3, Y2, Y7
-	VUNPCKLPD Y6, Y4, Y0
-	VUNPCKHPD Y6, Y4, Y1
-	VUNPCKLPD Y7, Y5, Y2
-	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
-	VMOVUPS X0, (AX)(DX*1)
-	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
-	VMOVUPS X1, (AX)(DX*1)
-	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
-	VMOVUPS X2, (AX)(DX*1)
-	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
-	VMOVUPS X3, (AX)(DX*1)
-	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y15, Y8
-	VADDPS (Mix_Left+96)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+96)(R8)
-	VMULPS Y5, Y15, Y9
-	VADDPS (Mix_Right+96)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+96)(R8)
-	VMULPS Y15, Y15, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
 	ADDQ $16, DX
 	ADDQ $128, R8
 	ADDQ $128, R9
@@ -4206,20 +2494,20 @@ rest:
 	JEQ two
 	CMPQ CX, $3
 	JEQ three
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -4306,7 +2594,7 @@ rest:
 	LEAQ (Bank_Node+0)(BX), R12
 	MOVQ Bank_Sections(BX), R13
 
-sections7:
+sections3:
 	VMOVUPS (Section_A1+0)(R11), Y8
 	VMOVUPS (Section_A2+0)(R11), Y9
 	VMOVUPS (Node_X+0)(R12), Y10
@@ -4325,7 +2613,7 @@ sections7:
 	ADDQ $256, R11
 	ADDQ $128, R12
 	DECQ R13
-	JNZ sections7
+	JNZ sections3
 	VMOVUPS Y4, (Node_X+0)(R12)
 	VMOVUPS Y12, (Node_X1+0)(R12)
 	VCVTPD2PSY Y4, X15
@@ -4358,7 +2646,7 @@ sections7:
 	LEAQ (Bank_Node+0)(BX), R12
 	MOVQ Bank_Sections(BX), R13
 
-sections8:
+sections4:
 	VMOVUPS (Section_A1+32)(R11), Y8
 	VMOVUPS (Section_A2+32)(R11), Y9
 	VMOVUPS (Node_X+32)(R12), Y10
@@ -4377,13 +2665,17 @@ sections8:
 	ADDQ $256, R11
 	ADDQ $128, R12
 	DECQ R13
-	JNZ sections8
+	JNZ sections4
 	VMOVUPS Y4, (Node_X+32)(R12)
 	VMOVUPS Y12, (Node_X1+32)(R12)
 	VCVTPD2PSY Y4, X15
 	VINSERTF128 $1, X15, Y0, Y0
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -4392,51 +2684,39 @@ sections8:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
 	JMP done
 
 two:
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -4561,7 +2841,7 @@ two:
 	LEAQ (Bank_Node+0)(BX), R12
 	MOVQ Bank_Sections(BX), R13
 
-sections9:
+sections5:
 	VMOVUPS (Section_A1+0)(R11), Y8
 	VMOVUPS (Section_A2+0)(R11), Y9
 	VMOVUPS (Node_X+0)(R12), Y10
@@ -4587,7 +2867,7 @@ sections9:
 	ADDQ $256, R11
 	ADDQ $128, R12
 	DECQ R13
-	JNZ sections9
+	JNZ sections5
 	VMOVUPS Y5, (Node_X+0)(R12)
 	VMOVUPS Y4, (Node_X1+0)(R12)
 	VCVTPD2PSY Y4, X15
@@ -4635,7 +2915,7 @@ sections9:
 	LEAQ (Bank_Node+0)(BX), R12
 	MOVQ Bank_Sections(BX), R13
 
-sections10:
+sections6:
 	VMOVUPS (Section_A1+32)(R11), Y8
 	VMOVUPS (Section_A2+32)(R11), Y9
 	VMOVUPS (Node_X+32)(R12), Y10
@@ -4661,17 +2941,23 @@ sections10:
 	ADDQ $256, R11
 	ADDQ $128, R12
 	DECQ R13
-	JNZ sections10
+	JNZ sections6
 	VMOVUPS Y5, (Node_X+32)(R12)
 	VMOVUPS Y4, (Node_X1+32)(R12)
 	VCVTPD2PSY Y4, X15
 	VINSERTF128 $1, X15, Y0, Y0
 	VCVTPD2PSY Y5, X15
 	VINSERTF128 $1, X15, Y1, Y1
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -4680,59 +2966,39 @@ sections10:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
 	JMP done
 
 three:
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -4895,7 +3161,7 @@ three:
 	LEAQ (Bank_Node+0)(BX), R12
 	MOVQ Bank_Sections(BX), R13
 
-sections11:
+sections7:
 	VMOVUPS (Section_A1+0)(R11), Y8
 	VMOVUPS (Section_A2+0)(R11), Y9
 	VMOVUPS (Node_X+0)(R12), Y10
@@ -4928,7 +3194,7 @@ sections11:
 	ADDQ $256, R11
 	ADDQ $128, R12
 	DECQ R13
-	JNZ sections11
+	JNZ sections7
 	VMOVUPS Y6, (Node_X+0)(R12)
 	VMOVUPS Y5, (Node_X1+0)(R12)
 	VCVTPD2PSY Y4, X15
@@ -4991,7 +3257,7 @@ sections11:
 	LEAQ (Bank_Node+0)(BX), R12
 	MOVQ Bank_Sections(BX), R13
 
-sections12:
+sections8:
 	VMOVUPS (Section_A1+32)(R11), Y8
 	VMOVUPS (Section_A2+32)(R11), Y9
 	VMOVUPS (Node_X+32)(R12), Y10
@@ -5024,7 +3290,7 @@ sections12:
 	ADDQ $256, R11
 	ADDQ $128, R12
 	DECQ R13
-	JNZ sections12
+	JNZ sections8
 	VMOVUPS Y6, (Node_X+32)(R12)
 	VMOVUPS Y5, (Node_X1+32)(R12)
 	VCVTPD2PSY Y4, X15
@@ -5033,12 +3299,20 @@ sections12:
 	VINSERTF128 $1, X15, Y1, Y1
 	VCVTPD2PSY Y6, X15
 	VINSERTF128 $1, X15, Y2, Y2
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
+	VMOVUPS Y2, 64(R8)
+	VMULPS Y2, Y2, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -5047,80 +3321,52 @@ sections12:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
 
 done:
 	VZEROUPPER
 	RET
 
-// func movingStiff(b *Bank, m *Mix, force *floats, from, frames int)
+// func movingStiff(b *Bank, w *Bench, force *floats, from, frames int)
 TEXT ·movingStiff(SB), NOSPLIT, $0-40
 	MOVQ b+0(FP), BX
-	MOVQ m+8(FP), SI
+	MOVQ w+8(FP), SI
 	MOVQ force+16(FP), R9
 	MOVQ from+24(FP), R8
 	MOVQ frames+32(FP), CX
 	SHLQ $5, R8
-	ADDQ SI, R8
-	LEAQ Mix_window(SI), R10
+	LEAQ Bank_Out(BX)(R8*1), R8
+	LEAQ Bench_window(SI), R10
 	MOVQ $-48, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -5136,20 +3382,20 @@ TEXT ·movingStiff(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 64(R10)
 	VMOVUPS Y3, 96(R10)
 	ADDQ $16, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -5165,20 +3411,20 @@ TEXT ·movingStiff(SB), NOSPLIT, $0-40
 	VMOVUPS Y2, 192(R10)
 	VMOVUPS Y3, 224(R10)
 	ADDQ $16, DX
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -5198,20 +3444,20 @@ TEXT ·movingStiff(SB), NOSPLIT, $0-40
 groups:
 	CMPQ CX, $4
 	JLT rest
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -5666,14 +3912,24 @@ sections2:
 	VINSERTF128 $1, X15, Y2, Y2
 	VCVTPD2PSY Y7, X15
 	VINSERTF128 $1, X15, Y3, Y3
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
+	VMOVUPS Y2, 64(R8)
+	VMULPS Y2, Y2, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 96(R9), Y3, Y3
-	VMOVAPS Y3, Y15
+	VMOVUPS Y3, 96(R8)
+	VMULPS Y3, Y3, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -5682,68 +3938,22 @@ sections2:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y15, Y8
-	VADDPS (Mix_Left+96)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+96)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y15, Y9
-	VADDPS (Mix_Right+96)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+96)(R8)
-	VMULPS Y15, Y15, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	VMOVUPS Y4, (Bank_Left+0)(BX)
-	VMOVUPS Y5, (Bank_Right+0)(BX)
 	ADDQ $16, DX
 	ADDQ $128, R8
 	ADDQ $128, R9
@@ -5758,20 +3968,20 @@ rest:
 	JEQ two
 	CMPQ CX, $3
 	JEQ three
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -5971,8 +4181,12 @@ sections4:
 	VMOVUPS Y12, (Node_X1+32)(R12)
 	VCVTPD2PSY Y4, X15
 	VINSERTF128 $1, X15, Y0, Y0
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -5981,55 +4195,39 @@ sections4:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	VMOVUPS Y4, (Bank_Left+0)(BX)
-	VMOVUPS Y5, (Bank_Right+0)(BX)
 	JMP done
 
 two:
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -6314,10 +4512,16 @@ sections6:
 	VINSERTF128 $1, X15, Y0, Y0
 	VCVTPD2PSY Y5, X15
 	VINSERTF128 $1, X15, Y1, Y1
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -6326,65 +4530,39 @@ sections6:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	VMOVUPS Y4, (Bank_Left+0)(BX)
-	VMOVUPS Y5, (Bank_Right+0)(BX)
 	JMP done
 
 three:
-	MOVQ (Mix_source+0)(SI), AX
-	MOVQ (Mix_source+32)(SI), DI
+	MOVQ (Bench_source+0)(SI), AX
+	MOVQ (Bench_source+32)(SI), DI
 	VMOVUPS (AX)(DX*1), X0
 	VINSERTF128 $1, (DI)(DX*1), Y0, Y0
-	MOVQ (Mix_source+8)(SI), AX
-	MOVQ (Mix_source+40)(SI), DI
+	MOVQ (Bench_source+8)(SI), AX
+	MOVQ (Bench_source+40)(SI), DI
 	VMOVUPS (AX)(DX*1), X1
 	VINSERTF128 $1, (DI)(DX*1), Y1, Y1
-	MOVQ (Mix_source+16)(SI), AX
-	MOVQ (Mix_source+48)(SI), DI
+	MOVQ (Bench_source+16)(SI), AX
+	MOVQ (Bench_source+48)(SI), DI
 	VMOVUPS (AX)(DX*1), X2
 	VINSERTF128 $1, (DI)(DX*1), Y2, Y2
-	MOVQ (Mix_source+24)(SI), AX
-	MOVQ (Mix_source+56)(SI), DI
+	MOVQ (Bench_source+24)(SI), AX
+	MOVQ (Bench_source+56)(SI), DI
 	VMOVUPS (AX)(DX*1), X3
 	VINSERTF128 $1, (DI)(DX*1), Y3, Y3
 	VUNPCKLPS Y1, Y0, Y4
@@ -6754,12 +4932,20 @@ sections8:
 	VINSERTF128 $1, X15, Y1, Y1
 	VCVTPD2PSY Y6, X15
 	VINSERTF128 $1, X15, Y2, Y2
+	VMOVUPS (Bank_Power+0)(BX), Y4
 	VADDPS 0(R9), Y0, Y0
-	VMOVAPS Y0, Y12
+	VMOVUPS Y0, 0(R8)
+	VMULPS Y0, Y0, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 32(R9), Y1, Y1
-	VMOVAPS Y1, Y13
+	VMOVUPS Y1, 32(R8)
+	VMULPS Y1, Y1, Y5
+	VADDPS Y5, Y4, Y4
 	VADDPS 64(R9), Y2, Y2
-	VMOVAPS Y2, Y14
+	VMOVUPS Y2, 64(R8)
+	VMULPS Y2, Y2, Y5
+	VADDPS Y5, Y4, Y4
+	VMOVUPS Y4, (Bank_Power+0)(BX)
 	VUNPCKLPS Y1, Y0, Y4
 	VUNPCKHPS Y1, Y0, Y5
 	VUNPCKLPS Y3, Y2, Y6
@@ -6768,59 +4954,56 @@ sections8:
 	VUNPCKHPD Y6, Y4, Y1
 	VUNPCKLPD Y7, Y5, Y2
 	VUNPCKHPD Y7, Y5, Y3
-	MOVQ (Mix_target+0)(SI), AX
-	MOVQ (Mix_target+32)(SI), DI
+	MOVQ (Bench_target+0)(SI), AX
+	MOVQ (Bench_target+32)(SI), DI
 	VMOVUPS X0, (AX)(DX*1)
 	VEXTRACTF128 $1, Y0, (DI)(DX*1)
-	MOVQ (Mix_target+8)(SI), AX
-	MOVQ (Mix_target+40)(SI), DI
+	MOVQ (Bench_target+8)(SI), AX
+	MOVQ (Bench_target+40)(SI), DI
 	VMOVUPS X1, (AX)(DX*1)
 	VEXTRACTF128 $1, Y1, (DI)(DX*1)
-	MOVQ (Mix_target+16)(SI), AX
-	MOVQ (Mix_target+48)(SI), DI
+	MOVQ (Bench_target+16)(SI), AX
+	MOVQ (Bench_target+48)(SI), DI
 	VMOVUPS X2, (AX)(DX*1)
 	VEXTRACTF128 $1, Y2, (DI)(DX*1)
-	MOVQ (Mix_target+24)(SI), AX
-	MOVQ (Mix_target+56)(SI), DI
+	MOVQ (Bench_target+24)(SI), AX
+	MOVQ (Bench_target+56)(SI), DI
 	VMOVUPS X3, (AX)(DX*1)
 	VEXTRACTF128 $1, Y3, (DI)(DX*1)
-	VMOVUPS (Bank_Left+0)(BX), Y4
-	VMOVUPS (Bank_Right+0)(BX), Y5
-	VMOVUPS (Bank_Power+0)(BX), Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y12, Y8
-	VADDPS (Mix_Left+0)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+0)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y12, Y9
-	VADDPS (Mix_Right+0)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+0)(R8)
-	VMULPS Y12, Y12, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y13, Y8
-	VADDPS (Mix_Left+32)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+32)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y13, Y9
-	VADDPS (Mix_Right+32)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+32)(R8)
-	VMULPS Y13, Y13, Y10
-	VADDPS Y10, Y7, Y7
-	VADDPS (Bank_DLeft+0)(BX), Y4, Y4
-	VMULPS Y4, Y14, Y8
-	VADDPS (Mix_Left+64)(R8), Y8, Y8
-	VMOVUPS Y8, (Mix_Left+64)(R8)
-	VADDPS (Bank_DRight+0)(BX), Y5, Y5
-	VMULPS Y5, Y14, Y9
-	VADDPS (Mix_Right+64)(R8), Y9, Y9
-	VMOVUPS Y9, (Mix_Right+64)(R8)
-	VMULPS Y14, Y14, Y10
-	VADDPS Y10, Y7, Y7
-	VMOVUPS Y7, (Bank_Power+0)(BX)
-	VMOVUPS Y4, (Bank_Left+0)(BX)
-	VMOVUPS Y5, (Bank_Right+0)(BX)
 
 done:
+	VZEROUPPER
+	RET
+
+// func mix(b *Bank, m *Mix, from, frames int)
+TEXT ·mix(SB), NOSPLIT, $0-32
+	MOVQ b+0(FP), BX
+	MOVQ m+8(FP), SI
+	MOVQ from+16(FP), R8
+	MOVQ frames+24(FP), CX
+	SHLQ $5, R8
+	ADDQ R8, SI
+	LEAQ Bank_Out(BX)(R8*1), R8
+	VMOVUPS (Bank_Left+0)(BX), Y0
+	VMOVUPS (Bank_DLeft+0)(BX), Y2
+	VMOVUPS (Bank_Right+0)(BX), Y1
+	VMOVUPS (Bank_DRight+0)(BX), Y3
+
+frames:
+	VMOVUPS 0(R8), Y4
+	VADDPS Y2, Y0, Y0
+	VMULPS Y0, Y4, Y5
+	VADDPS (Mix_Left+0)(SI), Y5, Y5
+	VMOVUPS Y5, (Mix_Left+0)(SI)
+	VADDPS Y3, Y1, Y1
+	VMULPS Y1, Y4, Y5
+	VADDPS (Mix_Right+0)(SI), Y5, Y5
+	VMOVUPS Y5, (Mix_Right+0)(SI)
+	ADDQ $32, R8
+	ADDQ $32, SI
+	SUBQ $1, CX
+	JNZ frames
+	VMOVUPS Y0, (Bank_Left+0)(BX)
+	VMOVUPS Y1, (Bank_Right+0)(BX)
 	VZEROUPPER
 	RET

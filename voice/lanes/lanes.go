@@ -43,7 +43,7 @@ type (
 //	x = sum over i of Tap[i] line[at - Back + Taps-1 - i]
 //	v = Level x - C2 v'' - C1 v'
 //	v = Shelf(v), then through the allpass sections, where there are any
-//	y = line[at] = v + force
+//	y = line[at] = Out = v + force
 //
 // Still, Level is in the taps and not multiplied. Where lanes move, all that has a D-sister changes by it
 // before each frame. Gliding, the taps are those of a delay near the lane's own, and
@@ -56,9 +56,10 @@ type Bank struct {
 	Slope                               [SlopeTaps]floats
 	Curve                               [CurveTaps]floats
 	Level, DLevel                       floats
-	Offset, DOffset, D2Offset, D3Offset floats // samples, and by differences of a frame
-	Left, Right, DLeft, DRight          floats // gains of the mix
-	Power                               floats // sum of the squares of y so far
+	Offset, DOffset, D2Offset, D3Offset floats         // samples, and by differences of a frame
+	Left, Right, DLeft, DRight          floats         // gains of the mix
+	Out                                 [Frames]floats // y in each frame of the control step
+	Power                               floats         // sum of the squares of y so far
 	C1, C2, DC1, DC2                    doubles
 	V1, V2                              doubles // the loss filter's last two outputs
 	Gain, Zero, Pole                    doubles // of the shelf
@@ -82,14 +83,8 @@ type Section struct{ A1, A2, DA1, DA2 doubles }
 // Node is what passed between two sections one and two frames ago.
 type Node struct{ X, X1 doubles }
 
-// Mix is where banks add what they sound, lane by lane, for the frames of one
-// control step, and what kernels need beside.
-type Mix struct {
-	Left, Right    [Frames]floats
-	Rows           *Rows // of gliding reads
-	window         [Frames + Taps + 4]floats
-	source, target [Width]uintptr
-}
+// Mix is where banks add what they sound in a control step, lane by lane.
+type Mix struct{ Left, Right [Frames]floats }
 
 // Clear empties frames from to until.
 func (m *Mix) Clear(from, until int) {
@@ -109,6 +104,16 @@ func (x *floats) sum() float32 {
 	return ((x[0] + x[4]) + (x[2] + x[6])) + ((x[1] + x[5]) + (x[3] + x[7]))
 }
 
+// Bench is what kernels work with and on: the lines of all lanes, and the rows of
+// gliding reads.
+type Bench struct {
+	Line []float32
+	Rows *Rows
+
+	window         [Frames + Taps + 4]floats
+	source, target [Width]uintptr
+}
+
 // Force is what drives each lane in each frame of a control step.
 type Force [Frames]floats
 
@@ -121,10 +126,11 @@ const (
 	Gliding        // the delay as well
 )
 
-// Kernel renders banks.
+// Kernel renders banks and mixes them.
 type Kernel struct {
 	name         string
 	plain, stiff kinds
+	mix          func(b *Bank, m *Mix, from, frames int)
 }
 
 // kinds is by Motion.
@@ -132,17 +138,27 @@ type kinds [Gliding + 1]run
 
 // run computes frames of a step from its frame from on. The lanes are ahead of
 // their At by so many frames.
-type run func(b *Bank, m *Mix, line []float32, force *Force, ahead, from, frames int)
+type run func(b *Bank, w *Bench, force *Force, ahead, from, frames int)
 
 // String names the processor that the kernel is for.
 func (k Kernel) String() string { return k.name }
 
+// Mix adds frames from to until of a control step to m. In each frame, the gains
+// first move on.
+func (k Kernel) Mix(b *Bank, m *Mix, from, until int) {
+	if from < 0 || until > Frames {
+		panic("lanes: frames outside the control step")
+	}
+	if from < until {
+		k.mix(b, m, from, until-from)
+	}
+}
+
 // Render computes frames from to until of a control step, at most Frames, in
-// all lanes of b, on the lines in line, and adds them to m. force may be nil.
-// It leaves At as it is.
+// all lanes of b. force may be nil. It leaves At as it is.
 //
-// It panics when a lane reaches outside line, or reads less than Shortest back.
-func (k Kernel) Render(b *Bank, m *Mix, line []float32, force *Force, motion Motion, from, until int) {
+// It panics when a lane reaches outside the lines, or reads less than Shortest back.
+func (k Kernel) Render(b *Bank, w *Bench, force *Force, motion Motion, from, until int) {
 	if from < 0 || until > Frames {
 		panic("lanes: frames outside the control step")
 	}
@@ -158,13 +174,13 @@ func (k Kernel) Render(b *Bank, m *Mix, line []float32, force *Force, motion Mot
 		if motion == Gliding {
 			end = min(until, (from/int(b.Block)+1)*int(b.Block))
 			if from%int(b.Block) == 0 {
-				b.turn(m.Rows)
+				b.turn(w.Rows)
 			}
 		}
 		for i := range b.At {
-			b.check(i, Taps-1+Shortest, int64(until-start)+Spill, line)
+			b.check(i, Taps-1+Shortest, int64(until-start)+Spill, w.Line)
 		}
-		do(b, m, line, force, from-start, from, end-from)
+		do(b, w, force, from-start, from, end-from)
 		from = end
 	}
 }
@@ -182,15 +198,6 @@ var nothing Force
 // Copy takes a lane of another bank to a lane of b, all but its line's place
 // in the mix of the step.
 func (b *Bank) Copy(to int, other *Bank, from int) {
-	for i := range b.Tap {
-		b.Tap[i][to], b.DTap[i][to] = other.Tap[i][from], other.DTap[i][from]
-	}
-	for i := range b.Slope {
-		b.Slope[i][to] = other.Slope[i][from]
-	}
-	for i := range b.Curve {
-		b.Curve[i][to] = other.Curve[i][from]
-	}
 	d, s := b.singles(), other.singles()
 	for i := range d {
 		d[i][to] = s[i][from]
@@ -204,13 +211,50 @@ func (b *Bank) Copy(to int, other *Bank, from int) {
 
 // Rest silences a lane, which reads and writes the line at the place given.
 func (b *Bank) Rest(lane int, at int64) {
-	var still Bank
-	b.Copy(lane, &still, 0)
-	b.At[lane], b.Back[lane] = at, Taps-1+Shortest
+	for _, x := range b.singles() {
+		x[lane] = 0
+	}
+	for _, x := range b.doubles() {
+		x[lane] = 0
+	}
+	b.At[lane], b.Back[lane], b.Glide[lane] = at, Taps-1+Shortest, Glide{}
 }
 
-func (b *Bank) singles() [11]*floats {
-	return [...]*floats{&b.Level, &b.DLevel, &b.Offset, &b.DOffset, &b.D2Offset, &b.D3Offset, &b.Left, &b.Right, &b.DLeft, &b.DRight, &b.Power}
+// Hush takes a lane's frames of the present step from what is to be mixed.
+func (b *Bank) Hush(lane int) {
+	for f := range b.Out {
+		b.Out[f][lane] = 0
+	}
+}
+
+// Rewind takes the gains of the mix some frames back.
+func (b *Bank) Rewind(frames int) {
+	for lane := range Width {
+		b.Left[lane] -= float32(float32(frames) * b.DLeft[lane])
+		b.Right[lane] -= float32(float32(frames) * b.DRight[lane])
+	}
+}
+
+// plainSingles is how many floats a lane has beside its taps.
+const plainSingles = 11
+
+func (b *Bank) singles() (all [plainSingles + 2*Taps + SlopeTaps + CurveTaps]*floats) {
+	copy(all[:], []*floats{
+		&b.Level, &b.DLevel, &b.Offset, &b.DOffset, &b.D2Offset, &b.D3Offset,
+		&b.Left, &b.Right, &b.DLeft, &b.DRight, &b.Power,
+	})
+	rest := all[plainSingles:]
+	for i := range b.Tap {
+		rest[2*i], rest[2*i+1] = &b.Tap[i], &b.DTap[i]
+	}
+	rest = rest[2*Taps:]
+	for i := range b.Slope {
+		rest[i] = &b.Slope[i]
+	}
+	for i := range b.Curve {
+		rest[SlopeTaps+i] = &b.Curve[i]
+	}
+	return all
 }
 
 // filterDoubles is how many doubles a lane has beside those of its sections.

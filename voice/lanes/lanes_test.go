@@ -61,19 +61,19 @@ func scene(seed uint64, sections int) (*Bank, []float32, *Force) {
 // play renders a scene for some control steps, cut into pieces.
 func play(k Kernel, seed uint64, sections int, motion Motion, cut func() int) (*Bank, *Mix, []float32) {
 	b, line, force := scene(seed, sections)
-	m := &Mix{Rows: rows()}
+	m, w := &Mix{}, &Bench{Line: line, Rows: rows()}
 	for range 4 {
 		m.Clear(0, Frames)
 		for from := 0; from < Frames; {
 			until := min(Frames, from+cut())
-			k.Render(b, m, line, force, motion, from, until)
+			k.Render(b, w, force, motion, from, until)
 			for l := range b.At {
 				b.At[l] += int64(until - from)
 			}
+			k.Mix(b, m, from, until)
 			from = until
 		}
 	}
-	m.Rows, m.window, m.source, m.target = nil, Mix{}.window, Mix{}.source, Mix{}.target
 	return b, m, line
 }
 

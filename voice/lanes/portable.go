@@ -7,12 +7,25 @@ func Portable() Kernel {
 		name:  "portable",
 		plain: kinds{each((*Bank).plain), moving, gliding},
 		stiff: kinds{each((*Bank).stiff), moving, gliding},
+		mix:   mixLanes,
+	}
+}
+
+func mixLanes(b *Bank, m *Mix, from, frames int) {
+	for f := from; f < from+frames; f++ {
+		left, right, out := &m.Left[f], &m.Right[f], &b.Out[f]
+		for l, y := range out {
+			b.Left[l] += b.DLeft[l]
+			b.Right[l] += b.DRight[l]
+			left[l] += float32(y * b.Left[l])
+			right[l] += float32(y * b.Right[l])
+		}
 	}
 }
 
 // Solo renders frames of one lane alone, as Kernel.Render does of all. The taps of a
 // lane that is Moving change by DTap, and it may read the frame before.
-func (b *Bank) Solo(lane int, m *Mix, line []float32, force *Force, motion Motion, from, until int) {
+func (b *Bank) Solo(lane int, w *Bench, force *Force, motion Motion, from, until int) {
 	if force == nil {
 		force = &nothing
 	}
@@ -30,13 +43,13 @@ func (b *Bank) Solo(lane int, m *Mix, line []float32, force *Force, motion Motio
 		if motion == Gliding {
 			end = min(until, (from/int(b.Block)+1)*int(b.Block))
 			if from%int(b.Block) == 0 {
-				b.turnLane(lane, m.Rows)
+				b.turnLane(lane, w.Rows)
 			}
 		}
-		b.check(lane, Taps, int64(until-start), line)
-		p := b.pass(lane, m, line, force, from-start, from, end-from)
+		b.check(lane, Taps, int64(until-start), w.Line)
+		p := b.pass(lane, w, force, from-start, from, end-from)
 		if motion == Gliding && b.Glide[lane].Finger.Firm > 0 {
-			b.touched(p, line, b.At[lane]+int64(from-start), m.Rows)
+			b.touched(p, w, b.At[lane]+int64(from-start))
 		} else {
 			do(b, p)
 		}
@@ -48,28 +61,25 @@ func (b *Bank) Solo(lane int, m *Mix, line []float32, force *Force, motion Motio
 type pass struct {
 	lane           int
 	source, target []float32 // what is read, and where it goes
-	force          []floats
-	left, right    []floats
+	force, out     []floats
 }
 
-func (b *Bank) pass(lane int, m *Mix, line []float32, force *Force, ahead, from, frames int) pass {
+func (b *Bank) pass(lane int, w *Bench, force *Force, ahead, from, frames int) pass {
 	at := b.At[lane] + int64(ahead)
 	first := at - b.Back[lane]
-	until := from + frames
 	return pass{
 		lane:   lane,
-		source: line[first : first+int64(frames)+Taps-1],
-		target: line[at : at+int64(frames)],
-		force:  force[from:until],
-		left:   m.Left[from:until],
-		right:  m.Right[from:until],
+		source: w.Line[first : first+int64(frames)+Taps-1],
+		target: w.Line[at : at+int64(frames)],
+		force:  force[from : from+frames],
+		out:    b.Out[from : from+frames],
 	}
 }
 
 func each(do func(*Bank, pass)) run {
-	return func(b *Bank, m *Mix, line []float32, force *Force, ahead, from, frames int) {
+	return func(b *Bank, w *Bench, force *Force, ahead, from, frames int) {
 		for lane := range Width {
-			do(b, b.pass(lane, m, line, force, ahead, from, frames))
+			do(b, b.pass(lane, w, force, ahead, from, frames))
 		}
 	}
 }
@@ -78,18 +88,15 @@ func each(do func(*Bank, pass)) run {
 func (b *Bank) plain(p pass) {
 	l := p.lane & (Width - 1)
 	h := b.taps(l)
-	c1, c2, v1, v2 := b.C1[l], b.C2[l], b.V1[l], b.V2[l]
-	left, right, power := b.Left[l], b.Right[l], b.Power[l]
+	c1, c2, v1, v2, power := b.C1[l], b.C2[l], b.V1[l], b.V2[l], b.Power[l]
 	n := len(p.target)
-	source, target, force := p.source[:n+Taps-1], p.target, p.force[:n]
-	lefts, rights := p.left[:n], p.right[:n]
+	source, target, force, out := p.source[:n+Taps-1], p.target, p.force[:n], p.out[:n]
 	for i := range target {
 		x := float64(read(source[i:i+Taps:i+Taps], &h)) - float64(c2*v2)
 		v2, v1 = v1, x-float64(c1*v1)
 		y := float32(v1) + force[i][l]
 		target[i] = y
-		lefts[i][l] += float32(y * left)
-		rights[i][l] += float32(y * right)
+		out[i][l] = y
 		power += float32(y * y)
 	}
 	b.V1[l], b.V2[l], b.Power[l] = v1, v2, power
@@ -190,13 +197,11 @@ func (b *Bank) lossy(l int, x float32) float64 {
 	return v
 }
 
-// move takes a lane's level, filters and gains a frame on.
+// move takes a lane's level and filters a frame on.
 func (b *Bank) move(l int) {
 	b.Level[l] += b.DLevel[l]
 	b.C1[l] += b.DC1[l]
 	b.C2[l] += b.DC2[l]
-	b.Left[l] += b.DLeft[l]
-	b.Right[l] += b.DRight[l]
 	if b.Sections == 0 {
 		return
 	}
@@ -243,7 +248,6 @@ func (p *pass) end(b *Bank, i int, v float64) {
 	l := p.lane & (Width - 1)
 	y := float32(v) + p.force[i][l]
 	p.target[i] = y
-	p.left[i][l] += float32(y * b.Left[l])
-	p.right[i][l] += float32(y * b.Right[l])
+	p.out[i][l] = y
 	b.Power[l] += float32(y * y)
 }

@@ -4,7 +4,7 @@ import "fmt"
 
 // avx2 prints for amd64 with AVX2: eight lanes in one pass.
 //
-//	BX bank, SI Mix, R8 mix, R9 force, R10 window, R11 section, R12 node,
+//	BX bank, SI Bench, R8 out or mix, R9 force, R10 window, R11 section, R12 node,
 //	R13 sections left, CX frames left, DX bytes gone in the lines, AX scratch
 type avx2 struct{ *printer }
 
@@ -12,7 +12,7 @@ func (avx2) goarch() string { return "amd64" }
 func (avx2) width() int     { return 32 }
 
 var avx2Pointers = map[pointer]string{
-	bank: "BX", bankD: "BX", mix: "R8", force: "R9", win: "R10", sect: "R11", node: "R12",
+	bank: "BX", bankD: "BX", outs: "R8", mix: "SI", force: "R9", win: "R10", sect: "R11", node: "R12",
 }
 
 func (a avx2) at(m mem) string {
@@ -23,16 +23,28 @@ func (a avx2) at(m mem) string {
 }
 
 func (a avx2) begin(name string) {
-	fmt.Fprintf(a.text(), "\n// func %s(b *Bank, m *Mix, force *floats, from, frames int)\n", name)
+	fmt.Fprintf(a.text(), "\n// func %s(b *Bank, w *Bench, force *floats, from, frames int)\n", name)
 	fmt.Fprintf(a.text(), "TEXT ·%s(SB), NOSPLIT, $0-40\n", name)
 	a.put("MOVQ b+0(FP), BX")
-	a.put("MOVQ m+8(FP), SI")
+	a.put("MOVQ w+8(FP), SI")
 	a.put("MOVQ force+16(FP), R9")
 	a.put("MOVQ from+24(FP), R8")
 	a.put("MOVQ frames+32(FP), CX")
 	a.put("SHLQ $5, R8")
-	a.put("ADDQ SI, R8")
-	a.put("LEAQ Mix_window(SI), R10")
+	a.put("LEAQ Bank_Out(BX)(R8*1), R8")
+	a.put("LEAQ Bench_window(SI), R10")
+}
+
+func (a avx2) beginMix(name string) {
+	fmt.Fprintf(a.text(), "\n// func %s(b *Bank, m *Mix, from, frames int)\n", name)
+	fmt.Fprintf(a.text(), "TEXT ·%s(SB), NOSPLIT, $0-32\n", name)
+	a.put("MOVQ b+0(FP), BX")
+	a.put("MOVQ m+8(FP), SI")
+	a.put("MOVQ from+16(FP), R8")
+	a.put("MOVQ frames+24(FP), CX")
+	a.put("SHLQ $5, R8")
+	a.put("ADDQ R8, SI")
+	a.put("LEAQ Bank_Out(BX)(R8*1), R8")
 }
 
 func (a avx2) end() {
@@ -51,6 +63,8 @@ func (a avx2) jumpIfEqual(name string, frames int) {
 	a.put("CMPQ CX, $%d", frames)
 	a.put("JEQ %s", name)
 }
+
+func (a avx2) jumpIfMore(name string) { a.put("JNZ %s", name) }
 
 func (a avx2) rewind(quads int)  { a.put("MOVQ $%d, DX", -16*quads) }
 func (a avx2) advance(group int) { a.put("ADDQ $%d, DX", 4*group) }
@@ -105,8 +119,8 @@ func (a avx2) narrow(d, s, scratch reg, h half) {
 // loadQuad loads four samples of each line, lanes 0 to 3 below lanes 4 to 7.
 func (a avx2) loadQuad(d, scratch [4]reg) {
 	for i, d := range d {
-		a.put("MOVQ (Mix_source+%d)(SI), AX", 8*i)
-		a.put("MOVQ (Mix_source+%d)(SI), DI", 8*(i+4))
+		a.put("MOVQ (Bench_source+%d)(SI), AX", 8*i)
+		a.put("MOVQ (Bench_source+%d)(SI), DI", 8*(i+4))
 		a.put("VMOVUPS (AX)(DX*1), X%d", d)
 		a.put("VINSERTF128 $1, (DI)(DX*1), Y%d, Y%d", d, d)
 	}
@@ -116,8 +130,8 @@ func (a avx2) loadQuad(d, scratch [4]reg) {
 func (a avx2) storeQuad(s, scratch [4]reg) {
 	a.transpose(s, scratch)
 	for i, s := range s {
-		a.put("MOVQ (Mix_target+%d)(SI), AX", 8*i)
-		a.put("MOVQ (Mix_target+%d)(SI), DI", 8*(i+4))
+		a.put("MOVQ (Bench_target+%d)(SI), AX", 8*i)
+		a.put("MOVQ (Bench_target+%d)(SI), DI", 8*(i+4))
 		a.put("VMOVUPS X%d, (AX)(DX*1)", s)
 		a.put("VEXTRACTF128 $1, Y%d, (DI)(DX*1)", s)
 	}

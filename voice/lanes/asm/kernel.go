@@ -14,6 +14,7 @@ func generate(m machine) string {
 	for _, k := range []kernel{{m, false, false, 0}, {m, true, false, 0}, {m, false, true, 0}, {m, true, true, 0}} {
 		k.write()
 	}
+	(&kernel{machine: m}).writeMix()
 	return m.text().String()
 }
 
@@ -66,14 +67,11 @@ func (k *kernel) write() {
 		}
 		k.advance(4)
 	}
-	if !k.moving {
-		k.pipeline()
-	}
 	k.label("groups")
 	k.jumpIfLess("rest", 4)
 	k.group(4)
 	k.advance(4)
-	for _, p := range []pointer{mix, force, win} {
+	for _, p := range []pointer{outs, force, win} {
 		k.move(p, 4*floats)
 	}
 	k.count(4)
@@ -96,38 +94,15 @@ func (k *kernel) remainder(n int) {
 	k.jump("done")
 }
 
-// pipeline computes all whole groups of a still string. A group is mixed after
-// the next one has been read: neither then waits for the other.
-func (k *kernel) pipeline() {
-	k.jumpIfLess("groups", 4)
-	k.read(4)
-	k.advanceGroup()
-	k.label("more")
-	k.jumpIfLess("last", 4)
-	k.read(4)
-	k.mixIn(4)
-	k.move(mix, 4*floats)
-	k.advanceGroup()
-	k.jump("more")
-	k.label("last")
-	k.mixIn(4)
-	k.move(mix, 4*floats)
-}
-
-func (k *kernel) advanceGroup() {
-	k.finish(4)
-	k.advance(4)
-	k.move(force, 4*floats)
-	k.move(win, 4*floats)
-	k.count(4)
-}
-
 // group computes n frames, one to four. The lines are read before any of them
 // is written.
 func (k *kernel) group(n int) {
 	k.read(n)
-	k.finish(n)
-	k.mixIn(n)
+	for _, h := range []half{low, high} {
+		k.filter(n, h)
+	}
+	k.sound(n)
+	k.storeQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7})
 }
 
 // read loads the lines' next samples and sums the taps' products, the oldest
@@ -174,19 +149,6 @@ func (k *kernel) level(n int) {
 		k.mulF(reg(f), reg(f), level)
 	}
 	k.store(mem{bank, "Bank_Level", 0}, level)
-}
-
-// finish takes what was read of n frames through the filters, adds the force, and
-// writes the lines. It leaves the frames in registers 12 on.
-func (k *kernel) finish(n int) {
-	for _, h := range []half{low, high} {
-		k.filter(n, h)
-	}
-	for f := range n {
-		k.addFm(reg(f), reg(f), mem{base: force, off: f * floats})
-		k.copy(reg(12+f), reg(f))
-	}
-	k.storeQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7})
 }
 
 // double is a field of the bank for one half of the lanes.
@@ -333,33 +295,44 @@ func (k *kernel) sections(x []reg, h half) {
 	}
 }
 
-// mixIn adds n frames, in registers 12 on, to the mix and to the power.
-func (k *kernel) mixIn(n int) {
-	const power, scratch = 7, 8
-	names := [...]string{"Left", "Right"}
-	for i, name := range names {
-		k.load(reg(4+i), mem{bank, "Bank_" + name, 0})
-	}
+// sound adds the force to n frames, in registers 0 to n-1, and them to the power.
+func (k *kernel) sound(n int) {
+	const power, square = 4, 5
 	k.load(power, mem{bank, "Bank_Power", 0})
 	for f := range n {
-		y := reg(12 + f)
-		for i, name := range names {
-			if k.moving {
-				k.addFm(reg(4+i), reg(4+i), mem{bank, "Bank_D" + name, 0})
-			}
-			at := mem{mix, "Mix_" + name, f * floats}
-			part := reg(scratch + i)
-			k.mulF(part, y, reg(4+i))
-			k.addFm(part, part, at)
-			k.store(at, part)
-		}
-		k.mulF(scratch+2, y, y)
-		k.addF(power, power, scratch+2)
+		y := reg(f)
+		k.addFm(y, y, mem{base: force, off: f * floats})
+		k.store(mem{base: outs, off: f * floats}, y)
+		k.mulF(square, y, y)
+		k.addF(power, power, square)
 	}
 	k.store(mem{bank, "Bank_Power", 0}, power)
-	if k.moving {
-		for i, name := range names {
-			k.store(mem{bank, "Bank_" + name, 0}, reg(4+i))
-		}
+}
+
+// writeMix prints the mix of a bank.
+func (k *kernel) writeMix() {
+	const y, part = 4, 5
+	names := [...]string{"Left", "Right"}
+	k.beginMix("mix")
+	for i, name := range names {
+		k.load(reg(i), mem{bank, "Bank_" + name, 0})
+		k.load(reg(2+i), mem{bank, "Bank_D" + name, 0})
 	}
+	k.label("frames")
+	k.load(y, mem{base: outs})
+	for i, name := range names {
+		gain, at := reg(i), mem{mix, "Mix_" + name, 0}
+		k.addF(gain, gain, reg(2+i))
+		k.mulF(part, y, gain)
+		k.addFm(part, part, at)
+		k.store(at, part)
+	}
+	k.move(outs, floats)
+	k.move(mix, floats)
+	k.count(1)
+	k.jumpIfMore("frames")
+	for i, name := range names {
+		k.store(mem{bank, "Bank_" + name, 0}, reg(i))
+	}
+	k.end()
 }

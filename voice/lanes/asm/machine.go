@@ -25,9 +25,10 @@ type pointer int
 const (
 	bank  pointer = iota // the Bank, for floats
 	bankD                // the Bank, for doubles
+	outs                 // the frame in Bank.Out
 	mix                  // the frame in Mix.Left
 	force                // the frame in the Force
-	win                  // the group's first frame in Mix.window
+	win                  // the group's first frame in Bench.window
 	sect                 // the Section
 	node                 // the Node before it
 )
@@ -47,16 +48,18 @@ type machine interface {
 	width() int // bytes of a vector
 
 	begin(name string) // takes the arguments and begins a pass
-	end()              // ends the pass and returns
+	beginMix(name string)
+	end() // ends the pass and returns
 	text() *strings.Builder
 
 	label(name string)
 	jump(name string)
 	jumpIfLess(name string, frames int) // as are left
 	jumpIfEqual(name string, frames int)
-	rewind(quads int)  // the lines, to so many quads before the first
-	advance(group int) // to the next quad in the lines
-	count(frames int)  // as done
+	jumpIfMore(name string) // after count
+	rewind(quads int)       // the lines, to so many quads before the first
+	advance(group int)      // to the next quad in the lines
+	count(frames int)       // as done
 	point(to pointer, at mem)
 	move(p pointer, bytes int)
 	countSections()
