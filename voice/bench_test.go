@@ -1,89 +1,93 @@
 package voice
 
-import "testing"
+import (
+	"fmt"
+	"math"
+	"testing"
+)
 
-// bare is the control: the same read and loss as a still string's, and nothing else.
-type bare struct {
-	line [1 << 14]float32
-	w    int
-	h    [taps]float32
-	c, v float32
+const (
+	benchStrings = 128
+	benchPeriod  = 64
+)
+
+// bed is a pool of sounding voices of a spec, on keys evenly spread.
+func bed(m *Maker, spec Spec, voices int) *Pool {
+	p := m.NewPool(voices, 8)
+	designs := map[int]*Design{}
+	for i := range voices {
+		key := 28 + i%64
+		if designs[key] == nil {
+			spec.Frequency = hz(key)
+			designs[key] = m.Design(spec)
+		}
+		v := p.Voice(i)
+		v.Strike(designs[key], 127, uint64(i))
+		v.Mix(Gain{0.5, 0.4}, Gain{0.5, 0.4})
+	}
+	for range 48000 / Grid {
+		p.Step()
+		p.Advance(Grid)
+	}
+	return p
 }
 
-func (b *bare) render(out []float32, length int) {
-	if b.w+len(out) > len(b.line) {
-		copy(b.line[:], b.line[b.w-1024:b.w])
-		b.w = 1024
-	}
-	src := b.line[b.w-length-taps+1+center:]
-	dst := b.line[b.w : b.w+len(out)]
-	for i := range out {
-		s := src[i : i+taps]
-		x := float32(0)
-		for t := range b.h {
-			x += b.h[t] * s[taps-1-t]
-		}
-		b.v = x - b.c*b.v
-		dst[i], out[i] = b.v, b.v
-	}
-	b.w += len(out)
-}
-
-// BenchmarkString reports ns per string-sample: of the control in the same
-// run, of a still string, of one that glides, and of what each refinement costs.
-func BenchmarkString(b *testing.B) {
-	const voices, frames = 64, 64
-	m := NewMaker(48000)
-	out := make([]float32, frames)
-	perSample := func(b *testing.B) {
-		b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N)/voices/frames, "ns/string-sample")
-	}
-	b.Run("control", func(b *testing.B) {
-		all := make([]bare, voices)
-		for i := range all {
-			all[i].h[center], all[i].c, all[i].w, all[i].line[900] = 0.99, -0.1, 1024, 1
-		}
-		for b.Loop() {
-			for i := range all {
-				all[i].render(out[:Grid], 60+2*i)
-				all[i].render(out[Grid:], 60+2*i)
+// measure reports ns per string-sample of a pool in periods of 64 frames; loops is how many
+// delay loops a voice has, each of which counts as a string. act comes before each control step.
+func (p *Pool) measure(b *testing.B, loops int, act func(p *Pool, step int)) {
+	var left, right [Grid]float32
+	step := 0
+	for b.Loop() {
+		for range benchPeriod / Grid {
+			if act != nil {
+				act(p, step)
 			}
+			step++
+			p.Step()
+			p.Advance(Grid)
+			p.Sum(left[:], right[:], 0)
 		}
-		perSample(b)
+	}
+	b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*len(p.voices)*loops*benchPeriod), "ns/string-sample")
+	b.ReportMetric(0, "ns/op")
+}
+
+// lasting is a plain string that rings on for as long as a benchmark runs.
+func lasting() Spec { return plain(0, 120, 0.8) }
+
+// full is a course of two in two polarizations, with four sections of stiffness.
+func full() Spec {
+	s := lasting()
+	s.Inharmonicity, s.SecondMix, s.SecondCents, s.Strings, s.CourseCents = 6e-4, 0.3, 1, 2, 4
+	return s
+}
+
+// BenchmarkPlainString reports ns per string-sample of 128 still strings without refinements.
+func BenchmarkPlainString(b *testing.B) {
+	bed(NewMaker(48000), lasting(), benchStrings).measure(b, 1, nil)
+}
+
+// BenchmarkBendingString is BenchmarkPlainString with a vibrato of 50 cents on every string.
+func BenchmarkBendingString(b *testing.B) {
+	bed(NewMaker(48000), lasting(), benchStrings).measure(b, 1, func(p *Pool, step int) {
+		cents := 50 * math.Sin(2*math.Pi*5.5*Grid/48000*float64(step))
+		for i := range p.voices {
+			p.voices[i].Tune(cents)
+		}
 	})
-	stiff, split := plain(0, 30, 0.8), plain(0, 30, 0.8)
-	stiff.Inharmonicity, split.SecondMix = 3e-4, 0.3
-	for _, c := range []struct {
-		name string
-		spec Spec
-		tune func(v *Voice, step int)
-	}{
-		{"still", plain(0, 30, 0.8), nil},
-		{"vibrato", plain(0, 30, 0.8), func(v *Voice, step int) { v.Tune(float64(step%64) - 32) }},
-		{"stiff", stiff, nil},
-		{"two planes", split, nil},
-	} {
-		b.Run(c.name, func(b *testing.B) {
-			all := make([]*Voice, voices)
-			for i := range all {
-				spec := c.spec
-				spec.Frequency = hz(36 + i*3/4)
-				all[i] = m.NewVoice(8)
-				all[i].Strike(m.Design(spec), 127, uint64(i))
-				all[i].Render(make([]float32, 48000), nil)
-			}
-			step := 0
-			for b.Loop() {
-				for _, v := range all {
-					if c.tune != nil {
-						c.tune(v, step)
-					}
-					v.Render(out, nil)
-				}
-				step++
-			}
-			perSample(b)
-		})
+}
+
+// BenchmarkFullString reports ns per string-sample of 128 voices of four loops each.
+func BenchmarkFullString(b *testing.B) {
+	bed(NewMaker(48000), full(), benchStrings).measure(b, 4, nil)
+}
+
+// BenchmarkStrings reports how the cost of plain strings grows with their number, low
+// ones at last, whose lines are long.
+func BenchmarkStrings(b *testing.B) {
+	m := NewMaker(48000)
+	for _, n := range []int{1, 8, 32, 64, 128, 256, 512} {
+		b.Run(fmt.Sprint(n), func(b *testing.B) { bed(m, lasting(), n).measure(b, 1, nil) })
 	}
 }
 

@@ -212,25 +212,22 @@ func (l *loop) stand() {
 		l.level = float32(l.safeGain() * l.damped.perTrip(g.pitch))
 	}
 	for i := range h {
-		b.Tap[i][lane], b.DTap[i][lane] = l.level*float32(h[i]), 0
+		h[i] *= float64(l.level)
 	}
-	l.standTaps()
+	l.setTaps(&h)
 	b.Level[lane], b.DLevel[lane] = 1, 0
 	l.motion = still
 	l.house()
 }
 
-// standTaps leaves the taps for the whole part of the delay as they are.
-func (l *loop) standTaps() {
+// setTaps gives the loop taps that stand, for the whole part of its delay.
+func (l *loop) setTaps(h *[taps]float64) {
 	b, lane := &l.bank.Bank, l.lane
-	for i := range b.Slope {
-		b.Slope[i][lane] = 0
+	var f [taps]float32
+	for i := range f {
+		f[i], b.DTap[i][lane] = float32(h[i]), 0
 	}
-	for i := range b.Curve {
-		b.Curve[i][lane] = 0
-	}
-	b.Offset[lane], b.DOffset[lane], b.D2Offset[lane], b.D3Offset[lane] = 0, 0, 0, 0
-	b.Glide[lane] = lanes.Glide{}
+	b.SetTaps(lane, &f)
 	b.Back[lane] = int64(l.length + taps - 1 - center)
 	l.glide.speed = 0
 }
@@ -245,10 +242,7 @@ func (l *loop) unlevel() {
 	var h [taps]float64
 	l.length = int(g.s[2])
 	l.ip().at(g.s[2]-float64(l.length), &h)
-	for i := range h {
-		b.Tap[i][lane], b.DTap[i][lane] = float32(h[i]), 0
-	}
-	l.standTaps()
+	l.setTaps(&h)
 }
 
 // levelNow is the level of the read.

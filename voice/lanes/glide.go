@@ -1,5 +1,7 @@
 package lanes
 
+import "math/bits"
+
 const (
 	// RowsInSample is how many rows of taps there are for a sample of delay.
 	RowsInSample = 128
@@ -7,6 +9,7 @@ const (
 
 	SlopeTaps = 8 // taps of a row's slope, in the middle of the read
 	CurveTaps = 6
+	curveRoom = 8
 
 	firstSlope = (Taps - SlopeTaps) / 2 // the newest sample's tap
 	firstCurve = (Taps - CurveTaps) / 2
@@ -20,7 +23,7 @@ const (
 type Row struct {
 	Tap   [Taps]float32
 	Slope [SlopeTaps]float32
-	Curve [CurveTaps]float32
+	Curve [curveRoom]float32 // the last two are 0
 }
 
 // Rows are the parts of a sample, from the least delay to the greatest.
@@ -45,39 +48,51 @@ type Finger struct {
 	Floor int64
 }
 
-// turn gives each gliding lane the row of taps that is nearest to its delay in the
-// middle of the block.
-func (b *Bank) turn(rows *Rows) {
-	for lane := range b.Glide {
-		b.turnLane(lane, rows)
+// SetTaps gives a lane taps that stand.
+func (b *Bank) SetTaps(lane int, h *[Taps]float32) {
+	b.own[lane] = Row{Tap: *h}
+	b.take(lane, &b.own[lane])
+	b.Offset[lane], b.DOffset[lane], b.D2Offset[lane], b.D3Offset[lane] = 0, 0, 0, 0
+	b.Glide[lane] = Glide{}
+}
+
+func (b *Bank) take(lane int, r *Row) {
+	for i, h := range r.Tap {
+		b.Tap[i][lane] = h
+	}
+	for i, h := range r.Slope {
+		b.Slope[i][lane] = h
+	}
+	for i, h := range r.Curve {
+		b.Curve[i][lane] = h
 	}
 }
 
-func (b *Bank) turnLane(lane int, rows *Rows) {
+// turnLanes gives each gliding lane the row of taps that is nearest to its delay in the
+// middle of the block.
+func turnLanes(b *Bank, w *Bench) {
+	for lane := range b.Glide {
+		if b.Glide[lane].On {
+			b.take(lane, b.turn(lane, w.Rows))
+		}
+	}
+}
+
+// turn begins a block of a gliding lane, and returns the row of taps that it is to have.
+func (b *Bank) turn(lane int, rows *Rows) *Row {
 	const shift = 32 - rowBits
 	g := &b.Glide[lane]
-	if !g.On {
-		return
-	}
-	middle := g.Delay + (g.D1-g.D1/b.Block)>>1 // of the first and the last frame
-	center := middle&^(1<<shift-1) + 1<<(shift-1)
-	g.center = center
-	b.Offset[lane] = float32(int32(g.Delay-center)) / (1 << 32)
+	middle := g.Delay + (g.D1-g.D1>>b.blockBits())>>1 // of the first and the last frame
+	g.center = middle&^(1<<shift-1) + 1<<(shift-1)
+	b.Offset[lane] = float32(int32(g.Delay-g.center)) / (1 << 32)
 	b.Back[lane] = middle>>32 + Taps - 1 - Newest
-	row := &rows[uint32(middle)>>shift]
-	for i, h := range row.Tap {
-		b.Tap[i][lane] = h
-	}
-	for i, h := range row.Slope {
-		b.Slope[i][lane] = h
-	}
-	for i, h := range row.Curve {
-		b.Curve[i][lane] = h
-	}
 	g.Delay += g.D1
 	g.D1 += g.D2
 	g.D2 += g.D3
+	return &rows[uint32(middle)>>shift]
 }
+
+func (b *Bank) blockBits() int { return bits.TrailingZeros64(uint64(b.Block)) }
 
 // touched renders a gliding lane with a finger on it.
 func (b *Bank) touched(p pass, w *Bench, at int64) {
@@ -109,7 +124,7 @@ func (r *Rows) read(line []float32, at, delay int64) float32 {
 	first := at - delay>>32 - (Taps - 1 - Newest)
 	s := line[first : first+Taps]
 	x := float32(0)
-	for i, k := range row.Curve {
+	for i, k := range row.Curve[:CurveTaps] {
 		x += float32(k * s[Taps-1-firstCurve-i])
 	}
 	x *= offset

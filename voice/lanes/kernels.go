@@ -25,14 +25,24 @@ func stillStiff(b *Bank, w *Bench, force *floats, from, frames int)
 func movingStiff(b *Bank, w *Bench, force *floats, from, frames int)
 
 //go:noescape
+func glidingPlain(b *Bank, w *Bench, force *floats, from, frames int)
+
+//go:noescape
+func glidingStiff(b *Bank, w *Bench, force *floats, from, frames int)
+
+//go:noescape
+func turnRows(b *Bank, w *Bench)
+
+//go:noescape
 func mix(b *Bank, m *Mix, from, frames int)
 
 // vector is the kernel of a vector unit.
 func vector(name string) Kernel {
 	return Kernel{
 		name:  name,
-		plain: kinds{onLines(stillPlain), onLines(movingPlain), each((*Bank).gliding)},
-		stiff: kinds{onLines(stillStiff), onLines(movingStiff), each((*Bank).gliding)},
+		plain: kinds{onLines(stillPlain), onLines(movingPlain), onLines(glidingPlain)},
+		stiff: kinds{onLines(stillStiff), onLines(movingStiff), onLines(glidingStiff)},
+		turn:  turn,
 		mix:   mix,
 	}
 }
@@ -49,4 +59,17 @@ func onLines(kernel func(b *Bank, w *Bench, force *floats, from, frames int)) ru
 		kernel(b, w, &force[from], from, frames)
 		runtime.KeepAlive(w.Line)
 	}
+}
+
+// turn begins a block of a glide.
+func turn(b *Bank, w *Bench) {
+	for lane := range b.Glide {
+		row := &b.own[lane]
+		if b.Glide[lane].On {
+			row = b.turn(lane, w.Rows)
+		}
+		w.row[lane] = uintptr(unsafe.Pointer(row))
+	}
+	turnRows(b, w)
+	runtime.KeepAlive(w.Rows)
 }

@@ -54,7 +54,7 @@ type (
 type Bank struct {
 	Tap                                 [Taps]floats // the newest sample's first
 	Slope                               [SlopeTaps]floats
-	Curve                               [CurveTaps]floats
+	Curve                               [curveRoom]floats
 	Level, DLevel                       floats
 	Offset, DOffset, D2Offset, D3Offset floats         // samples, and by differences of a frame
 	Left, Right, DLeft, DRight          floats         // gains of the mix
@@ -73,7 +73,8 @@ type Bank struct {
 
 	// What only Go code knows.
 	Glide [Width]Glide
-	Block int64        // frames for which a glide's taps stand; divides Frames
+	Block int64        // frames for which a glide's taps stand: a power of two, up to Frames
+	own   [Width]Row   // taps of lanes that do not glide
 	DTap  [Taps]floats // of a lane that ramps by itself
 }
 
@@ -110,8 +111,9 @@ type Bench struct {
 	Line []float32
 	Rows *Rows
 
-	window         [Frames + Taps + 4]floats
-	source, target [Width]uintptr
+	window              [Frames + Taps + 4]floats
+	offsets             [4]floats
+	source, target, row [Width]uintptr
 }
 
 // Force is what drives each lane in each frame of a control step.
@@ -130,6 +132,7 @@ const (
 type Kernel struct {
 	name         string
 	plain, stiff kinds
+	turn         func(b *Bank, w *Bench) // begins a block of a glide
 	mix          func(b *Bank, m *Mix, from, frames int)
 }
 
@@ -174,7 +177,7 @@ func (k Kernel) Render(b *Bank, w *Bench, force *Force, motion Motion, from, unt
 		if motion == Gliding {
 			end = min(until, (from/int(b.Block)+1)*int(b.Block))
 			if from%int(b.Block) == 0 {
-				b.turn(w.Rows)
+				k.turn(b, w)
 			}
 		}
 		for i := range b.At {
@@ -206,7 +209,7 @@ func (b *Bank) Copy(to int, other *Bank, from int) {
 	for i := range dd {
 		dd[i][to] = ss[i][from]
 	}
-	b.At[to], b.Back[to], b.Glide[to] = other.At[from], other.Back[from], other.Glide[from]
+	b.At[to], b.Back[to], b.Glide[to], b.own[to] = other.At[from], other.Back[from], other.Glide[from], other.own[from]
 }
 
 // Rest silences a lane, which reads and writes the line at the place given.
@@ -217,7 +220,7 @@ func (b *Bank) Rest(lane int, at int64) {
 	for _, x := range b.doubles() {
 		x[lane] = 0
 	}
-	b.At[lane], b.Back[lane], b.Glide[lane] = at, Taps-1+Shortest, Glide{}
+	b.At[lane], b.Back[lane], b.Glide[lane], b.own[lane] = at, Taps-1+Shortest, Glide{}, Row{}
 }
 
 // Hush takes a lane's frames of the present step from what is to be mixed.
@@ -238,7 +241,7 @@ func (b *Bank) Rewind(frames int) {
 // plainSingles is how many floats a lane has beside its taps.
 const plainSingles = 11
 
-func (b *Bank) singles() (all [plainSingles + 2*Taps + SlopeTaps + CurveTaps]*floats) {
+func (b *Bank) singles() (all [plainSingles + 2*Taps + SlopeTaps + curveRoom]*floats) {
 	copy(all[:], []*floats{
 		&b.Level, &b.DLevel, &b.Offset, &b.DOffset, &b.D2Offset, &b.D3Offset,
 		&b.Left, &b.Right, &b.DLeft, &b.DRight, &b.Power,

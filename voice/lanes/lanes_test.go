@@ -22,9 +22,11 @@ func scene(seed uint64, sections int) (*Bank, []float32, *Force) {
 			b.Back[l] = int64(Taps - 1 + Shortest + r.IntN(6))
 		}
 		b.At[l] = int64(slot*l + 400 + r.IntN(32))
-		for t := range Taps {
-			b.Tap[t][l] = float32(small(0.2))
+		var h [Taps]float32
+		for t := range h {
+			h[t] = float32(small(0.2))
 		}
+		b.SetTaps(l, &h)
 		b.Level[l], b.DLevel[l] = float32(1+small(0.1)), float32(small(1e-3))
 		b.C1[l], b.C2[l] = small(0.4), small(0.3)
 		b.DC1[l], b.DC2[l] = small(1e-3), small(1e-3)
@@ -122,12 +124,6 @@ func (b *Bank) glide(l int, r *rand.Rand) {
 	slow := func(scale float64) int64 { return int64(scale * (2*r.Float64() - 1) * (1 << 32)) }
 	b.Glide[l] = Glide{On: true, Delay: (b.Back[l]+20)<<32 + slow(1), D1: slow(0.1), D2: slow(1e-3), D3: slow(1e-5)}
 	b.DOffset[l], b.D2Offset[l], b.D3Offset[l] = float32(r.Float64()*0.02), 1e-4, 1e-6
-	for t := range SlopeTaps {
-		b.Slope[t][l] = r.Float32()
-	}
-	for t := range CurveTaps {
-		b.Curve[t][l] = r.Float32()
-	}
 }
 
 // rows are of no use but to be told apart.
@@ -141,7 +137,7 @@ func rows() *Rows {
 		for j := range t[i].Slope {
 			t[i].Slope[j] = 0.2 * (2*r.Float32() - 1)
 		}
-		for j := range t[i].Curve {
+		for j := range CurveTaps {
 			t[i].Curve[j] = 0.2 * (2*r.Float32() - 1)
 		}
 	}

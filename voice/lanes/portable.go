@@ -7,6 +7,7 @@ func Portable() Kernel {
 		name:  "portable",
 		plain: kinds{each((*Bank).plain), moving, gliding},
 		stiff: kinds{each((*Bank).stiff), moving, gliding},
+		turn:  turnLanes,
 		mix:   mixLanes,
 	}
 }
@@ -43,7 +44,7 @@ func (b *Bank) Solo(lane int, w *Bench, force *Force, motion Motion, from, until
 		if motion == Gliding {
 			end = min(until, (from/int(b.Block)+1)*int(b.Block))
 			if from%int(b.Block) == 0 {
-				b.turnLane(lane, w.Rows)
+				b.take(lane, b.turn(lane, w.Rows))
 			}
 		}
 		b.check(lane, Taps, int64(until-start), w.Line)

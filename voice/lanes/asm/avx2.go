@@ -12,7 +12,7 @@ func (avx2) goarch() string { return "amd64" }
 func (avx2) width() int     { return 32 }
 
 var avx2Pointers = map[pointer]string{
-	bank: "BX", bankD: "BX", outs: "R8", mix: "SI", force: "R9", win: "R10", sect: "R11", node: "R12",
+	bank: "BX", bankD: "BX", outs: "R8", mix: "SI", benchF: "SI", force: "R9", win: "R10", sect: "R11", node: "R12",
 }
 
 func (a avx2) at(m mem) string {
@@ -45,6 +45,13 @@ func (a avx2) beginMix(name string) {
 	a.put("SHLQ $5, R8")
 	a.put("ADDQ R8, SI")
 	a.put("LEAQ Bank_Out(BX)(R8*1), R8")
+}
+
+func (a avx2) beginTurn(name string) {
+	fmt.Fprintf(a.text(), "\n// func %s(b *Bank, w *Bench)\n", name)
+	fmt.Fprintf(a.text(), "TEXT ·%s(SB), NOSPLIT, $0-16\n", name)
+	a.put("MOVQ b+0(FP), BX")
+	a.put("MOVQ w+8(FP), SI")
 }
 
 func (a avx2) end() {
@@ -92,6 +99,7 @@ func (a avx2) threeM(op string, d, x reg, m mem) { a.put("%s %s, Y%d, Y%d", op, 
 func (a avx2) mulF(d, x, y reg)      { a.three("VMULPS", d, x, y) }
 func (a avx2) addF(d, x, y reg)      { a.three("VADDPS", d, x, y) }
 func (a avx2) addFm(d, x reg, m mem) { a.threeM("VADDPS", d, x, m) }
+func (a avx2) mulFm(d, x reg, m mem) { a.threeM("VMULPS", d, x, m) }
 func (a avx2) mulD(d, x, y reg)      { a.three("VMULPD", d, x, y) }
 func (a avx2) addD(d, x, y reg)      { a.three("VADDPD", d, x, y) }
 func (a avx2) subD(d, x, y reg)      { a.three("VSUBPD", d, x, y) }
@@ -117,10 +125,10 @@ func (a avx2) narrow(d, s, scratch reg, h half) {
 }
 
 // loadQuad loads four samples of each line, lanes 0 to 3 below lanes 4 to 7.
-func (a avx2) loadQuad(d, scratch [4]reg) {
+func (a avx2) loadQuad(d, scratch [4]reg, table string) {
 	for i, d := range d {
-		a.put("MOVQ (Bench_source+%d)(SI), AX", 8*i)
-		a.put("MOVQ (Bench_source+%d)(SI), DI", 8*(i+4))
+		a.put("MOVQ (Bench_%s+%d)(SI), AX", table, 8*i)
+		a.put("MOVQ (Bench_%s+%d)(SI), DI", table, 8*(i+4))
 		a.put("VMOVUPS (AX)(DX*1), X%d", d)
 		a.put("VINSERTF128 $1, (DI)(DX*1), Y%d, Y%d", d, d)
 	}

@@ -5,15 +5,18 @@ import "fmt"
 // kernel writes one kernel: a string of one kind, still or moving.
 type kernel struct {
 	machine
-	moving, stiff bool
-	loops         int // labels so far
+	moving, gliding, stiff bool
+	loops                  int // labels so far
 }
 
 func generate(m machine) string {
 	fmt.Fprintf(m.text(), header, m.goarch())
-	for _, k := range []kernel{{m, false, false, 0}, {m, true, false, 0}, {m, false, true, 0}, {m, true, true, 0}} {
-		k.write()
+	for _, stiff := range []bool{false, true} {
+		(&kernel{machine: m, stiff: stiff}).write()
+		(&kernel{machine: m, stiff: stiff, moving: true}).write()
+		(&kernel{machine: m, stiff: stiff, moving: true, gliding: true}).write()
 	}
+	(&kernel{machine: m}).writeTurn()
 	(&kernel{machine: m}).writeMix()
 	return m.text().String()
 }
@@ -37,14 +40,19 @@ GLOBL bias<>(SB), RODATA|NOPTR, $32
 `
 
 const (
-	taps    = 12
-	floats  = 32 // bytes of one float of every lane of a bank
-	doubles = 64
+	taps                 = 12
+	slopeTaps, curveTaps = 8, 6
+	rowQuads             = 7  // of taps, slope and curve together
+	floats               = 32 // bytes of one float of every lane of a bank
+	doubles              = 64
 )
 
 func (k *kernel) name() string {
 	name := "still"
-	if k.moving {
+	switch {
+	case k.gliding:
+		name = "gliding"
+	case k.moving:
 		name = "moving"
 	}
 	if k.stiff {
@@ -61,7 +69,7 @@ func (k *kernel) write() {
 	k.begin(k.name())
 	k.rewind(3)
 	for i := range 3 {
-		k.loadQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7})
+		k.loadQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7}, "source")
 		for j := range 4 {
 			k.store(mem{base: win, off: (4*i + j) * floats}, reg(j))
 		}
@@ -105,37 +113,82 @@ func (k *kernel) group(n int) {
 	k.storeQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7})
 }
 
-// read loads the lines' next samples and sums the taps' products, the oldest
-// sample's first, into registers 0 to n-1. Each tap and each sample is loaded once for all frames.
+// read loads the lines' next samples and reads the lines into registers 0 to n-1.
 func (k *kernel) read(n int) {
-	const tap = 8
-	k.loadQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7})
+	k.loadQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7}, "source")
 	for i := range n {
 		k.store(mem{base: win, off: (taps + i) * floats}, reg(i))
 	}
+	if k.gliding {
+		k.offsets(n)
+		k.products(n, "Curve", curveTaps, true)
+		k.timesOffset(n)
+		k.products(n, "Slope", slopeTaps, false)
+		k.timesOffset(n)
+		for f := range n {
+			k.addBias(reg(f), reg(f))
+		}
+		k.products(n, "Tap", taps, false)
+	} else {
+		k.products(n, "Tap", taps, true)
+	}
+	if k.moving {
+		k.level(n)
+	}
+}
+
+// products adds the products of taps in the middle of the read, the oldest
+// sample's first, to registers 0 to n-1, or begins there with the first. Each tap and each sample is
+// loaded once for all frames.
+func (k *kernel) products(n int, field string, count int, begin bool) {
+	const tap = 8
 	sample := func(frame, back int) reg { return reg(4 + (frame+back)%n) }
-	for back := range taps {
-		at := mem{bank, "Bank_Tap", (taps - 1 - back) * floats}
-		k.load(tap, at)
+	oldest := (taps - count) / 2
+	for back := range count {
+		k.load(tap, mem{bank, "Bank_" + field, (count - 1 - back) * floats})
 		first := 0
 		if back > 0 {
 			first = n - 1
 		}
 		for f := first; f < n; f++ {
-			k.load(sample(f, back), mem{base: win, off: (1 + f + back) * floats})
+			k.load(sample(f, back), mem{base: win, off: (1 + f + oldest + back) * floats})
 		}
 		for f := range n {
 			product := reg(10 + f%2)
-			k.mulF(product, sample(f, back), tap)
-			if back == 0 {
-				k.addBias(reg(f), product)
-			} else {
+			switch {
+			case back > 0 || !begin:
+				k.mulF(product, sample(f, back), tap)
 				k.addF(reg(f), reg(f), product)
+			case k.gliding:
+				k.mulF(reg(f), sample(f, back), tap)
+			default:
+				k.mulF(product, sample(f, back), tap)
+				k.addBias(reg(f), product)
 			}
 		}
 	}
-	if k.moving {
-		k.level(n)
+}
+
+// offsets writes down how far each of n frames' delays are from those of the taps.
+func (k *kernel) offsets(n int) {
+	fields := [...]string{"Offset", "DOffset", "D2Offset", "D3Offset"}
+	for i, field := range fields {
+		k.load(reg(i), mem{bank, "Bank_" + field, 0})
+	}
+	for f := range n {
+		k.store(mem{benchF, "Bench_offsets", f * floats}, 0)
+		for i := range 3 {
+			k.addF(reg(i), reg(i), reg(i+1))
+		}
+	}
+	for i, field := range fields[:3] {
+		k.store(mem{bank, "Bank_" + field, 0}, reg(i))
+	}
+}
+
+func (k *kernel) timesOffset(n int) {
+	for f := range n {
+		k.mulFm(reg(f), reg(f), mem{benchF, "Bench_offsets", f * floats})
 	}
 }
 
@@ -307,6 +360,20 @@ func (k *kernel) sound(n int) {
 		k.addF(power, power, square)
 	}
 	k.store(mem{bank, "Bank_Power", 0}, power)
+}
+
+// writeTurn prints what gives each lane the row of taps, slope and curve that its pointer is at.
+func (k *kernel) writeTurn() {
+	k.beginTurn("turnRows")
+	k.rewind(0)
+	for q := range rowQuads {
+		k.loadQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7}, "row")
+		for i := range 4 {
+			k.store(mem{bank, "Bank_Tap", (4*q + i) * floats}, reg(i))
+		}
+		k.advance(4)
+	}
+	k.end()
 }
 
 // writeMix prints the mix of a bank.

@@ -23,14 +23,15 @@ func (m mem) plus(bytes int) mem { m.off += bytes; return m }
 type pointer int
 
 const (
-	bank  pointer = iota // the Bank, for floats
-	bankD                // the Bank, for doubles
-	outs                 // the frame in Bank.Out
-	mix                  // the frame in Mix.Left
-	force                // the frame in the Force
-	win                  // the group's first frame in Bench.window
-	sect                 // the Section
-	node                 // the Node before it
+	bank   pointer = iota // the Bank, for floats
+	bankD                 // the Bank, for doubles
+	outs                  // the frame in Bank.Out
+	mix                   // the frame in Mix.Left
+	force                 // the frame in the Force
+	benchF                // the Bench
+	win                   // the group's first frame in Bench.window
+	sect                  // the Section
+	node                  // the Node before it
 )
 
 // half is which of the lanes of an f32 vector an f64 vector holds.
@@ -49,6 +50,7 @@ type machine interface {
 
 	begin(name string) // takes the arguments and begins a pass
 	beginMix(name string)
+	beginTurn(name string)
 	end() // ends the pass and returns
 	text() *strings.Builder
 
@@ -78,8 +80,9 @@ type machine interface {
 	addBias(d, a reg)
 	widen(d, s reg, h half)
 	narrow(d, s, scratch reg, h half) // the other half of d stays
-	loadQuad(d, scratch [4]reg)
-	storeQuad(s, scratch [4]reg) // destroys s
+	mulFm(d, a reg, m mem)
+	loadQuad(d, scratch [4]reg, table string) // of Bench: where each lane's are
+	storeQuad(s, scratch [4]reg)              // destroys s
 }
 
 // printer is what machines share.
