@@ -36,6 +36,7 @@ func (b *bank) take(p *Pool, l *loop) {
 			b.used++
 			b.space = 0
 			b.Hush(lane)
+			l.glide.fresh = true
 			return
 		}
 	}
@@ -65,7 +66,7 @@ func (b *bank) begin() {
 		switch {
 		case l.motion == gliding:
 			b.motion = lanes.Gliding
-			fastest = max(fastest, l.path.fastest())
+			fastest = max(fastest, l.glide.fast)
 		case l.motion != still:
 			b.motion = max(b.motion, lanes.Moving)
 		}
@@ -79,13 +80,19 @@ func (b *bank) begin() {
 // as many frames as the fastest (samples a frame) allows.
 func (b *bank) beginGlides(fastest float64) {
 	const near = 0.06 // samples: how far the delay may be from the taps' own
+	before := b.Block
 	b.Block = Grid
 	for b.Block > 1 && fastest*float64(b.Block-1)/2 > near {
 		b.Block /= 2
 	}
 	for lane, l := range b.loops {
-		if l != nil && l.motion == gliding {
-			l.path.set(&b.Bank, lane)
+		if l == nil || l.motion != gliding {
+			continue
+		}
+		if g := &l.glide; g.fresh || b.Block != before {
+			p := g.path.from(float64(g.done))
+			p.set(&b.Bank, lane)
+			g.fresh = false
 		}
 	}
 }

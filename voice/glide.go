@@ -17,19 +17,49 @@ const (
 // glide is the way of a string's length and coefficients to where they are to be.
 type glide struct {
 	aim     float64 // the pitch that is asked for (Hz)
+	last    float64 // the same at the step before
 	palmAim float64 // how much of the muted string's decay it is to have, 0 to 1
 	darkAim float64 // how much of its darkness
 	touch   touch   // both, on their way there
 	pitch   float64 // the pitch on its way there, at most slew away
+	rough   bool    // the target is approximate
+	swift   bool    // the way is one of short steps
 	from    float64 // delay that feeds the smoothing (samples)
 	slope   float64
 	s       [3]float64 // the smoothed delay; the last is what is read
 	speed   float64    // of the last, samples a frame
-	step    float64    // what a one-pole takes of a control step
 	target  coefficients
 	stage   [3]coefficients
 	direct  [3]float64 // the smoothed pitch (Hz) of a direct read
 	short   bool       // the read is direct, wholly or in part
+	cell    cell
+
+	smooth *smoothing // over the frames of the present way
+	path   path       // of the delay in them
+	done   int        // of them
+	fast   float64    // its greatest speed, samples a frame
+	fresh  bool       // the lane is not on it yet
+}
+
+// longSteps is over how many control steps a string glides at once that does so slowly.
+const longSteps = 4
+
+// stride chooses over how many steps the string is to glide at once: a way of many
+// steps costs less, but would be heard where the pitch slams. Short ways stay so until the string has
+// come to rest, for a change between them is a change of its lag.
+func (l *loop) stride() *smoothing {
+	const (
+		slow = 0.03   // samples a frame
+		far  = 3.3e-4 // s of delay to go
+	)
+	g, m := &l.glide, l.pool.maker
+	ahead := (max(g.aim/g.pitch, g.pitch/g.aim)-1)*g.target.delay + math.Abs(g.target.delay-g.s[2])
+	touched := l.damped.touched() || g.touch != touch{g.palmAim, g.darkAim}
+	g.swift = g.swift || touched || g.short || g.target.direct > 0 || ahead > far*m.rate || math.Abs(g.speed) > slow
+	if g.swift || l.damped.rate != l.damped.aim {
+		return m.smooth
+	}
+	return m.smoothLong
 }
 
 // hold clamps a pitch to what the line and the rate can sound.
@@ -42,7 +72,7 @@ func (l *loop) hold(f0 float64) float64 {
 func (l *loop) settle() {
 	g := &l.glide
 	l.mode.at(g.pitch, g.touch, &g.target)
-	g.from, g.slope, g.speed = g.target.delay, 0, 0
+	g.from, g.slope, g.speed, g.rough, g.swift = g.target.delay, 0, 0, false, false
 	for i := range g.s {
 		g.s[i], g.stage[i], g.direct[i] = g.target.delay, g.target, g.pitch
 	}
@@ -55,25 +85,30 @@ func (l *loop) glideStep() bool {
 	if g.arrived() && l.motion != gliding && g.atRest() {
 		return false
 	}
-	if !g.arrived() {
+	g.smooth = l.stride()
+	if moving := g.aim != g.last; !g.arrived() || g.rough {
+		g.last = g.aim
 		g.touch.palm = toward(g.touch.palm, g.palmAim, 0.2, 1e-4)
 		g.touch.dark = toward(g.touch.dark, g.darkAim, 0.2, 1e-4)
 		// at most slew samples of delay a frame: |dD| = D dp/p
-		most := 1 + slew*Grid/max(g.target.delay, shortest)
+		most := 1 + slew*g.smooth.frames/max(g.target.delay, shortest)
 		g.pitch = min(max(g.aim, g.pitch/most), g.pitch*most)
-		l.mode.at(g.pitch, g.touch, &g.target)
+		g.rough = moving && g.touch == touch{g.palmAim, g.darkAim} && g.cell.approximate(l.mode, g.pitch, g.touch, &g.target)
+		if !g.rough {
+			l.mode.at(g.pitch, g.touch, &g.target)
+		}
 	}
 	for i := range g.stage {
 		in := &g.target
 		if i > 0 {
 			in = &g.stage[i-1]
 		}
-		g.stage[i].approach(in, g.step, l.sections)
+		g.stage[i].approach(in, g.smooth.step, l.sections)
 	}
 	if g.short {
 		in := g.pitch
 		for i := range g.direct {
-			g.direct[i] += (in - g.direct[i]) * g.step
+			g.direct[i] += (in - g.direct[i]) * g.smooth.step
 			in = g.direct[i]
 		}
 		if g.arrived() && math.Abs(g.direct[2]-g.pitch) < settled*g.pitch/100 {
@@ -86,7 +121,7 @@ func (l *loop) glideStep() bool {
 		l.enterDirect()
 		return true
 	}
-	if g.arrived() && math.Abs(g.s[2]-g.target.delay) < settled && math.Abs(g.s[0]-g.target.delay) < settled {
+	if g.arrived() && !g.rough && math.Abs(g.s[2]-g.target.delay) < settled && math.Abs(g.s[0]-g.target.delay) < settled {
 		l.settle()
 		return false
 	}
@@ -281,7 +316,7 @@ func (l *loop) beginRamp() {
 	g, b, lane := &l.glide, &l.bank.Bank, l.lane
 	if !g.short {
 		l.unlevel()
-		l.rampFilters()
+		l.rampFilters(Grid)
 		b.DLevel[lane] = (float32(l.safeGain()*l.damped.perTrip(g.pitch)) - b.Level[lane]) / Grid
 		l.motion = ramping
 		l.house()
@@ -301,7 +336,7 @@ func (l *loop) beginRamp() {
 		b.DTap[i][lane] = (float32(h[i]) - b.Tap[i][lane]) / Grid
 	}
 	b.Level[lane], b.DLevel[lane] = 1, 0
-	l.rampFilters()
+	l.rampFilters(Grid)
 	l.motion = changing
 	l.house()
 }
@@ -333,20 +368,21 @@ func (l *loop) shiftTaps(n int) {
 	}
 }
 
-func (l *loop) rampFilters() {
+// rampFilters moves the filters to where they are to be in n frames.
+func (l *loop) rampFilters(n float64) {
 	c, b, lane := &l.glide.stage[2], &l.bank.Bank, l.lane
-	b.DC1[lane], b.DC2[lane] = (c.loss.c1-b.C1[lane])/Grid, (c.loss.c2-b.C2[lane])/Grid
+	b.DC1[lane], b.DC2[lane] = (c.loss.c1-b.C1[lane])/n, (c.loss.c2-b.C2[lane])/n
 	if l.sections == 0 {
 		return
 	}
 	gain, zero, pole := c.loss.shelf.filter()
-	b.DGain[lane] = (gain - b.Gain[lane]) / Grid
-	b.DZero[lane] = (zero - b.Zero[lane]) / Grid
-	b.DPole[lane] = (pole - b.Pole[lane]) / Grid
+	b.DGain[lane] = (gain - b.Gain[lane]) / n
+	b.DZero[lane] = (zero - b.Zero[lane]) / n
+	b.DPole[lane] = (pole - b.Pole[lane]) / n
 	for i := range l.sections {
 		s := &b.Section[i]
-		s.DA1[lane] = (c.sections[i][0] - s.A1[lane]) / Grid
-		s.DA2[lane] = (c.sections[i][1] - s.A2[lane]) / Grid
+		s.DA1[lane] = (c.sections[i][0] - s.A1[lane]) / n
+		s.DA2[lane] = (c.sections[i][1] - s.A2[lane]) / n
 	}
 }
 
@@ -354,16 +390,18 @@ func (l *loop) rampFilters() {
 func (l *loop) beginGlide() {
 	g, b, lane := &l.glide, &l.bank.Bank, l.lane
 	b.Level[lane] = l.levelNow()
+	n := g.smooth.frames
 	level := float32(l.safeGain() * l.damped.perTrip(g.pitch))
-	b.DLevel[lane] = (level - b.Level[lane]) / Grid
+	b.DLevel[lane] = (level - b.Level[lane]) / float32(n)
 	aim := max(g.target.delay, shortest+0.5)
 	// a touch moves the delay too, by the lag of its darker filter
-	g.slope = min(slew, max(-slew, (aim-g.from)/Grid))
+	g.slope = min(slew, max(-slew, (aim-g.from)/n))
 	before, speed := g.s[2], g.speed
-	g.speed = l.pool.maker.smoothing.follow(&g.s, g.from, g.slope)
-	g.from += Grid * g.slope
-	l.path = newPath(before, g.s[2], speed, g.speed)
-	l.rampFilters()
+	g.speed = g.smooth.follow(&g.s, g.from, g.slope)
+	g.from += float64(n * g.slope)
+	g.path = newPath(before, g.s[2], speed, g.speed, n)
+	g.fast, g.done, g.fresh = g.path.fastest(n), 0, true
+	l.rampFilters(n)
 	l.motion = gliding
 	l.house()
 	f := &l.bank.Glide[l.lane].Finger
@@ -372,15 +410,15 @@ func (l *loop) beginGlide() {
 	f.Floor = int64(l.start)
 }
 
-// set gives a lane the path, its taps standing for Block frames.
+// set puts a lane on the path, its taps standing for Block frames.
 func (p *path) set(b *lanes.Bank, lane int) {
 	k := float64(b.Block)
 	g := &b.Glide[lane]
 	g.On = true
 	const one = 1 << 32
 	g.Delay = int64((p[0] + p[1] + p[2] + p[3]) * one)
-	g.D1 = int64((float64(p[1]*k) + float64(p[2]*(k*k+2*k)) + float64(p[3]*(k*k*k+3*k*k+3*k))) * one)
-	g.D2 = int64((float64(2*p[2]*k*k) + float64(p[3]*(6*k*k+6*k*k*k))) * one)
+	g.D1 = int64((float64(p[1]*k) + float64(p[2]*(float64(k*k)+2*k)) + float64(p[3]*(float64(k*k*k)+float64(3*k*k)+3*k))) * one)
+	g.D2 = int64((float64(2*p[2]*k*k) + float64(p[3]*(float64(6*k*k)+float64(6*k*k*k)))) * one)
 	g.D3 = int64(float64(6*p[3]*k*k*k) * one)
 	b.DOffset[lane] = float32(p[1] + float64(3*p[2]) + float64(7*p[3]))
 	b.D2Offset[lane] = float32(float64(2*p[2]) + float64(12*p[3]))

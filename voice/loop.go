@@ -52,6 +52,9 @@ type loop struct {
 	sections int
 	mix      float32 // of the stroke and of the output
 
+	pitch        float64 // Hz: the design's
+	asked, cents float64 // from there: asked for, and already heard of
+
 	start, size int // the loop's part of the pool's line
 	room        int // how much of it is used
 	bank        *bank
@@ -61,7 +64,6 @@ type loop struct {
 	calm   bool    // nothing moves, nor is going to
 	length int     // the whole part of the delay
 	level  float32 // of the read, while still: in the taps
-	path   path    // of the delay, while gliding
 
 	glide   glide
 	damped  damping
@@ -76,11 +78,11 @@ const shortestLane = center + lanes.Shortest
 
 // tune sets a string at rest on its pitch (Hz), on an empty line.
 func (l *loop) tune(f0 float64) {
-	m, s := l.mode, l.pool.maker.smoothing
-	l.glide = glide{step: s.step}
+	m := l.mode
+	l.glide = glide{}
 	l.quiet = math.MaxInt32 / 2
 	f0 = l.hold(f0)
-	l.glide.aim, l.glide.pitch = f0, f0
+	l.glide.aim, l.glide.last, l.glide.pitch = f0, f0, f0
 	l.sections = len(m.sections)
 	l.settle()
 	l.length = int(l.glide.s[2])
@@ -98,7 +100,7 @@ func (l *loop) house() {
 	g := &l.glide
 	least := g.s[2]
 	if l.motion == gliding {
-		least = l.path.least()
+		least = min(least, g.path[0]) - g.fast*g.smooth.frames/8
 	}
 	solo := g.short || l.damped.touched() || int(least) < shortestLane
 	if l.bank != nil && l.bank.solo == solo && int(l.bank.Sections) == l.sections {
@@ -175,6 +177,15 @@ func (l *loop) take() float64 {
 // control prepares the next Grid frames.
 func (l *loop) control() {
 	g := &l.glide
+	if l.motion == gliding {
+		if g.done += Grid; g.done < int(g.smooth.frames) {
+			return
+		}
+	}
+	if l.cents != l.asked {
+		l.cents = l.asked
+		g.aim = l.hold(l.pitch * octaves(l.asked))
+	}
 	moved := l.glideStep()
 	softened := l.damped.step()
 	switch {

@@ -236,10 +236,8 @@ func (m *mode) lossAt(table []loss, f0 float64) loss {
 	if i == 0 || i == len(table)-2 {
 		return table[i].mix(table[i+1], t)
 	}
-	// Lagrange's weights for places -1, 0, 1, 2
-	w := [4]float64{-t * (t - 1) * (t - 2) / 6, (t + 1) * (t - 1) * (t - 2) / 2, -(t + 1) * t * (t - 2) / 2, (t + 1) * t * (t - 1) / 6}
 	var out loss
-	for j, k := range w {
+	for j, k := range cubic(t) {
 		l := &table[i-1+j]
 		out.c1 += k * l.c1
 		out.c2 += k * l.c2

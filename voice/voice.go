@@ -72,10 +72,10 @@ func (v *Voice) Fit(d *Design) {
 	slot := v.size / len(d.strings)
 	for i, s := range d.strings {
 		v.loops[i] = loop{
-			mode: d.modes[s.mode], voice: v, pool: v.pool, mix: s.mix,
+			mode: d.modes[s.mode], voice: v, pool: v.pool, mix: s.mix, pitch: d.pitch * octaves(s.cents),
 			start: v.start + i*slot, size: slot,
 		}
-		v.loops[i].tune(d.pitch * octaves(s.cents))
+		v.loops[i].tune(v.loops[i].pitch)
 	}
 }
 
@@ -154,21 +154,21 @@ func (v *Voice) Tune(cents float64) {
 // retune gives each string its pitch, with the tension of the present energy.
 func (v *Voice) retune() {
 	cents := v.cents + v.strain
-	for i, s := range v.design.strings {
+	for i := range v.design.strings {
 		l := &v.loops[i]
-		f0 := l.hold(v.design.pitch * octaves(cents+s.cents))
-		if f0 == l.glide.aim {
+		if cents == l.asked {
 			continue
 		}
+		l.asked, l.calm = cents, false
 		if v.unheard() {
-			l.tune(f0)
+			l.cents = cents
+			l.tune(l.pitch * octaves(cents))
 			for j := range l.strokes {
 				if st := &l.strokes[j]; st.shape != nil {
-					st.echo = st.shape.position * v.pool.maker.rate / f0
+					st.echo = st.shape.position * v.pool.maker.rate / l.glide.aim
 				}
 			}
 		}
-		l.glide.aim, l.calm = f0, l.calm && l.glide.pitch == f0
 	}
 }
 
