@@ -32,6 +32,16 @@ const (
 	node                 // the Node before it
 )
 
+// registers names the general register of each pointer.
+type registers map[pointer]string
+
+func (r registers) at(m mem) string {
+	if m.field == "" {
+		return fmt.Sprintf("%d(%s)", m.off, r[m.base])
+	}
+	return fmt.Sprintf("(%s+%d)(%s)", m.field, m.off, r[m.base])
+}
+
 // half is which of the lanes of an f32 vector an f64 vector holds.
 type half int
 
@@ -86,6 +96,11 @@ func (p *printer) text() *strings.Builder { return &p.out }
 
 func (p *printer) put(format string, args ...any) {
 	fmt.Fprintf(&p.out, "\t"+format+"\n", args...)
+}
+
+func (p *printer) function(name string) {
+	fmt.Fprintf(&p.out, "\n// func %s(b *Bank, m *Mix, force *floats, from, frames int)\n", name)
+	fmt.Fprintf(&p.out, "TEXT ·%s(SB), NOSPLIT, $0-40\n", name)
 }
 
 func (p *printer) label(name string) { fmt.Fprintf(&p.out, "\n%s:\n", name) }
