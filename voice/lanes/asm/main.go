@@ -21,6 +21,6 @@ func main() {
 	}
 }
 
-func machines() []machine { return []machine{avx2{&printer{}}} }
+func machines() []machine { return []machine{avx2{&printer{}}, neon{&printer{}}} }
 
 func file(m machine) string { return "kernels_" + m.goarch() + ".s" }
