@@ -1,4 +1,4 @@
-//go:build amd64
+//go:build amd64 || arm64
 
 package lanes
 
@@ -34,7 +34,7 @@ func glidingStiff(b *Bank, w *Bench, force *floats, from, frames int)
 func turnRows(b *Bank, w *Bench)
 
 //go:noescape
-func mix(b *Bank, m *Mix, from, frames int)
+func mix(b *Bank, w *Mix, from, frames int)
 
 // vector is the kernel of a vector unit.
 func vector(name string) Kernel {

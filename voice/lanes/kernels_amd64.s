@@ -8824,10 +8824,10 @@ TEXT ·turnRows(SB), NOSPLIT, $0-16
 	VZEROUPPER
 	RET
 
-// func mix(b *Bank, m *Mix, from, frames int)
+// func mix(b *Bank, w *Mix, from, frames int)
 TEXT ·mix(SB), NOSPLIT, $0-32
 	MOVQ b+0(FP), BX
-	MOVQ m+8(FP), SI
+	MOVQ w+8(FP), SI
 	MOVQ from+16(FP), R8
 	MOVQ frames+24(FP), CX
 	SHLQ $5, R8

@@ -1,7 +1,5 @@
 package main
 
-import "fmt"
-
 // avx2 prints for amd64 with AVX2: eight lanes in one pass.
 //
 //	BX bank, SI Bench, R8 out or mix, R9 force, R10 window, R11 section, R12 node,
@@ -11,20 +9,12 @@ type avx2 struct{ *printer }
 func (avx2) goarch() string { return "amd64" }
 func (avx2) width() int     { return 32 }
 
-var avx2Pointers = map[pointer]string{
+var avx2Pointers = registers{
 	bank: "BX", bankD: "BX", outs: "R8", mix: "SI", benchF: "SI", force: "R9", win: "R10", sect: "R11", node: "R12",
 }
 
-func (a avx2) at(m mem) string {
-	if m.field == "" {
-		return fmt.Sprintf("%d(%s)", m.off, avx2Pointers[m.base])
-	}
-	return fmt.Sprintf("(%s+%d)(%s)", m.field, m.off, avx2Pointers[m.base])
-}
-
 func (a avx2) begin(name string) {
-	fmt.Fprintf(a.text(), "\n// func %s(b *Bank, w *Bench, force *floats, from, frames int)\n", name)
-	fmt.Fprintf(a.text(), "TEXT ·%s(SB), NOSPLIT, $0-40\n", name)
+	a.function(name, "b *Bank, w *Bench, force *floats, from, frames int", 40)
 	a.put("MOVQ b+0(FP), BX")
 	a.put("MOVQ w+8(FP), SI")
 	a.put("MOVQ force+16(FP), R9")
@@ -36,10 +26,9 @@ func (a avx2) begin(name string) {
 }
 
 func (a avx2) beginMix(name string) {
-	fmt.Fprintf(a.text(), "\n// func %s(b *Bank, m *Mix, from, frames int)\n", name)
-	fmt.Fprintf(a.text(), "TEXT ·%s(SB), NOSPLIT, $0-32\n", name)
+	a.function(name, "b *Bank, w *Mix, from, frames int", 32)
 	a.put("MOVQ b+0(FP), BX")
-	a.put("MOVQ m+8(FP), SI")
+	a.put("MOVQ w+8(FP), SI")
 	a.put("MOVQ from+16(FP), R8")
 	a.put("MOVQ frames+24(FP), CX")
 	a.put("SHLQ $5, R8")
@@ -48,8 +37,7 @@ func (a avx2) beginMix(name string) {
 }
 
 func (a avx2) beginTurn(name string) {
-	fmt.Fprintf(a.text(), "\n// func %s(b *Bank, w *Bench)\n", name)
-	fmt.Fprintf(a.text(), "TEXT ·%s(SB), NOSPLIT, $0-16\n", name)
+	a.function(name, "b *Bank, w *Bench", 16)
 	a.put("MOVQ b+0(FP), BX")
 	a.put("MOVQ w+8(FP), SI")
 }
@@ -78,7 +66,7 @@ func (a avx2) advance(group int) { a.put("ADDQ $%d, DX", 4*group) }
 
 func (a avx2) count(frames int) { a.put("SUBQ $%d, CX", frames) }
 
-func (a avx2) point(to pointer, m mem) { a.put("LEAQ %s, %s", a.at(m), avx2Pointers[to]) }
+func (a avx2) point(to pointer, m mem) { a.put("LEAQ %s, %s", avx2Pointers.at(m), avx2Pointers[to]) }
 func (a avx2) move(p pointer, n int)   { a.put("ADDQ $%d, %s", n, avx2Pointers[p]) }
 func (a avx2) countSections()          { a.put("MOVQ Bank_Sections(BX), R13") }
 
@@ -87,14 +75,16 @@ func (a avx2) repeatSections(name string) {
 	a.put("JNZ %s", name)
 }
 
-func (a avx2) load(d reg, m mem)  { a.put("VMOVUPS %s, Y%d", a.at(m), d) }
-func (a avx2) store(m mem, s reg) { a.put("VMOVUPS Y%d, %s", s, a.at(m)) }
+func (a avx2) load(d reg, m mem)  { a.put("VMOVUPS %s, Y%d", avx2Pointers.at(m), d) }
+func (a avx2) store(m mem, s reg) { a.put("VMOVUPS Y%d, %s", s, avx2Pointers.at(m)) }
 func (a avx2) copy(d, s reg)      { a.put("VMOVAPS Y%d, Y%d", s, d) }
 
 // three prints an instruction as d = x op y: the assembler names y first.
 func (a avx2) three(op string, d, x, y reg) { a.put("%s Y%d, Y%d, Y%d", op, y, x, d) }
 
-func (a avx2) threeM(op string, d, x reg, m mem) { a.put("%s %s, Y%d, Y%d", op, a.at(m), x, d) }
+func (a avx2) threeM(op string, d, x reg, m mem) {
+	a.put("%s %s, Y%d, Y%d", op, avx2Pointers.at(m), x, d)
+}
 
 func (a avx2) mulF(d, x, y reg)      { a.three("VMULPS", d, x, y) }
 func (a avx2) addF(d, x, y reg)      { a.three("VADDPS", d, x, y) }

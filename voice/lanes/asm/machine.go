@@ -34,6 +34,16 @@ const (
 	node                  // the Node before it
 )
 
+// registers names the general register of each pointer.
+type registers map[pointer]string
+
+func (r registers) at(m mem) string {
+	if m.field == "" {
+		return fmt.Sprintf("%d(%s)", m.off, r[m.base])
+	}
+	return fmt.Sprintf("(%s+%d)(%s)", m.field, m.off, r[m.base])
+}
+
 // half is which of the lanes of an f32 vector an f64 vector holds.
 type half int
 
@@ -92,6 +102,10 @@ func (p *printer) text() *strings.Builder { return &p.out }
 
 func (p *printer) put(format string, args ...any) {
 	fmt.Fprintf(&p.out, "\t"+format+"\n", args...)
+}
+
+func (p *printer) function(name, arguments string, bytes int) {
+	fmt.Fprintf(&p.out, "\n// func %s(%s)\nTEXT ·%s(SB), NOSPLIT, $0-%d\n", name, arguments, name, bytes)
 }
 
 func (p *printer) label(name string) { fmt.Fprintf(&p.out, "\n%s:\n", name) }

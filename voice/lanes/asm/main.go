@@ -13,11 +13,14 @@ import (
 func main() {
 	dir := flag.String("dir", ".", "folder to write to")
 	flag.Parse()
-	for _, m := range []machine{avx2{&printer{}}} {
-		name := filepath.Join(*dir, "kernels_"+m.goarch()+".s")
-		if err := os.WriteFile(name, []byte(generate(m)), 0o644); err != nil {
+	for _, m := range machines() {
+		if err := os.WriteFile(filepath.Join(*dir, file(m)), []byte(generate(m)), 0o644); err != nil {
 			fmt.Fprintln(os.Stderr, "asm:", err)
 			os.Exit(1)
 		}
 	}
 }
+
+func machines() []machine { return []machine{avx2{&printer{}}, neon{&printer{}}} }
+
+func file(m machine) string { return "kernels_" + m.goarch() + ".s" }
