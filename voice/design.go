@@ -150,7 +150,7 @@ func (v *Voice) try(d *Design, out []float32, velocity float64, seed uint64) (pe
 	v.Strike(d, velocity, seed)
 	for at := 0; at < len(out); at += Grid {
 		v.Render(out[at:min(at+Grid, len(out))], nil)
-		energy = max(energy, v.energy)
+		energy = max(energy, v.Energy())
 	}
 	for _, y := range out {
 		peak = max(peak, math.Abs(float64(y)))

@@ -82,6 +82,7 @@ func (l *loop) settle() {
 // glideStep moves the pitch towards its aim and says whether anything moves.
 func (l *loop) glideStep() bool {
 	g := &l.glide
+	g.smooth = l.pool.maker.smooth
 	if g.arrived() && l.motion != gliding && g.atRest() {
 		return false
 	}

@@ -61,7 +61,6 @@ type loop struct {
 	lane        int
 
 	motion motion
-	calm   bool    // nothing moves, nor is going to
 	length int     // the whole part of the delay
 	level  float32 // of the read, while still: in the taps
 
@@ -69,7 +68,7 @@ type loop struct {
 	damped  damping
 	strokes [strokes]stroke
 
-	quiet int // frames since the last step in which the line was above silence
+	controlled int64 // the control step that last led it on
 }
 
 // shortestLane is the whole delay (samples) from which a vector unit can
@@ -80,7 +79,6 @@ const shortestLane = center + lanes.Shortest
 func (l *loop) tune(f0 float64) {
 	m := l.mode
 	l.glide = glide{}
-	l.quiet = math.MaxInt32 / 2
 	f0 = l.hold(f0)
 	l.glide.aim, l.glide.last, l.glide.pitch = f0, f0, f0
 	l.sections = len(m.sections)
@@ -90,9 +88,10 @@ func (l *loop) tune(f0 float64) {
 	l.room = l.need()
 	keep := l.keep()
 	l.bank.At[l.lane] = int64(l.start + keep)
+	l.bank.quiet[l.lane] = math.MaxInt32 / 2
 	clear(l.pool.bench.Line[l.start : l.start+keep])
 	l.stand()
-	l.calm = false // what has been asked of the string is still to come
+	l.wake() // what has been asked of the string is still to come
 }
 
 // house gives the loop a lane that can compute it.
@@ -109,18 +108,19 @@ func (l *loop) house() {
 	from, lane := l.bank, l.lane
 	l.pool.place(l, solo)
 	if from != nil {
-		l.bank.Copy(l.lane, &from.Bank, lane)
-		to, toLane := l.bank, l.lane
-		l.bank, l.lane = from, lane
-		from.leave(l.pool, l)
-		l.bank, l.lane = to, toLane
+		l.bank.inherit(l.lane, from, lane)
+		from.leave(l.pool, lane)
 	}
 }
+
+// wake makes sure that the loop is led on at the next control step.
+func (l *loop) wake() { l.bank.restless.set(l.lane) }
 
 // unhouse makes the loop's lane idle.
 func (l *loop) unhouse() {
 	if l.bank != nil {
-		l.bank.leave(l.pool, l)
+		l.bank.leave(l.pool, l.lane)
+		l.bank = nil
 	}
 }
 
@@ -161,17 +161,13 @@ func (l *loop) past(n int) []float32 {
 	return l.pool.bench.Line[at-int64(n) : at]
 }
 
-// take returns the loop's power (sum of squares) since the last step, and keeps
-// account of how long the line has been silent.
-func (l *loop) take() float64 {
-	power := l.bank.Power[l.lane]
-	l.bank.Power[l.lane] = 0
-	if power > silence*silence {
-		l.quiet = 0
-	} else {
-		l.quiet = min(l.quiet+Grid, math.MaxInt32/2)
+// follow moves the strokes' echoes with the pitch.
+func (l *loop) follow() {
+	for j := range l.strokes {
+		if s := &l.strokes[j]; !s.over() {
+			s.follow(l.glide.pitch)
+		}
 	}
-	return float64(power)
 }
 
 // control prepares the next Grid frames.
@@ -197,7 +193,9 @@ func (l *loop) control() {
 		if l.motion != still {
 			l.stand()
 		}
-		l.calm = !l.damped.touched()
+		if !l.damped.touched() {
+			l.bank.restless.clear(l.lane)
+		}
 	}
 }
 
@@ -209,4 +207,4 @@ func (l *loop) meanKeeps() float64 {
 }
 
 // atRest says that the whole line is below silence.
-func (l *loop) atRest() bool { return l.quiet > l.keep() }
+func (l *loop) atRest() bool { return int(l.bank.quiet[l.lane]) > l.keep() }

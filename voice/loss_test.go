@@ -164,7 +164,8 @@ func TestLoopStaysBelowOneOnTheWay(t *testing.T) {
 		law := newLaw(0.05*math.Pow(2400, r.Float64()), r.Float64())
 		m := newMode(law, newLaw(muted, 0), f0, float64(r.IntN(2))*1e-3*r.Float64(), rate)
 		l := tuned(m, ip, f0)
-		l.glide.aim, l.calm = l.hold(f0*math.Exp2(8*r.Float64()-4)), false
+		l.glide.aim = l.hold(f0 * math.Exp2(8*r.Float64()-4))
+		l.wake()
 		l.glide.palmAim = r.Float64()
 		for step := range 60 {
 			l.pool.Step()

@@ -16,9 +16,11 @@ type Pool struct {
 	live   []*Voice // that have a design
 	banks  []bank
 	mix    lanes.Mix
-	now    int  // frames of the present step that are done
-	mixed  int  // of them, those that are in the mix
-	lone   bool // there is one voice, which is its own clock
+	now    int   // frames of the present step that are done
+	mixed  int   // of them, those that are in the mix
+	steps  int64 // begun so far
+	tense  int   // live voices whose pitch follows their energy
+	lone   bool  // there is one voice, which is its own clock
 
 	e [Grid]float32 // a stroke's force
 }
@@ -70,14 +72,28 @@ func (p *Pool) Voice(i int) *Voice { return &p.voices[i] }
 // Step begins the next control step. The one before must have been rendered whole.
 func (p *Pool) Step() {
 	p.now, p.mixed = 0, 0
+	p.steps++
 	p.mix.Clear(0, Grid)
-	for _, v := range p.live {
-		v.step()
+	for i := range p.banks {
+		if b := &p.banks[i]; b.used > 0 {
+			b.listen()
+		}
+	}
+	if p.tense > 0 {
+		for _, v := range p.live {
+			v.tighten()
+		}
+	}
+	for i := range p.banks {
+		p.banks[i].control(p)
 	}
 	for i := range p.banks {
 		p.banks[i].begin()
 	}
 }
+
+// clock counts frames.
+func (p *Pool) clock() int64 { return p.steps*Grid + int64(p.now) }
 
 // Advance renders all voices up to a frame of the present step, and mixes them.
 func (p *Pool) Advance(until int) {

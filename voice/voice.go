@@ -32,19 +32,15 @@ type Voice struct {
 
 	design *Design
 	loops  [maxLoops]loop
-	fresh  bool // strung, and not yet rendered
-	struck int  // the frame of the step at which it was
+	strung int64 // when, by the pool's clock
 
 	cents, strain float64 // from the design's pitch: asked for, and by tension
 	palm          float64 // 0 to 1
 	dark          float64 // 0 to 1
-	energy        float64
-	leak          float64 // of the energy, a control step
 
 	gains  gains
 	fading bool
-	faded  float32 // 1 to 0, at a frame of the step
-	fadeOf int
+	faded  int64 // since when, by the pool's clock
 }
 
 // NewVoice allocates a voice in a pool of its own; see Pool.
@@ -64,29 +60,36 @@ func (v *Voice) Fit(d *Design) {
 	}
 	v.design = d
 	v.pool.live = append(v.pool.live, v)
-	const hear = 0.02 // s
-	v.leak = min(1, Grid/(v.pool.maker.rate*max(hear, 2/d.pitch)))
-	v.fresh, v.struck, v.fading = true, v.pool.now, false
+	v.strung, v.fading = v.pool.clock(), false
 	v.cents, v.strain, v.palm, v.dark = 0, 0, 0, 0
 	v.gains = gains{}
+	if d.tension > 0 {
+		v.pool.tense++
+	}
+	const hear = 0.02 // s
+	leak := min(1, Grid/(v.pool.maker.rate*max(hear, 2/d.pitch)))
 	slot := v.size / len(d.strings)
 	for i, s := range d.strings {
 		v.loops[i] = loop{
 			mode: d.modes[s.mode], voice: v, pool: v.pool, mix: s.mix, pitch: d.pitch * octaves(s.cents),
 			start: v.start + i*slot, size: slot,
 		}
-		v.loops[i].tune(v.loops[i].pitch)
+		l := &v.loops[i]
+		l.tune(l.pitch)
+		l.bank.leak[l.lane] = leak
 	}
 }
 
 // Reset takes the strings off: the voice is silent at once.
 func (v *Voice) Reset() {
-	v.energy = 0
 	if v.design == nil {
 		return
 	}
 	for i := range v.design.strings {
 		v.loops[i].unhouse()
+	}
+	if v.design.tension > 0 {
+		v.pool.tense--
 	}
 	v.design = nil
 	live := v.pool.live
@@ -117,6 +120,7 @@ func (v *Voice) Strike(d *Design, velocity float64, seed uint64) {
 	for i := range d.strings {
 		l := &v.loops[i]
 		l.bank.catchUp(v.pool, v.pool.now)
+		l.bank.struck.set(l.lane)
 		s := &l.strokes[0]
 		if other := &l.strokes[1]; !s.over() && (other.over() || other.frame > s.frame) {
 			s = other
@@ -159,7 +163,8 @@ func (v *Voice) retune() {
 		if cents == l.asked {
 			continue
 		}
-		l.asked, l.calm = cents, false
+		l.asked = cents
+		l.wake()
 		if v.unheard() {
 			l.cents = cents
 			l.tune(l.pitch * octaves(cents))
@@ -173,7 +178,7 @@ func (v *Voice) retune() {
 }
 
 // unheard says that the voice has been strung and nothing of it rendered yet.
-func (v *Voice) unheard() bool { return v.fresh && v.struck == v.pool.now }
+func (v *Voice) unheard() bool { return v.strung == v.pool.clock() }
 
 // Damp lays the damper on: 0 lets ring, 1 makes T60 the design's release, more
 // is faster in proportion. It takes hold over some 5 ms.
@@ -184,7 +189,7 @@ func (v *Voice) Damp(amount float64) {
 	for i := range v.design.strings {
 		l := &v.loops[i]
 		l.damped.aim = amount * v.design.release
-		l.calm = l.calm && l.damped.aim == l.damped.rate
+		l.wake()
 	}
 }
 
@@ -208,7 +213,7 @@ func (v *Voice) dullen() {
 	for i := range v.design.strings {
 		l := &v.loops[i]
 		l.glide.palmAim, l.glide.darkAim = v.palm, max(v.palm, v.dark)
-		l.calm = l.calm && l.glide.arrived()
+		l.wake()
 	}
 }
 
@@ -222,7 +227,7 @@ func (v *Voice) Touch(node int, amount float64) {
 	for i := range v.design.strings {
 		l := &v.loops[i]
 		l.damped.node, l.damped.fingerAim = max(node, 2), min(1, max(0, amount))*firmest
-		l.calm = l.calm && !l.damped.touched()
+		l.wake()
 	}
 }
 
@@ -232,20 +237,23 @@ func (v *Voice) Fade() {
 		return
 	}
 	for i := range v.design.strings {
-		v.loops[i].bank.catchUp(v.pool, v.pool.now)
+		l := &v.loops[i]
+		l.bank.catchUp(v.pool, v.pool.now)
+		l.bank.fading.set(l.lane)
 	}
-	v.fading, v.faded, v.fadeOf = true, 1, v.pool.now
+	v.fading, v.faded = true, v.pool.clock()
 }
 
 // fadeAt is the factor of a fading voice at a frame of the step.
 func (v *Voice) fadeAt(frame int) float32 {
-	gone := max(0, frame+1-v.fadeOf)
-	return ease(max(0, v.faded-float32(float32(gone)*v.fadeStep())))
+	return ease(v.fadeLeft(v.pool.steps*Grid + int64(frame) + 1))
 }
 
-func (v *Voice) fadeStep() float32 {
+// fadeLeft is how much of the fade is to come, 1 to 0, by the pool's clock.
+func (v *Voice) fadeLeft(clock int64) float32 {
 	const fadeTime = 0.002 // s
-	return float32(1 / (fadeTime * v.pool.maker.rate))
+	gone := max(0, clock-v.faded)
+	return max(0, 1-float32(float64(gone)/(fadeTime*v.pool.maker.rate)))
 }
 
 // Mix sets the gains at which the voice goes to its pool's mix: from one to another over the control step
@@ -308,7 +316,21 @@ func (v *Voice) heard(out []float32, at int) {
 }
 
 // Energy is the mean square of what the voice lately put out.
-func (v *Voice) Energy() float64 { return v.energy }
+func (v *Voice) Energy() float64 {
+	if v.design == nil {
+		return 0
+	}
+	sum := 0.0
+	for i := range v.design.strings {
+		l := &v.loops[i]
+		sum += float64(float64(l.mix) * l.bank.energy[l.lane])
+	}
+	if v.fading {
+		left := float64(v.fadeLeft(v.pool.clock()))
+		sum *= left * left
+	}
+	return sum
+}
 
 // Render writes len(out) frames, mono, of a voice that is alone in its pool. drive, nil or as long, is a force on
 // the bridge that the strings feel. What a call renders does not depend on how the
@@ -334,39 +356,14 @@ func (v *Voice) Render(out, drive []float32) {
 	}
 }
 
-// step prepares the next control step.
-func (v *Voice) step() {
-	v.fresh = false
-	power := 0.0
-	for i := range v.design.strings {
-		l := &v.loops[i]
-		power += float64(float64(l.mix) * l.take())
-	}
-	if v.fading {
-		v.faded = max(0, v.faded-float32(float32(Grid-v.fadeOf)*v.fadeStep()))
-		v.fadeOf = 0
-		power *= float64(v.faded * v.faded)
-	}
-	v.energy += float64((power/Grid - v.energy) * v.leak)
-	if d := v.design; d.tension > 0 && d.hardest > 0 {
-		v.tighten(d.tension * min(1, v.energy/d.hardest))
-	}
-	for i := range v.design.strings {
-		l := &v.loops[i]
-		if !l.calm {
-			l.control()
-		}
-		for j := range l.strokes {
-			if s := &l.strokes[j]; !s.over() {
-				s.follow(l.glide.pitch)
-			}
-		}
-	}
-}
-
-// tighten follows the strings' tension, cents sharp, in steps too small to hear, so
+// tighten follows the strings' tension by their energy, in steps too small to hear, so
 // that a string that has almost settled need not move at every step.
-func (v *Voice) tighten(cents float64) {
+func (v *Voice) tighten() {
+	d := v.design
+	if d.tension <= 0 || d.hardest <= 0 {
+		return
+	}
+	cents := d.tension * min(1, v.Energy()/d.hardest)
 	const step = 0.02 // cents
 	if math.Abs(cents-v.strain) < step && (cents > step || v.strain == 0) {
 		return
@@ -390,17 +387,15 @@ func ease(x float32) float32 {
 // Silent says that the strings are below -120 dBFS with no stroke under way:
 // the voice may be used for another key.
 func (v *Voice) Silent() bool {
-	if v.design == nil || v.fading && v.faded <= 0 {
+	if v.design == nil || v.fading && v.fadeLeft(v.pool.clock()) <= 0 {
 		return true
 	}
 	for i := range v.design.strings {
 		if !v.loops[i].atRest() {
 			return false
 		}
-		for j := range v.loops[i].strokes {
-			if !v.loops[i].strokes[j].over() {
-				return false
-			}
+		if l := &v.loops[i]; l.bank.struck.has(l.lane) && !(l.strokes[0].over() && l.strokes[1].over()) {
+			return false
 		}
 	}
 	return true
