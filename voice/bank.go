@@ -58,6 +58,7 @@ func (b *bank) clear() {
 // take gives a loop a free lane, from the present frame on.
 func (b *bank) take(p *Pool, l *loop) {
 	b.catchUp(p, p.now)
+	b.done = p.now
 	lane := 0
 	for b.loops[lane] != nil {
 		lane++

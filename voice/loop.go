@@ -139,7 +139,7 @@ func (l *loop) trip() float64 {
 
 // need is how much of its part of the line a loop is to use: enough that it is seldom moved,
 // little enough that it stays in the cache.
-func (l *loop) need() int { return min(l.size, max(512, 3*l.keep())) }
+func (l *loop) need() int { return min(l.size, max(512, 4*l.keep())) }
 
 // slide moves the part of the line that is still needed to its front when there is no room
 // for n more frames, and returns for how many there is.

@@ -15,6 +15,7 @@ type Pool struct {
 	voices []Voice
 	live   []*Voice // that have a design
 	banks  []bank
+	top    int // banks from here on are empty
 	mix    lanes.Mix
 	now    int   // frames of the present step that are done
 	mixed  int   // of them, those that are in the mix
@@ -74,20 +75,21 @@ func (p *Pool) Step() {
 	p.now, p.mixed = 0, 0
 	p.steps++
 	p.mix.Clear(0, Grid)
-	for i := range p.banks {
-		if b := &p.banks[i]; b.used > 0 {
-			b.listen()
-		}
+	for p.top > 0 && p.banks[p.top-1].used == 0 {
+		p.top--
+	}
+	for i := range p.banks[:p.top] {
+		p.banks[i].listen()
 	}
 	if p.tense > 0 {
 		for _, v := range p.live {
 			v.tighten()
 		}
 	}
-	for i := range p.banks {
+	for i := range p.banks[:p.top] {
 		p.banks[i].control(p)
 	}
-	for i := range p.banks {
+	for i := range p.banks[:p.top] {
 		p.banks[i].begin()
 	}
 }
@@ -97,7 +99,7 @@ func (p *Pool) clock() int64 { return p.steps*Grid + int64(p.now) }
 
 // Advance renders all voices up to a frame of the present step, and mixes them.
 func (p *Pool) Advance(until int) {
-	for i := range p.banks {
+	for i := range p.banks[:p.top] {
 		b := &p.banks[i]
 		b.catchUp(p, until)
 		if b.used > 0 {
@@ -117,7 +119,7 @@ func (p *Pool) Sum(left, right []float32, from int) { p.mix.Sum(left, right, fro
 // frame: after a voice has been taken off whose numbers had run away.
 func (p *Pool) Again(from int) {
 	p.mix.Clear(from, p.mixed)
-	for i := range p.banks {
+	for i := range p.banks[:p.top] {
 		if b := &p.banks[i]; b.used > 0 {
 			b.Rewind(p.mixed - from)
 			p.kernel.Mix(&b.Bank, &p.mix, from, p.mixed)
@@ -127,12 +129,15 @@ func (p *Pool) Again(from int) {
 
 // place deals a loop a lane among its like.
 func (p *Pool) place(l *loop, solo bool) {
-	var empty *bank
+	empty := -1
 	for i := range p.banks {
 		b := &p.banks[i]
 		if b.used == 0 {
-			if empty == nil {
-				empty = b
+			if empty < 0 {
+				empty = i
+			}
+			if i >= p.top {
+				break
 			}
 			continue
 		}
@@ -141,6 +146,8 @@ func (p *Pool) place(l *loop, solo bool) {
 			return
 		}
 	}
-	empty.solo, empty.Sections = solo, int64(l.sections)
-	empty.take(p, l)
+	b := &p.banks[empty]
+	b.solo, b.Sections = solo, int64(l.sections)
+	b.take(p, l)
+	p.top = max(p.top, empty+1)
 }

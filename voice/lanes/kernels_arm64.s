@@ -263,69 +263,81 @@ groups:
 	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
 	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
+	WORD $0x4e617808 // fcvtl2 v8.2d, v0.4s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
+	WORD $0x4e617829 // fcvtl2 v9.2d, v1.4s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
+	WORD $0x4e61784a // fcvtl2 v10.2d, v2.4s
 	WORD $0x0e617867 // fcvtl v7.2d, v3.2s
-	FMOVQ (Bank_V1+0)(R1), F8
-	FMOVQ (Bank_V2+0)(R1), F9
-	FMOVQ (Bank_C1+0)(R1), F10
-	FMOVQ (Bank_C2+0)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4e61786b // fcvtl2 v11.2d, v3.4s
+	FMOVQ (Bank_V1+0)(R1), F12
+	FMOVQ (Bank_V2+0)(R1), F13
+	FMOVQ (Bank_V1+16)(R1), F0
+	FMOVQ (Bank_V2+16)(R1), F1
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70ddae // fmul v14.2d, v13.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4ee2d529 // fsub v9.2d, v9.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc8e // fmul v14.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd02 // fmul v2.2d, v8.2d, v16.2d
 	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4ee2d529 // fsub v9.2d, v9.2d, v2.2d
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc8e // fmul v14.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd02 // fmul v2.2d, v8.2d, v16.2d
 	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4ee2d54a // fsub v10.2d, v10.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dcae // fmul v14.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd22 // fmul v2.2d, v9.2d, v16.2d
 	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
+	WORD $0x4ee2d54a // fsub v10.2d, v10.2d, v2.2d
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dcae // fmul v14.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd22 // fmul v2.2d, v9.2d, v16.2d
 	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
-	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
+	WORD $0x4ee2d56b // fsub v11.2d, v11.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dcce // fmul v14.2d, v6.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd42 // fmul v2.2d, v10.2d, v16.2d
 	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x4ee2d56b // fsub v11.2d, v11.2d, v2.2d
 	FMOVQ F7, (Bank_V1+0)(R1)
 	FMOVQ F6, (Bank_V2+0)(R1)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
 	VMOV V15.D[0], V0.D[0]
+	WORD $0x4e616900 // fcvtn2 v0.4s, v8.2d
 	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
 	VMOV V15.D[0], V1.D[0]
+	WORD $0x4e616921 // fcvtn2 v1.4s, v9.2d
 	WORD $0x0e6168cf // fcvtn v15.2s, v6.2d
 	VMOV V15.D[0], V2.D[0]
+	WORD $0x4e616942 // fcvtn2 v2.4s, v10.2d
 	WORD $0x0e6168ef // fcvtn v15.2s, v7.2d
 	VMOV V15.D[0], V3.D[0]
-	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
-	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
-	WORD $0x4e617846 // fcvtl2 v6.2d, v2.4s
-	WORD $0x4e617867 // fcvtl2 v7.2d, v3.4s
-	FMOVQ (Bank_V1+16)(R1), F8
-	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bank_C1+16)(R1), F10
-	FMOVQ (Bank_C2+16)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
-	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
-	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
-	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
-	FMOVQ F7, (Bank_V1+16)(R1)
-	FMOVQ F6, (Bank_V2+16)(R1)
-	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
-	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
-	WORD $0x4e6168c2 // fcvtn2 v2.4s, v6.2d
-	WORD $0x4e6168e3 // fcvtn2 v3.4s, v7.2d
+	WORD $0x4e616963 // fcvtn2 v3.4s, v11.2d
 	FMOVQ (Bank_Power+0)(R0), F4
 	FMOVQ 0(R3), F16
 	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
@@ -452,30 +464,30 @@ rest:
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
-	FMOVQ (Bank_V1+0)(R1), F8
-	FMOVQ (Bank_V2+0)(R1), F9
-	FMOVQ (Bank_C1+0)(R1), F10
-	FMOVQ (Bank_C2+0)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4e617808 // fcvtl2 v8.2d, v0.4s
+	FMOVQ (Bank_V1+0)(R1), F12
+	FMOVQ (Bank_V2+0)(R1), F13
+	FMOVQ (Bank_V1+16)(R1), F0
+	FMOVQ (Bank_V2+16)(R1), F1
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70ddae // fmul v14.2d, v13.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
 	FMOVQ F4, (Bank_V1+0)(R1)
-	FMOVQ F8, (Bank_V2+0)(R1)
+	FMOVQ F12, (Bank_V2+0)(R1)
+	FMOVQ F8, (Bank_V1+16)(R1)
+	FMOVQ F0, (Bank_V2+16)(R1)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
 	VMOV V15.D[0], V0.D[0]
-	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
-	FMOVQ (Bank_V1+16)(R1), F8
-	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bank_C1+16)(R1), F10
-	FMOVQ (Bank_C2+16)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	FMOVQ F4, (Bank_V1+16)(R1)
-	FMOVQ F8, (Bank_V2+16)(R1)
-	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
+	WORD $0x4e616900 // fcvtn2 v0.4s, v8.2d
 	FMOVQ (Bank_Power+0)(R0), F4
 	FMOVQ 0(R3), F16
 	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
@@ -602,43 +614,47 @@ two:
 	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
+	WORD $0x4e617808 // fcvtl2 v8.2d, v0.4s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
-	FMOVQ (Bank_V1+0)(R1), F8
-	FMOVQ (Bank_V2+0)(R1), F9
-	FMOVQ (Bank_C1+0)(R1), F10
-	FMOVQ (Bank_C2+0)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4e617829 // fcvtl2 v9.2d, v1.4s
+	FMOVQ (Bank_V1+0)(R1), F12
+	FMOVQ (Bank_V2+0)(R1), F13
+	FMOVQ (Bank_V1+16)(R1), F0
+	FMOVQ (Bank_V2+16)(R1), F1
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70ddae // fmul v14.2d, v13.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4ee2d529 // fsub v9.2d, v9.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc8e // fmul v14.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd02 // fmul v2.2d, v8.2d, v16.2d
 	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4ee2d529 // fsub v9.2d, v9.2d, v2.2d
 	FMOVQ F5, (Bank_V1+0)(R1)
 	FMOVQ F4, (Bank_V2+0)(R1)
+	FMOVQ F9, (Bank_V1+16)(R1)
+	FMOVQ F8, (Bank_V2+16)(R1)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
 	VMOV V15.D[0], V0.D[0]
+	WORD $0x4e616900 // fcvtn2 v0.4s, v8.2d
 	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
 	VMOV V15.D[0], V1.D[0]
-	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
-	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
-	FMOVQ (Bank_V1+16)(R1), F8
-	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bank_C1+16)(R1), F10
-	FMOVQ (Bank_C2+16)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	FMOVQ F5, (Bank_V1+16)(R1)
-	FMOVQ F4, (Bank_V2+16)(R1)
-	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
-	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
+	WORD $0x4e616921 // fcvtn2 v1.4s, v9.2d
 	FMOVQ (Bank_Power+0)(R0), F4
 	FMOVQ 0(R3), F16
 	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
@@ -796,56 +812,64 @@ three:
 	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
+	WORD $0x4e617808 // fcvtl2 v8.2d, v0.4s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
+	WORD $0x4e617829 // fcvtl2 v9.2d, v1.4s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
-	FMOVQ (Bank_V1+0)(R1), F8
-	FMOVQ (Bank_V2+0)(R1), F9
-	FMOVQ (Bank_C1+0)(R1), F10
-	FMOVQ (Bank_C2+0)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4e61784a // fcvtl2 v10.2d, v2.4s
+	FMOVQ (Bank_V1+0)(R1), F12
+	FMOVQ (Bank_V2+0)(R1), F13
+	FMOVQ (Bank_V1+16)(R1), F0
+	FMOVQ (Bank_V2+16)(R1), F1
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70ddae // fmul v14.2d, v13.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4ee2d529 // fsub v9.2d, v9.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc8e // fmul v14.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd02 // fmul v2.2d, v8.2d, v16.2d
 	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4ee2d529 // fsub v9.2d, v9.2d, v2.2d
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc8e // fmul v14.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd02 // fmul v2.2d, v8.2d, v16.2d
 	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4ee2d54a // fsub v10.2d, v10.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dcae // fmul v14.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd22 // fmul v2.2d, v9.2d, v16.2d
 	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4ee2d54a // fsub v10.2d, v10.2d, v2.2d
 	FMOVQ F6, (Bank_V1+0)(R1)
 	FMOVQ F5, (Bank_V2+0)(R1)
+	FMOVQ F10, (Bank_V1+16)(R1)
+	FMOVQ F9, (Bank_V2+16)(R1)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
 	VMOV V15.D[0], V0.D[0]
+	WORD $0x4e616900 // fcvtn2 v0.4s, v8.2d
 	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
 	VMOV V15.D[0], V1.D[0]
+	WORD $0x4e616921 // fcvtn2 v1.4s, v9.2d
 	WORD $0x0e6168cf // fcvtn v15.2s, v6.2d
 	VMOV V15.D[0], V2.D[0]
-	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
-	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
-	WORD $0x4e617846 // fcvtl2 v6.2d, v2.4s
-	FMOVQ (Bank_V1+16)(R1), F8
-	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bank_C1+16)(R1), F10
-	FMOVQ (Bank_C2+16)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	FMOVQ F6, (Bank_V1+16)(R1)
-	FMOVQ F5, (Bank_V2+16)(R1)
-	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
-	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
-	WORD $0x4e6168c2 // fcvtn2 v2.4s, v6.2d
+	WORD $0x4e616942 // fcvtn2 v2.4s, v10.2d
 	FMOVQ (Bank_Power+0)(R0), F4
 	FMOVQ 0(R3), F16
 	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s

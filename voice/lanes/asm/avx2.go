@@ -94,6 +94,7 @@ func (a avx2) mulD(d, x, y reg)      { a.three("VMULPD", d, x, y) }
 func (a avx2) addD(d, x, y reg)      { a.three("VADDPD", d, x, y) }
 func (a avx2) subD(d, x, y reg)      { a.three("VSUBPD", d, x, y) }
 func (a avx2) addDm(d, x reg, m mem) { a.threeM("VADDPD", d, x, m) }
+func (a avx2) mulDm(d, x reg, m mem) { a.threeM("VMULPD", d, x, m) }
 func (a avx2) addBias(d, x reg)      { a.put("VADDPS bias<>(SB), Y%d, Y%d", x, d) }
 
 func (a avx2) widen(d, s reg, h half) {

@@ -106,8 +106,11 @@ func (k *kernel) remainder(n int) {
 // is written.
 func (k *kernel) group(n int) {
 	k.read(n)
-	for _, h := range []half{low, high} {
-		k.filter(n, h)
+	if k.moving || k.stiff {
+		k.filter(n, low)
+		k.filter(n, high)
+	} else {
+		k.loseBoth(n)
 	}
 	k.sound(n)
 	k.storeQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7})
@@ -254,6 +257,45 @@ func (k *kernel) loss(x []reg, h half) {
 	if k.moving {
 		k.store(k.double("C1", h), c1)
 		k.store(k.double("C2", h), c2)
+	}
+}
+
+// loseBoth takes n frames through the loss filter of still strings, both halves of the lanes side
+// by side: what one waits for, the other uses.
+func (k *kernel) loseBoth(n int) {
+	type side struct{ last, before, t reg }
+	sides := [...]side{low: {12, 13, 14}, high: {0, 1, 2}}
+	x := func(f int, h half) reg { return reg(4 + 4*int(h) + f) }
+	for f := range n {
+		k.widen(x(f, low), reg(f), low)
+		k.widen(x(f, high), reg(f), high)
+	}
+	for h := range sides {
+		k.load(sides[h].last, k.double("V1", half(h)))
+		k.load(sides[h].before, k.double("V2", half(h)))
+	}
+	for f := range n {
+		for h := range sides {
+			k.mulDm(sides[h].t, sides[h].before, k.double("C2", half(h)))
+		}
+		for h := range sides {
+			k.subD(x(f, half(h)), x(f, half(h)), sides[h].t)
+		}
+		for h := range sides {
+			k.mulDm(sides[h].t, sides[h].last, k.double("C1", half(h)))
+		}
+		for h := range sides {
+			k.subD(x(f, half(h)), x(f, half(h)), sides[h].t)
+			sides[h].before, sides[h].last = sides[h].last, x(f, half(h))
+		}
+	}
+	for h := range sides {
+		k.store(k.double("V1", half(h)), sides[h].last)
+		k.store(k.double("V2", half(h)), sides[h].before)
+	}
+	for f := range n {
+		k.narrow(reg(f), x(f, low), 15, low)
+		k.narrow(reg(f), x(f, high), 15, high)
 	}
 }
 

@@ -87,6 +87,7 @@ type machine interface {
 	addD(d, a, b reg)
 	subD(d, a, b reg)
 	addDm(d, a reg, m mem)
+	mulDm(d, a reg, m mem)
 	addBias(d, a reg)
 	widen(d, s reg, h half)
 	narrow(d, s, scratch reg, h half) // the other half of d stays

@@ -159,6 +159,7 @@ func (n neon) mulD(d, x, y reg)      { n.word(fmulD, d, x, y) }
 func (n neon) addD(d, x, y reg)      { n.word(faddD, d, x, y) }
 func (n neon) subD(d, x, y reg)      { n.word(fsubD, d, x, y) }
 func (n neon) addDm(d, x reg, m mem) { n.wordM(faddD, d, x, m) }
+func (n neon) mulDm(d, x reg, m mem) { n.wordM(fmulD, d, x, m) }
 func (n neon) addBias(d, x reg)      { n.word(faddF, d, x, biases) }
 
 func (n neon) widen(d, s reg, h half) {
