@@ -17,7 +17,6 @@ type bank struct {
 	solo   bool               // lanes that no vector unit can compute are computed one by one
 	motion lanes.Motion
 	done   int // frames of the present step
-	space  int // frames until a loop's part of the line is full
 
 	restless marks // something moves, or is going to
 	struck   marks // a stroke may be under way
@@ -25,6 +24,7 @@ type bank struct {
 
 	energy [lanes.Width]float64 // mean square of what the loop lately put out
 	leak   [lanes.Width]float64 // of the energy, a control step
+	end    [lanes.Width]int64   // where each loop's ring ends
 	quiet  [lanes.Width]int32   // frames since the last step in which the line was above silence
 
 	force  lanes.Force
@@ -52,6 +52,7 @@ func (b *bank) clear() {
 	*b = bank{}
 	for lane := range b.loops {
 		b.Rest(lane, idleAt)
+		b.end[lane] = math.MaxInt64
 	}
 }
 
@@ -66,7 +67,6 @@ func (b *bank) take(p *Pool, l *loop) {
 	b.loops[lane], l.bank, l.lane = l, b, lane
 	b.used++
 	b.live[lane] = -1
-	b.space = 0
 	b.Hush(lane)
 	l.glide.fresh = true
 }
@@ -78,7 +78,7 @@ func (b *bank) leave(p *Pool, lane int) {
 	b.Hush(lane)
 	b.loops[lane] = nil
 	b.used--
-	b.live[lane] = 0
+	b.live[lane], b.end[lane] = 0, math.MaxInt64
 	b.energy[lane] = 0
 	for _, m := range []*marks{&b.restless, &b.struck, &b.fading} {
 		m.clear(lane)
@@ -89,6 +89,7 @@ func (b *bank) leave(p *Pool, lane int) {
 func (b *bank) inherit(lane int, other *bank, from int) {
 	b.Copy(lane, &other.Bank, from)
 	b.energy[lane], b.leak[lane], b.quiet[lane] = other.energy[from], other.leak[from], other.quiet[from]
+	b.end[lane] = other.end[from]
 	to, had := []*marks{&b.restless, &b.struck, &b.fading}, []marks{other.restless, other.struck, other.fading}
 	for i := range to {
 		if had[i].has(from) {
@@ -174,9 +175,6 @@ func (b *bank) catchUp(p *Pool, until int) {
 		return
 	}
 	n := until - from
-	if b.space < n {
-		b.makeRoom(n)
-	}
 	if b.struck != 0 {
 		b.strike(p, from, until)
 	}
@@ -195,6 +193,9 @@ func (b *bank) catchUp(p *Pool, until int) {
 	}
 	for lane, live := range b.live {
 		b.At[lane] += int64(n) & live
+		if b.At[lane] >= b.end[lane] {
+			b.loops[lane].comeRound()
+		}
 	}
 	for m := b.fading; m != 0; {
 		lane := m.next()
@@ -203,20 +204,9 @@ func (b *bank) catchUp(p *Pool, until int) {
 			b.Out[f][lane] *= v.fadeAt(f)
 		}
 	}
-	b.space -= n
 	if b.forced {
 		clear(b.force[from:until])
 		b.forced = false
-	}
-}
-
-// makeRoom moves the lines that are almost full.
-func (b *bank) makeRoom(n int) {
-	b.space = math.MaxInt
-	for _, l := range b.loops {
-		if l != nil {
-			b.space = min(b.space, l.slide(n))
-		}
 	}
 }
 

@@ -64,7 +64,7 @@ func (l *loop) stride() *smoothing {
 
 // hold clamps a pitch to what the line and the rate can sound.
 func (l *loop) hold(f0 float64) float64 {
-	longest := float64(l.size-8*Grid) / lineTurns
+	longest := float64(l.size-4*Grid) / lineTurns
 	return min(max(f0, l.mode.rate/longest, l.mode.lowest), topPitch*l.mode.rate)
 }
 
@@ -408,7 +408,7 @@ func (l *loop) beginGlide() {
 	f := &l.bank.Glide[l.lane].Finger
 	f.Firm = float32(l.damped.finger)
 	f.Side = int64(l.trip() / float64(max(2, l.damped.node)) * (1 << 32))
-	f.Floor = int64(l.start)
+	l.widen()
 }
 
 // set puts a lane on the path, its taps standing for Block frames.

@@ -2,6 +2,7 @@ package voice
 
 import (
 	"math"
+	"slices"
 
 	"tautwire/voice/lanes"
 )
@@ -42,9 +43,9 @@ func (m motion) alone() lanes.Motion {
 // Each y is computed by itself, from samples older than it: there is no block,
 // so the pitch is limited by the rate alone.
 //
-// The line is straight, not a ring: samples are appended, and when the loop's part of
-// it is full its newest samples, all that a trip can reach, move to the front. So no
-// index is ever wrapped.
+// The line is a ring, as short as a trip allows, so that many strings stay in the cache. Its last
+// samples are repeated before its first, and what is written past its end is moved to the front
+// afterwards, so that no index is wrapped within some frames.
 type loop struct {
 	mode     *mode
 	voice    *Voice
@@ -55,8 +56,7 @@ type loop struct {
 	pitch        float64 // Hz: the design's
 	asked, cents float64 // from there: asked for, and already heard of
 
-	start, size int // the loop's part of the pool's line
-	room        int // how much of it is used
+	start, size int // the ring's first sample in the pool's line, and the most that it can hold
 	bank        *bank
 	lane        int
 
@@ -85,11 +85,8 @@ func (l *loop) tune(f0 float64) {
 	l.settle()
 	l.length = int(l.glide.s[2])
 	l.house()
-	l.room = l.need()
-	keep := l.keep()
-	l.bank.At[l.lane] = int64(l.start + keep)
 	l.bank.quiet[l.lane] = math.MaxInt32 / 2
-	clear(l.pool.bench.Line[l.start : l.start+keep])
+	l.layOut()
 	l.stand()
 	l.wake() // what has been asked of the string is still to come
 }
@@ -137,28 +134,42 @@ func (l *loop) trip() float64 {
 	return g.s[2] + max(0, l.mode.rate/g.pitch-g.target.delay)
 }
 
-// need is how much of its part of the line a loop is to use: enough that it is seldom moved,
-// little enough that it stays in the cache.
-func (l *loop) need() int { return min(l.size, max(512, 4*l.keep())) }
+// ringRoom is what a loop's part of the line holds beside its ring.
+const ringRoom = lanes.History + lanes.Front + Grid + lanes.Spill
 
-// slide moves the part of the line that is still needed to its front when there is no room
-// for n more frames, and returns for how many there is.
-func (l *loop) slide(n int) int {
-	at := int(l.bank.At[l.lane])
-	if at+n+lanes.Spill > l.start+l.room {
-		keep := min(l.keep(), at-l.start)
-		copy(l.pool.bench.Line[l.start:], l.pool.bench.Line[at-keep:at])
-		at = l.start + keep
-		l.bank.At[l.lane] = int64(at)
-		l.room = l.need()
-	}
-	return l.start + l.room - lanes.Spill - at
+// layOut lays an empty ring for the present delay.
+func (l *loop) layOut() {
+	b, lane := l.bank, l.lane
+	ring := min(l.keep(), l.size)
+	b.At[lane], b.Ring[lane] = int64(l.start), int64(ring)
+	b.Floor[lane], b.end[lane] = int64(l.start-lanes.Front), int64(l.start+ring)
+	clear(l.pool.bench.Line[l.start-lanes.Front-lanes.History : l.start+ring])
 }
 
-// past is the last n frames.
-func (l *loop) past(n int) []float32 {
-	at := l.bank.At[l.lane]
-	return l.pool.bench.Line[at-int64(n) : at]
+// comeRound takes the loop back to the ring's front.
+func (l *loop) comeRound() {
+	b, lane, line := l.bank, l.lane, l.pool.bench.Line
+	end, at := b.end[lane], b.At[lane]
+	copy(line[l.start-lanes.Front:], line[end-lanes.Front:at])
+	b.At[lane] -= b.Ring[lane]
+}
+
+// widen makes the ring longer where the delay is going to need it. What is in it is
+// turned until the oldest comes first, and the loop goes on at its end.
+func (l *loop) widen() {
+	b, lane := l.bank, l.lane
+	need := l.keep()
+	if need <= int(b.Ring[lane]) {
+		return
+	}
+	ring := l.pool.bench.Line[l.start : l.start+int(b.Ring[lane])]
+	at := int(b.At[lane]) - l.start
+	slices.Reverse(ring[:at])
+	slices.Reverse(ring[at:])
+	slices.Reverse(ring)
+	b.At[lane] = b.end[lane]
+	b.Ring[lane] = int64(min(2*need, l.size))
+	b.end[lane] = int64(l.start) + b.Ring[lane]
 }
 
 // follow moves the strokes' echoes with the pitch.

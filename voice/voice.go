@@ -11,7 +11,11 @@
 // Real-Time Sound Synthesis", JAES 44(5), 1996.
 package voice
 
-import "math"
+import (
+	"math"
+
+	"tautwire/voice/lanes"
+)
 
 // maxLoops is a course of three strings in two polarizations each.
 const maxLoops = 6
@@ -72,7 +76,7 @@ func (v *Voice) Fit(d *Design) {
 	for i, s := range d.strings {
 		v.loops[i] = loop{
 			mode: d.modes[s.mode], voice: v, pool: v.pool, mix: s.mix, pitch: d.pitch * octaves(s.cents),
-			start: v.start + i*slot, size: slot,
+			start: v.start + i*slot + lanes.History + lanes.Front, size: slot - ringRoom,
 		}
 		l := &v.loops[i]
 		l.tune(l.pitch)

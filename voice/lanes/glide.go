@@ -41,11 +41,10 @@ type Glide struct {
 }
 
 // Finger lies on a string at a part of its length: it mixes what is read with what is there Side,
-// in 2^-32 samples, before and after, each taken Firm. Nothing is read before Floor.
+// in 2^-32 samples, before and after, each taken Firm.
 type Finger struct {
-	Firm  float32
-	Side  int64
-	Floor int64
+	Firm float32
+	Side int64
 }
 
 // SetTaps gives a lane taps that stand.
@@ -105,8 +104,8 @@ func (b *Bank) touched(p pass, w *Bench, at int64) {
 		delay := g.center + int64(float64(b.Offset[l])*(1<<32))
 		here := at + int64(i)
 		before, after := delay-f.Side, delay+f.Side
-		if before>>32 > Newest && here-after>>32-Taps >= f.Floor {
-			sides := w.Rows.read(w.Line, here, before) + w.Rows.read(w.Line, here, after)
+		if before>>32 > Newest && after>>32+Taps < b.Ring[l] {
+			sides := b.readAt(l, w, here, before) + b.readAt(l, w, here, after)
 			x = float32((1-2*f.Firm)*x) + float32(f.Firm*sides)
 		}
 		b.bend(l)
@@ -115,14 +114,17 @@ func (b *Bank) touched(p pass, w *Bench, at int64) {
 	}
 }
 
-// read is what a line holds a delay, in 2^-32 samples, before at.
-func (r *Rows) read(line []float32, at, delay int64) float32 {
+// readAt is what a lane's line holds a delay, in 2^-32 samples, before at.
+func (b *Bank) readAt(lane int, w *Bench, at, delay int64) float32 {
 	const shift = 32 - rowBits
-	row := &r[uint32(delay)>>shift]
+	row := &w.Rows[uint32(delay)>>shift]
 	center := delay&^(1<<shift-1) + 1<<(shift-1)
 	offset := float32(int32(delay-center)) / (1 << 32)
 	first := at - delay>>32 - (Taps - 1 - Newest)
-	s := line[first : first+Taps]
+	if first < b.Floor[lane] {
+		first += b.Ring[lane]
+	}
+	s := w.Line[first : first+Taps]
 	x := float32(0)
 	for i, k := range row.Curve[:CurveTaps] {
 		x += float32(k * s[Taps-1-firstCurve-i])

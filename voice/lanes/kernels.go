@@ -52,9 +52,8 @@ func onLines(kernel func(b *Bank, w *Bench, force *floats, from, frames int)) ru
 	return func(b *Bank, w *Bench, force *Force, ahead, from, frames int) {
 		base := uintptr(unsafe.Pointer(unsafe.SliceData(w.Line)))
 		for i, at := range b.At {
-			at += int64(ahead)
-			w.source[i] = base + 4*uintptr(at-b.Back[i]+Taps-1)
-			w.target[i] = base + 4*uintptr(at)
+			w.source[i] = base + 4*uintptr(b.oldest(i, int64(ahead))+Taps-1)
+			w.target[i] = base + 4*uintptr(at+int64(ahead))
 		}
 		kernel(b, w, &force[from], from, frames)
 		runtime.KeepAlive(w.Line)

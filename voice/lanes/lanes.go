@@ -24,6 +24,9 @@ const (
 	// History is how many samples before the oldest that a read needs must
 	// exist in the line: they are loaded, and not used.
 	History = 1
+	// Front is how many samples before a ring's first are to be the same as before its end, so
+	// that no read has to be cut in two.
+	Front = 64
 	// Spill is how many samples past the last one rendered a kernel may
 	// overwrite in a line.
 	Spill = 3
@@ -69,6 +72,8 @@ type Bank struct {
 	Node                                [MaxSections + 1]Node
 	At                                  [Width]int64 // where each lane's next sample goes in the line
 	Back                                [Width]int64 // from there to the oldest sample that its read needs
+	Floor                               [Width]int64 // where the line's oldest sample may be; a read from below it is Ring later
+	Ring                                [Width]int64 // samples of the line until its place comes round
 	Sections                            int64        // 0: no shelf either
 
 	// What only Go code knows.
@@ -189,10 +194,19 @@ func (k Kernel) Render(b *Bank, w *Bench, force *Force, motion Motion, from, unt
 }
 
 func (b *Bank) check(lane int, least, ahead int64, line []float32) {
-	at, back := b.At[lane], b.Back[lane]
-	if back < least || at-back < History || at+ahead > int64(len(line)) {
+	first := b.oldest(lane, 0)
+	if b.Back[lane] < least || first < History || first+ahead+Taps > int64(len(line)) || b.At[lane]+ahead > int64(len(line)) {
 		panic("lanes: a lane reaches outside its line")
 	}
+}
+
+// oldest is the place of the oldest sample that a lane's read needs some frames from now.
+func (b *Bank) oldest(lane int, ahead int64) int64 {
+	at := b.At[lane] + ahead - b.Back[lane]
+	if at < b.Floor[lane] {
+		at += b.Ring[lane]
+	}
+	return at
 }
 
 // nothing is no force. It is never written.
@@ -209,7 +223,8 @@ func (b *Bank) Copy(to int, other *Bank, from int) {
 	for i := range dd {
 		dd[i][to] = ss[i][from]
 	}
-	b.At[to], b.Back[to], b.Glide[to], b.own[to] = other.At[from], other.Back[from], other.Glide[from], other.own[from]
+	b.At[to], b.Back[to], b.Floor[to], b.Ring[to] = other.At[from], other.Back[from], other.Floor[from], other.Ring[from]
+	b.Glide[to], b.own[to] = other.Glide[from], other.own[from]
 }
 
 // Rest silences a lane, which reads and writes the line at the place given.
@@ -220,7 +235,8 @@ func (b *Bank) Rest(lane int, at int64) {
 	for _, x := range b.doubles() {
 		x[lane] = 0
 	}
-	b.At[lane], b.Back[lane], b.Glide[lane], b.own[lane] = at, Taps-1+Shortest, Glide{}, Row{}
+	b.At[lane], b.Back[lane], b.Floor[lane], b.Ring[lane] = at, Taps-1+Shortest, 0, 0
+	b.Glide[lane], b.own[lane] = Glide{}, Row{}
 }
 
 // Hush takes a lane's frames of the present step from what is to be mixed.

@@ -67,7 +67,7 @@ type pass struct {
 
 func (b *Bank) pass(lane int, w *Bench, force *Force, ahead, from, frames int) pass {
 	at := b.At[lane] + int64(ahead)
-	first := at - b.Back[lane]
+	first := b.oldest(lane, int64(ahead))
 	return pass{
 		lane:   lane,
 		source: w.Line[first : first+int64(frames)+Taps-1],
