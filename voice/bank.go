@@ -128,26 +128,31 @@ func (b *bank) begin() {
 	for m := b.struck; m != 0; {
 		b.loops[m.next()].follow()
 	}
-	fastest := 0.0
+	fastest, shortest := 0.0, math.Inf(1)
 	for m := b.restless; m != 0; {
 		l := b.loops[m.next()]
 		switch {
 		case l.motion == gliding:
 			b.motion = lanes.Gliding
 			fastest = max(fastest, l.glide.fast)
+			shortest = min(shortest, l.glide.s[2])
 		case l.motion != still:
 			b.motion = max(b.motion, lanes.Moving)
 		}
 	}
 	if b.motion == lanes.Gliding {
-		b.beginGlides(fastest)
+		b.beginGlides(fastest, shortest)
 	}
 }
 
 // beginGlides sets the gliding loops on their way, the taps to stand for
-// as many frames as the fastest (samples a frame) allows.
-func (b *bank) beginGlides(fastest float64) {
-	const near = 0.06 // samples: how far the delay may be from the taps' own
+// as many frames as the fastest (samples a frame) and the shortest (samples) allow.
+func (b *bank) beginGlides(fastest, shortest float64) {
+	// how far the delay may be from the taps' own, samples
+	near := 0.06
+	if fastest < slow && shortest > 100 { // which makes few trips
+		near = 0.1
+	}
 	before := b.Block
 	b.Block = Grid
 	for b.Block > 1 && fastest*float64(b.Block-1)/2 > near {

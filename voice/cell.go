@@ -10,42 +10,37 @@ const cellsInOctave = 24
 // being bent need not solve them at every step. Nothing is solved ahead of need, and one place at
 // a time, so that no step takes long.
 type cell struct {
-	first int // of the four, in parts of an octave above the mode's lowest
-	known [4]bool
-	touch touch
-	nodes [4]coefficients
+	first   int // of the four, in parts of an octave above the mode's lowest
+	known   [4]bool
+	touch   touch
+	pitches [4]float64 // Hz
+	nodes   [4]coefficients
 }
 
-// approximate finds the coefficients at a pitch (Hz) from the cell around it, and reports whether it
-// could.
-func (c *cell) approximate(m *mode, f0 float64, t touch, out *coefficients) bool {
-	x := math.Log2(f0/m.lowest) * cellsInOctave
-	first := int(math.Floor(x)) - 1
-	if first < 0 || m.atNode(first+3) > topPitch*m.rate {
-		return false
-	}
-	c.moveTo(first, t)
+// approximate finds the coefficients at a pitch, x parts of an octave above the mode's lowest, and
+// the pitch (Hz), from the cell around it, and reports whether it could.
+func (c *cell) approximate(m *mode, x float64, t touch, out *coefficients) (f0 float64, ok bool) {
+	floor := math.Floor(x)
+	c.moveTo(int(floor)-1, t)
 	for i := range c.nodes {
 		if !c.known[i] {
-			f := m.atNode(first + i)
-			n := &c.nodes[i]
-			m.at(f, t, n)
-			n.delay -= m.rate / f // which leaves what is even in pitch
+			c.pitches[i] = m.lowest * math.Exp2(float64(c.first+i)/cellsInOctave)
+			m.at(c.pitches[i], t, &c.nodes[i])
 			c.known[i] = true
 			if c.known != [4]bool{true, true, true, true} {
-				return false
+				return 0, false
 			}
 		}
 		if c.nodes[i].direct > 0 {
-			return false
+			return 0, false
 		}
 	}
-	w := cubic(x - math.Floor(x))
-	*out = coefficients{delay: m.rate / f0}
-	for i, k := range w {
+	*out = coefficients{}
+	for i, k := range cubic(x - floor) {
+		f0 += float64(k * c.pitches[i])
 		out.add(k, &c.nodes[i], len(m.sections))
 	}
-	return out.loss.stable()
+	return f0, out.loss.stable()
 }
 
 // moveTo makes the cell one that begins at a place, and keeps what it knows of it.
@@ -58,17 +53,16 @@ func (c *cell) moveTo(first int, t touch) {
 	for ; by > 0; by-- {
 		copy(c.nodes[:], c.nodes[1:])
 		copy(c.known[:], c.known[1:])
+		copy(c.pitches[:], c.pitches[1:])
 		c.known[3] = false
 	}
 	for ; by < 0; by++ {
 		copy(c.nodes[1:], c.nodes[:3])
 		copy(c.known[1:], c.known[:3])
+		copy(c.pitches[1:], c.pitches[:3])
 		c.known[0] = false
 	}
 }
-
-// atNode is a pitch (Hz) at which cells hold coefficients.
-func (m *mode) atNode(i int) float64 { return m.lowest * math.Exp2(float64(i)/cellsInOctave) }
 
 // cubic gives Lagrange's weights at t for the places -1, 0, 1 and 2.
 func cubic(t float64) [4]float64 {

@@ -17,7 +17,6 @@ const (
 // glide is the way of a string's length and coefficients to where they are to be.
 type glide struct {
 	aim     float64 // the pitch that is asked for (Hz)
-	last    float64 // the same at the step before
 	palmAim float64 // how much of the muted string's decay it is to have, 0 to 1
 	darkAim float64 // how much of its darkness
 	touch   touch   // both, on their way there
@@ -44,14 +43,15 @@ type glide struct {
 // longSteps is over how many control steps a string glides at once that does so slowly.
 const longSteps = 4
 
+const (
+	slow = 0.03   // samples a frame: the fastest of long ways
+	far  = 3.3e-4 // s of delay: the longest of them
+)
+
 // stride chooses over how many steps the string is to glide at once: a way of many
 // steps costs less, but would be heard where the pitch slams. Short ways stay so until the string has
 // come to rest, for a change between them is a change of its lag.
 func (l *loop) stride() *smoothing {
-	const (
-		slow = 0.03   // samples a frame
-		far  = 3.3e-4 // s of delay to go
-	)
 	g, m := &l.glide, l.pool.maker
 	ahead := (max(g.aim/g.pitch, g.pitch/g.aim)-1)*g.target.delay + math.Abs(g.target.delay-g.s[2])
 	touched := l.damped.touched() || g.touch != touch{g.palmAim, g.darkAim}
@@ -60,6 +60,34 @@ func (l *loop) stride() *smoothing {
 		return m.smooth
 	}
 	return m.smoothLong
+}
+
+// coast leads a string on that is being bent slowly, towards what the cell around the
+// pitch that is asked for approximates. It reports whether that will do.
+func (l *loop) coast() bool {
+	g, m := &l.glide, l.pool.maker
+	if g.swift || g.short || g.touch != (touch{g.palmAim, g.darkAim}) || l.damped.rate != l.damped.aim || l.damped.touched() {
+		return false
+	}
+	x := l.place + l.asked*(cellsInOctave/1200.0)
+	if x < l.low || x > l.high {
+		return false
+	}
+	var c coefficients
+	f0, ok := g.cell.approximate(l.mode, x, g.touch, &c)
+	ahead := math.Abs(c.delay-g.target.delay) + math.Abs(g.target.delay-g.s[2])
+	if !ok || ahead > far*m.rate || math.Abs(g.speed) > slow {
+		return false
+	}
+	g.target, g.pitch, g.aim, g.rough, g.smooth = c, f0, f0, true, m.smoothLong
+	l.followTarget()
+	return true
+}
+
+// bounds sets how far, in parts of an octave, a pitch may be bent by approximation.
+func (l *loop) bounds() {
+	place := func(f0 float64) float64 { return cellsInOctave * math.Log2(f0/l.mode.lowest) }
+	l.place, l.low, l.high = place(l.pitch), place(l.hold(0))+2, place(l.hold(math.Inf(1)))-3
 }
 
 // hold clamps a pitch to what the line and the rate can sound.
@@ -87,25 +115,16 @@ func (l *loop) glideStep() bool {
 		return false
 	}
 	g.smooth = l.stride()
-	if moving := g.aim != g.last; !g.arrived() || g.rough {
-		g.last = g.aim
+	if !g.arrived() || g.rough {
 		g.touch.palm = toward(g.touch.palm, g.palmAim, 0.2, 1e-4)
 		g.touch.dark = toward(g.touch.dark, g.darkAim, 0.2, 1e-4)
 		// at most slew samples of delay a frame: |dD| = D dp/p
 		most := 1 + slew*g.smooth.frames/max(g.target.delay, shortest)
 		g.pitch = min(max(g.aim, g.pitch/most), g.pitch*most)
-		g.rough = moving && g.touch == touch{g.palmAim, g.darkAim} && g.cell.approximate(l.mode, g.pitch, g.touch, &g.target)
-		if !g.rough {
-			l.mode.at(g.pitch, g.touch, &g.target)
-		}
+		l.mode.at(g.pitch, g.touch, &g.target)
+		g.rough = false
 	}
-	for i := range g.stage {
-		in := &g.target
-		if i > 0 {
-			in = &g.stage[i-1]
-		}
-		g.stage[i].approach(in, g.smooth.step, l.sections)
-	}
+	l.followTarget()
 	if g.short {
 		in := g.pitch
 		for i := range g.direct {
@@ -122,11 +141,21 @@ func (l *loop) glideStep() bool {
 		l.enterDirect()
 		return true
 	}
-	if g.arrived() && !g.rough && math.Abs(g.s[2]-g.target.delay) < settled && math.Abs(g.s[0]-g.target.delay) < settled {
+	if g.arrived() && math.Abs(g.s[2]-g.target.delay) < settled && math.Abs(g.s[0]-g.target.delay) < settled {
 		l.settle()
 		return false
 	}
 	return true
+}
+
+// followTarget takes the smoothed coefficients a way on.
+func (l *loop) followTarget() {
+	g := &l.glide
+	in := &g.target
+	for i := range g.stage {
+		g.stage[i].approach(in, g.smooth.step, l.sections)
+		in = &g.stage[i]
+	}
 }
 
 // arrived says that the target is what is asked for.

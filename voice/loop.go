@@ -55,6 +55,8 @@ type loop struct {
 
 	pitch        float64 // Hz: the design's
 	asked, cents float64 // from there: asked for, and already heard of
+	place        float64 // of the pitch, in parts of an octave above the mode's lowest
+	low, high    float64 // how far from there a cell serves
 
 	start, size int // the ring's first sample in the pool's line, and the most that it can hold
 	bank        *bank
@@ -80,7 +82,7 @@ func (l *loop) tune(f0 float64) {
 	m := l.mode
 	l.glide = glide{}
 	f0 = l.hold(f0)
-	l.glide.aim, l.glide.last, l.glide.pitch = f0, f0, f0
+	l.glide.aim, l.glide.pitch = f0, f0
 	l.sections = len(m.sections)
 	l.settle()
 	l.length = int(l.glide.s[2])
@@ -189,7 +191,11 @@ func (l *loop) control() {
 			return
 		}
 	}
-	if l.cents != l.asked {
+	if bent := l.cents != l.asked; bent && l.coast() {
+		l.cents = l.asked
+		l.beginGlide()
+		return
+	} else if bent || g.rough {
 		l.cents = l.asked
 		g.aim = l.hold(l.pitch * octaves(l.asked))
 	}
