@@ -9,16 +9,16 @@ import (
 // Maker compiles strings for one sample rate. It holds the tables that all
 // strings of the rate share and may be used from several goroutines.
 type Maker struct {
-	rate               float64
-	ip                 *interpolator
-	rows               *lanes.Rows
-	smooth, smoothLong *smoothing
+	rate                              float64
+	ip                                *interpolator
+	rows                              *lanes.Rows
+	smooth, smoothLong, smoothLongest *smoothing
 }
 
 // NewMaker prepares to make strings for a sample rate in Hz.
 func NewMaker(rate float64) *Maker {
 	ip := newInterpolator()
-	return &Maker{rate: rate, ip: ip, rows: newRows(ip), smooth: newSmoothing(rate, 1), smoothLong: newSmoothing(rate, longSteps)}
+	return &Maker{rate: rate, ip: ip, rows: newRows(ip), smooth: newSmoothing(rate, 1), smoothLong: newSmoothing(rate, longSteps), smoothLongest: newSmoothing(rate, longestSteps)}
 }
 
 // Rate is the sample rate in Hz.

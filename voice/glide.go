@@ -40,8 +40,9 @@ type glide struct {
 	fresh  bool       // the lane is not on it yet
 }
 
-// longSteps is over how many control steps a string glides at once that does so slowly.
-const longSteps = 4
+// longSteps is over how many control steps a string glides at once that does so slowly, and
+// longestSteps very slowly.
+const longSteps, longestSteps = 4, 8
 
 const (
 	slow = 0.03   // samples a frame: the fastest of long ways
@@ -79,7 +80,13 @@ func (l *loop) coast() bool {
 	if !ok || ahead > far*m.rate || math.Abs(g.speed) > slow {
 		return false
 	}
-	g.target, g.pitch, g.aim, g.rough, g.smooth = c, f0, f0, true, m.smoothLong
+	g.target, g.pitch, g.aim, g.rough = c, f0, f0, true
+	const verySlow = 1.0 / 6
+	if g.smooth == m.smoothLong || ahead > verySlow*far*m.rate || math.Abs(g.speed) > verySlow*slow {
+		g.smooth = m.smoothLong
+	} else {
+		g.smooth = m.smoothLongest
+	}
 	l.followTarget()
 	return true
 }
@@ -101,6 +108,7 @@ func (l *loop) settle() {
 	g := &l.glide
 	l.mode.at(g.pitch, g.touch, &g.target)
 	g.from, g.slope, g.speed, g.rough, g.swift = g.target.delay, 0, 0, false, false
+	g.smooth = l.pool.maker.smooth
 	for i := range g.s {
 		g.s[i], g.stage[i], g.direct[i] = g.target.delay, g.target, g.pitch
 	}

@@ -10,7 +10,7 @@ import (
 
 // tuned puts a string of a mode on a voice of its own.
 func tuned(m *mode, ip *interpolator, f0 float64) *loop {
-	maker := &Maker{rate: m.rate, ip: ip, rows: newRows(ip), smooth: newSmoothing(m.rate, 1), smoothLong: newSmoothing(m.rate, longSteps)}
+	maker := &Maker{rate: m.rate, ip: ip, rows: newRows(ip), smooth: newSmoothing(m.rate, 1), smoothLong: newSmoothing(m.rate, longSteps), smoothLongest: newSmoothing(m.rate, longestSteps)}
 	v := newVoice(maker, 1<<17)
 	v.Fit(&Design{maker: maker, pitch: f0, modes: [2]*mode{m}, strings: []strand{{mix: 1}}})
 	return &v.loops[0]
