@@ -142,7 +142,8 @@ const ringRoom = lanes.History + lanes.Front + Grid + lanes.Spill
 // layOut lays an empty ring for the present delay.
 func (l *loop) layOut() {
 	b, lane := l.bank, l.lane
-	ring := min(l.keep(), l.size)
+	const least = 512 // or it would come round too often
+	ring := min(max(l.keep(), least), l.size)
 	b.At[lane], b.Ring[lane] = int64(l.start), int64(ring)
 	b.Floor[lane], b.end[lane] = int64(l.start-lanes.Front), int64(l.start+ring)
 	clear(l.pool.bench.Line[l.start-lanes.Front-lanes.History : l.start+ring])

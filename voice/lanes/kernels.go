@@ -19,7 +19,16 @@ func stillPlain(b *Bank, w *Bench, force *floats, from, frames int)
 func movingPlain(b *Bank, w *Bench, force *floats, from, frames int)
 
 //go:noescape
-func stillStiff(b *Bank, w *Bench, force *floats, from, frames int)
+func stillStiff1(b *Bank, w *Bench, force *floats, from, frames int)
+
+//go:noescape
+func stillStiff2(b *Bank, w *Bench, force *floats, from, frames int)
+
+//go:noescape
+func stillStiff3(b *Bank, w *Bench, force *floats, from, frames int)
+
+//go:noescape
+func stillStiff4(b *Bank, w *Bench, force *floats, from, frames int)
 
 //go:noescape
 func movingStiff(b *Bank, w *Bench, force *floats, from, frames int)
@@ -38,24 +47,30 @@ func mix(b *Bank, w *Mix, from, frames int)
 
 // vector is the kernel of a vector unit.
 func vector(name string) Kernel {
-	return Kernel{
+	moving, gliding := onLines(movingStiff), onLines(glidingStiff)
+	k := Kernel{
 		name:  name,
 		plain: kinds{onLines(stillPlain), onLines(movingPlain), onLines(glidingPlain)},
-		stiff: kinds{onLines(stillStiff), onLines(movingStiff), onLines(glidingStiff)},
 		turn:  turn,
 		mix:   mix,
 	}
+	for i, still := range []kernel{stillStiff1, stillStiff2, stillStiff3, stillStiff4} {
+		k.stiff[i+1] = kinds{onLines(still), moving, gliding}
+	}
+	return k
 }
 
+type kernel func(b *Bank, w *Bench, force *floats, from, frames int)
+
 // onLines tells a kernel where the lines are.
-func onLines(kernel func(b *Bank, w *Bench, force *floats, from, frames int)) run {
+func onLines(do kernel) run {
 	return func(b *Bank, w *Bench, force *Force, ahead, from, frames int) {
 		base := uintptr(unsafe.Pointer(unsafe.SliceData(w.Line)))
 		for i, at := range b.At {
 			w.source[i] = base + 4*uintptr(b.oldest(i, int64(ahead))+Taps-1)
 			w.target[i] = base + 4*uintptr(at+int64(ahead))
 		}
-		kernel(b, w, &force[from], from, frames)
+		do(b, w, &force[from], from, frames)
 		runtime.KeepAlive(w.Line)
 	}
 }

@@ -914,6 +914,6490 @@ done:
 	BNE pass
 	RET
 
+// func stillStiff1(b *Bank, w *Bench, force *floats, from, frames int)
+TEXT ·stillStiff1(SB), NOSPLIT, $0-40
+	MOVD $bias<>(SB), R11
+	FMOVQ (R11), F31
+	MOVD $0, R12
+
+pass:
+	MOVD b+0(FP), R11
+	ADD R12, R11, R0
+	ADD R12<<1, R11, R1
+	MOVD w+8(FP), R11
+	ADD R12<<1, R11, R7
+	ADD R12, R11, R13
+	ADD $Bench_window, R13, R4
+	MOVD from+24(FP), R11
+	ADD $Bank_Out, R0, R2
+	ADD R11<<5, R2, R2
+	MOVD force+16(FP), R3
+	ADD R12, R3, R3
+	MOVD frames+32(FP), R9
+	MOVD $-48, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 0(R4)
+	FMOVQ F1, 32(R4)
+	FMOVQ F2, 64(R4)
+	FMOVQ F3, 96(R4)
+	ADD $16, R8, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 128(R4)
+	FMOVQ F1, 160(R4)
+	FMOVQ F2, 192(R4)
+	FMOVQ F3, 224(R4)
+	ADD $16, R8, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 256(R4)
+	FMOVQ F1, 288(R4)
+	FMOVQ F2, 320(R4)
+	FMOVQ F3, 352(R4)
+	ADD $16, R8, R8
+
+groups:
+	CMP $4, R9
+	BLT rest
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ F3, (Bench_read+96)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc6f // fmul v15.2d, v3.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee1d44e // fsub v14.2d, v2.2d, v1.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d46f // fsub v15.2d, v3.2d, v0.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x0e6169ae // fcvtn v14.2s, v13.2d
+	FMOVD F14, (Bench_filtered+64)(R13)
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc4f // fmul v15.2d, v2.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee0d42e // fsub v14.2d, v1.2d, v0.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4eedd44f // fsub v15.2d, v2.2d, v13.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+96)(R13)
+	FMOVQ F12, (Bank_V1+0)(R1)
+	FMOVQ F10, (Bank_V2+0)(R1)
+	FMOVQ F1, (Bank_Node+0)(R1)
+	FMOVQ F2, (Bank_Node+64)(R1)
+	FMOVQ F3, (Bank_Node+128)(R1)
+	FMOVQ F13, (Bank_Node+192)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc6f // fmul v15.2d, v3.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee1d44e // fsub v14.2d, v2.2d, v1.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d46f // fsub v15.2d, v3.2d, v0.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x0e6169ae // fcvtn v14.2s, v13.2d
+	FMOVD F14, (Bench_filtered+72)(R13)
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc4f // fmul v15.2d, v2.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee0d42e // fsub v14.2d, v1.2d, v0.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4eedd44f // fsub v15.2d, v2.2d, v13.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+104)(R13)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
+	FMOVQ F1, (Bank_Node+16)(R1)
+	FMOVQ F2, (Bank_Node+80)(R1)
+	FMOVQ F3, (Bank_Node+144)(R1)
+	FMOVQ F13, (Bank_Node+208)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bench_filtered+96)(R13), F3
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	ADD $16, R8, R8
+	ADD $128, R2, R2
+	ADD $128, R3, R3
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	JMP groups
+
+rest:
+	CMP $0, R9
+	BEQ done
+	CMP $2, R9
+	BEQ two
+	CMP $3, R9
+	BEQ three
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 64(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 96(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 128(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 192(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 256(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 320(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 384(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ F12, (Bank_V1+0)(R1)
+	FMOVQ F10, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_Node+0)(R1)
+	FMOVQ F0, (Bank_Node+64)(R1)
+	FMOVQ F1, (Bank_Node+128)(R1)
+	FMOVQ F2, (Bank_Node+192)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
+	FMOVQ F13, (Bank_Node+16)(R1)
+	FMOVQ F0, (Bank_Node+80)(R1)
+	FMOVQ F1, (Bank_Node+144)(R1)
+	FMOVQ F2, (Bank_Node+208)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	JMP done
+
+two:
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 96(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 128(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 384(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ F11, (Bank_V1+0)(R1)
+	FMOVQ F12, (Bank_V2+0)(R1)
+	FMOVQ F3, (Bank_Node+0)(R1)
+	FMOVQ F13, (Bank_Node+64)(R1)
+	FMOVQ F0, (Bank_Node+128)(R1)
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ F12, (Bank_V2+16)(R1)
+	FMOVQ F3, (Bank_Node+16)(R1)
+	FMOVQ F13, (Bank_Node+80)(R1)
+	FMOVQ F0, (Bank_Node+144)(R1)
+	FMOVQ F1, (Bank_Node+208)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	JMP done
+
+three:
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 128(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 160(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 192(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 288(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 320(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 352(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 384(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc6f // fmul v15.2d, v3.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee1d44e // fsub v14.2d, v2.2d, v1.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d46f // fsub v15.2d, v3.2d, v0.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x0e6169ae // fcvtn v14.2s, v13.2d
+	FMOVD F14, (Bench_filtered+64)(R13)
+	FMOVQ F10, (Bank_V1+0)(R1)
+	FMOVQ F11, (Bank_V2+0)(R1)
+	FMOVQ F2, (Bank_Node+0)(R1)
+	FMOVQ F3, (Bank_Node+64)(R1)
+	FMOVQ F13, (Bank_Node+128)(R1)
+	FMOVQ F0, (Bank_Node+192)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc6f // fmul v15.2d, v3.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee1d44e // fsub v14.2d, v2.2d, v1.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d46f // fsub v15.2d, v3.2d, v0.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x0e6169ae // fcvtn v14.2s, v13.2d
+	FMOVD F14, (Bench_filtered+72)(R13)
+	FMOVQ F10, (Bank_V1+16)(R1)
+	FMOVQ F11, (Bank_V2+16)(R1)
+	FMOVQ F2, (Bank_Node+16)(R1)
+	FMOVQ F3, (Bank_Node+80)(R1)
+	FMOVQ F13, (Bank_Node+144)(R1)
+	FMOVQ F0, (Bank_Node+208)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+
+done:
+	ADD $16, R12, R12
+	CMP $32, R12
+	BNE pass
+	RET
+
+// func stillStiff2(b *Bank, w *Bench, force *floats, from, frames int)
+TEXT ·stillStiff2(SB), NOSPLIT, $0-40
+	MOVD $bias<>(SB), R11
+	FMOVQ (R11), F31
+	MOVD $0, R12
+
+pass:
+	MOVD b+0(FP), R11
+	ADD R12, R11, R0
+	ADD R12<<1, R11, R1
+	MOVD w+8(FP), R11
+	ADD R12<<1, R11, R7
+	ADD R12, R11, R13
+	ADD $Bench_window, R13, R4
+	MOVD from+24(FP), R11
+	ADD $Bank_Out, R0, R2
+	ADD R11<<5, R2, R2
+	MOVD force+16(FP), R3
+	ADD R12, R3, R3
+	MOVD frames+32(FP), R9
+	MOVD $-48, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 0(R4)
+	FMOVQ F1, 32(R4)
+	FMOVQ F2, 64(R4)
+	FMOVQ F3, 96(R4)
+	ADD $16, R8, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 128(R4)
+	FMOVQ F1, 160(R4)
+	FMOVQ F2, 192(R4)
+	FMOVQ F3, 224(R4)
+	ADD $16, R8, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 256(R4)
+	FMOVQ F1, 288(R4)
+	FMOVQ F2, 320(R4)
+	FMOVQ F3, 352(R4)
+	ADD $16, R8, R8
+
+groups:
+	CMP $4, R9
+	BLT rest
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ F3, (Bench_read+96)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dcaf // fmul v15.2d, v5.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee1d48e // fsub v14.2d, v4.2d, v1.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d4af // fsub v15.2d, v5.2d, v0.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+64)(R13)
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc8f // fmul v15.2d, v4.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee0d46e // fsub v14.2d, v3.2d, v0.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4eedd48f // fsub v15.2d, v4.2d, v13.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
+	FMOVD F14, (Bench_filtered+96)(R13)
+	FMOVQ F12, (Bank_V1+0)(R1)
+	FMOVQ F10, (Bank_V2+0)(R1)
+	FMOVQ F3, (Bank_Node+0)(R1)
+	FMOVQ F4, (Bank_Node+64)(R1)
+	FMOVQ F5, (Bank_Node+128)(R1)
+	FMOVQ F13, (Bank_Node+192)(R1)
+	FMOVQ F0, (Bank_Node+256)(R1)
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dcaf // fmul v15.2d, v5.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee1d48e // fsub v14.2d, v4.2d, v1.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d4af // fsub v15.2d, v5.2d, v0.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+72)(R13)
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc8f // fmul v15.2d, v4.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee0d46e // fsub v14.2d, v3.2d, v0.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4eedd48f // fsub v15.2d, v4.2d, v13.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
+	FMOVD F14, (Bench_filtered+104)(R13)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
+	FMOVQ F3, (Bank_Node+16)(R1)
+	FMOVQ F4, (Bank_Node+80)(R1)
+	FMOVQ F5, (Bank_Node+144)(R1)
+	FMOVQ F13, (Bank_Node+208)(R1)
+	FMOVQ F0, (Bank_Node+272)(R1)
+	FMOVQ F1, (Bank_Node+336)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bench_filtered+96)(R13), F3
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	ADD $16, R8, R8
+	ADD $128, R2, R2
+	ADD $128, R3, R3
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	JMP groups
+
+rest:
+	CMP $0, R9
+	BEQ done
+	CMP $2, R9
+	BEQ two
+	CMP $3, R9
+	BEQ three
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 64(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 96(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 128(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 192(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 256(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 320(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 384(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ F12, (Bank_V1+0)(R1)
+	FMOVQ F10, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_Node+0)(R1)
+	FMOVQ F0, (Bank_Node+64)(R1)
+	FMOVQ F1, (Bank_Node+128)(R1)
+	FMOVQ F2, (Bank_Node+192)(R1)
+	FMOVQ F3, (Bank_Node+256)(R1)
+	FMOVQ F4, (Bank_Node+320)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
+	FMOVQ F13, (Bank_Node+16)(R1)
+	FMOVQ F0, (Bank_Node+80)(R1)
+	FMOVQ F1, (Bank_Node+144)(R1)
+	FMOVQ F2, (Bank_Node+208)(R1)
+	FMOVQ F3, (Bank_Node+272)(R1)
+	FMOVQ F4, (Bank_Node+336)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	JMP done
+
+two:
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 96(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 128(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 384(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ F11, (Bank_V1+0)(R1)
+	FMOVQ F12, (Bank_V2+0)(R1)
+	FMOVQ F5, (Bank_Node+0)(R1)
+	FMOVQ F13, (Bank_Node+64)(R1)
+	FMOVQ F0, (Bank_Node+128)(R1)
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F2, (Bank_Node+256)(R1)
+	FMOVQ F3, (Bank_Node+320)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ F12, (Bank_V2+16)(R1)
+	FMOVQ F5, (Bank_Node+16)(R1)
+	FMOVQ F13, (Bank_Node+80)(R1)
+	FMOVQ F0, (Bank_Node+144)(R1)
+	FMOVQ F1, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+272)(R1)
+	FMOVQ F3, (Bank_Node+336)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	JMP done
+
+three:
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 128(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 160(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 192(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 288(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 320(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 352(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 384(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dcaf // fmul v15.2d, v5.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee1d48e // fsub v14.2d, v4.2d, v1.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d4af // fsub v15.2d, v5.2d, v0.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+64)(R13)
+	FMOVQ F10, (Bank_V1+0)(R1)
+	FMOVQ F11, (Bank_V2+0)(R1)
+	FMOVQ F4, (Bank_Node+0)(R1)
+	FMOVQ F5, (Bank_Node+64)(R1)
+	FMOVQ F13, (Bank_Node+128)(R1)
+	FMOVQ F0, (Bank_Node+192)(R1)
+	FMOVQ F1, (Bank_Node+256)(R1)
+	FMOVQ F2, (Bank_Node+320)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dcaf // fmul v15.2d, v5.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee1d48e // fsub v14.2d, v4.2d, v1.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d4af // fsub v15.2d, v5.2d, v0.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
+	FMOVD F14, (Bench_filtered+72)(R13)
+	FMOVQ F10, (Bank_V1+16)(R1)
+	FMOVQ F11, (Bank_V2+16)(R1)
+	FMOVQ F4, (Bank_Node+16)(R1)
+	FMOVQ F5, (Bank_Node+80)(R1)
+	FMOVQ F13, (Bank_Node+144)(R1)
+	FMOVQ F0, (Bank_Node+208)(R1)
+	FMOVQ F1, (Bank_Node+272)(R1)
+	FMOVQ F2, (Bank_Node+336)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+
+done:
+	ADD $16, R12, R12
+	CMP $32, R12
+	BNE pass
+	RET
+
+// func stillStiff3(b *Bank, w *Bench, force *floats, from, frames int)
+TEXT ·stillStiff3(SB), NOSPLIT, $0-40
+	MOVD $bias<>(SB), R11
+	FMOVQ (R11), F31
+	MOVD $0, R12
+
+pass:
+	MOVD b+0(FP), R11
+	ADD R12, R11, R0
+	ADD R12<<1, R11, R1
+	MOVD w+8(FP), R11
+	ADD R12<<1, R11, R7
+	ADD R12, R11, R13
+	ADD $Bench_window, R13, R4
+	MOVD from+24(FP), R11
+	ADD $Bank_Out, R0, R2
+	ADD R11<<5, R2, R2
+	MOVD force+16(FP), R3
+	ADD R12, R3, R3
+	MOVD frames+32(FP), R9
+	MOVD $-48, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 0(R4)
+	FMOVQ F1, 32(R4)
+	FMOVQ F2, 64(R4)
+	FMOVQ F3, 96(R4)
+	ADD $16, R8, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 128(R4)
+	FMOVQ F1, 160(R4)
+	FMOVQ F2, 192(R4)
+	FMOVQ F3, 224(R4)
+	ADD $16, R8, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 256(R4)
+	FMOVQ F1, 288(R4)
+	FMOVQ F2, 320(R4)
+	FMOVQ F3, 352(R4)
+	ADD $16, R8, R8
+
+groups:
+	CMP $4, R9
+	BLT rest
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ F3, (Bench_read+96)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+448)(R1), F7
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dcef // fmul v15.2d, v7.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x4ee1d4ce // fsub v14.2d, v6.2d, v1.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d4ef // fsub v15.2d, v7.2d, v0.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+64)(R13)
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dccf // fmul v15.2d, v6.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee0d4ae // fsub v14.2d, v5.2d, v0.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4eedd4cf // fsub v15.2d, v6.2d, v13.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
+	FMOVD F14, (Bench_filtered+96)(R13)
+	FMOVQ F12, (Bank_V1+0)(R1)
+	FMOVQ F10, (Bank_V2+0)(R1)
+	FMOVQ F5, (Bank_Node+0)(R1)
+	FMOVQ F6, (Bank_Node+64)(R1)
+	FMOVQ F7, (Bank_Node+128)(R1)
+	FMOVQ F13, (Bank_Node+192)(R1)
+	FMOVQ F0, (Bank_Node+256)(R1)
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ F2, (Bank_Node+384)(R1)
+	FMOVQ F3, (Bank_Node+448)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_Node+400)(R1), F6
+	FMOVQ (Bank_Node+464)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dcef // fmul v15.2d, v7.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x4ee1d4ce // fsub v14.2d, v6.2d, v1.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d4ef // fsub v15.2d, v7.2d, v0.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+72)(R13)
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dccf // fmul v15.2d, v6.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee0d4ae // fsub v14.2d, v5.2d, v0.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4eedd4cf // fsub v15.2d, v6.2d, v13.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
+	FMOVD F14, (Bench_filtered+104)(R13)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
+	FMOVQ F5, (Bank_Node+16)(R1)
+	FMOVQ F6, (Bank_Node+80)(R1)
+	FMOVQ F7, (Bank_Node+144)(R1)
+	FMOVQ F13, (Bank_Node+208)(R1)
+	FMOVQ F0, (Bank_Node+272)(R1)
+	FMOVQ F1, (Bank_Node+336)(R1)
+	FMOVQ F2, (Bank_Node+400)(R1)
+	FMOVQ F3, (Bank_Node+464)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bench_filtered+96)(R13), F3
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	ADD $16, R8, R8
+	ADD $128, R2, R2
+	ADD $128, R3, R3
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	JMP groups
+
+rest:
+	CMP $0, R9
+	BEQ done
+	CMP $2, R9
+	BEQ two
+	CMP $3, R9
+	BEQ three
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 64(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 96(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 128(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 192(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 256(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 320(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 384(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+448)(R1), F7
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ F12, (Bank_V1+0)(R1)
+	FMOVQ F10, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_Node+0)(R1)
+	FMOVQ F0, (Bank_Node+64)(R1)
+	FMOVQ F1, (Bank_Node+128)(R1)
+	FMOVQ F2, (Bank_Node+192)(R1)
+	FMOVQ F3, (Bank_Node+256)(R1)
+	FMOVQ F4, (Bank_Node+320)(R1)
+	FMOVQ F5, (Bank_Node+384)(R1)
+	FMOVQ F6, (Bank_Node+448)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_Node+400)(R1), F6
+	FMOVQ (Bank_Node+464)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
+	FMOVQ F13, (Bank_Node+16)(R1)
+	FMOVQ F0, (Bank_Node+80)(R1)
+	FMOVQ F1, (Bank_Node+144)(R1)
+	FMOVQ F2, (Bank_Node+208)(R1)
+	FMOVQ F3, (Bank_Node+272)(R1)
+	FMOVQ F4, (Bank_Node+336)(R1)
+	FMOVQ F5, (Bank_Node+400)(R1)
+	FMOVQ F6, (Bank_Node+464)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	JMP done
+
+two:
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 96(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 128(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 384(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+448)(R1), F7
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ F11, (Bank_V1+0)(R1)
+	FMOVQ F12, (Bank_V2+0)(R1)
+	FMOVQ F7, (Bank_Node+0)(R1)
+	FMOVQ F13, (Bank_Node+64)(R1)
+	FMOVQ F0, (Bank_Node+128)(R1)
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F2, (Bank_Node+256)(R1)
+	FMOVQ F3, (Bank_Node+320)(R1)
+	FMOVQ F4, (Bank_Node+384)(R1)
+	FMOVQ F5, (Bank_Node+448)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_Node+400)(R1), F6
+	FMOVQ (Bank_Node+464)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ F12, (Bank_V2+16)(R1)
+	FMOVQ F7, (Bank_Node+16)(R1)
+	FMOVQ F13, (Bank_Node+80)(R1)
+	FMOVQ F0, (Bank_Node+144)(R1)
+	FMOVQ F1, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+272)(R1)
+	FMOVQ F3, (Bank_Node+336)(R1)
+	FMOVQ F4, (Bank_Node+400)(R1)
+	FMOVQ F5, (Bank_Node+464)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	JMP done
+
+three:
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 128(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 160(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 192(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 288(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 320(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 352(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 384(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+448)(R1), F7
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dcef // fmul v15.2d, v7.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x4ee1d4ce // fsub v14.2d, v6.2d, v1.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d4ef // fsub v15.2d, v7.2d, v0.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+64)(R13)
+	FMOVQ F10, (Bank_V1+0)(R1)
+	FMOVQ F11, (Bank_V2+0)(R1)
+	FMOVQ F6, (Bank_Node+0)(R1)
+	FMOVQ F7, (Bank_Node+64)(R1)
+	FMOVQ F13, (Bank_Node+128)(R1)
+	FMOVQ F0, (Bank_Node+192)(R1)
+	FMOVQ F1, (Bank_Node+256)(R1)
+	FMOVQ F2, (Bank_Node+320)(R1)
+	FMOVQ F3, (Bank_Node+384)(R1)
+	FMOVQ F4, (Bank_Node+448)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_Node+400)(R1), F6
+	FMOVQ (Bank_Node+464)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dcef // fmul v15.2d, v7.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x4ee1d4ce // fsub v14.2d, v6.2d, v1.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d4ef // fsub v15.2d, v7.2d, v0.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
+	FMOVD F14, (Bench_filtered+72)(R13)
+	FMOVQ F10, (Bank_V1+16)(R1)
+	FMOVQ F11, (Bank_V2+16)(R1)
+	FMOVQ F6, (Bank_Node+16)(R1)
+	FMOVQ F7, (Bank_Node+80)(R1)
+	FMOVQ F13, (Bank_Node+144)(R1)
+	FMOVQ F0, (Bank_Node+208)(R1)
+	FMOVQ F1, (Bank_Node+272)(R1)
+	FMOVQ F2, (Bank_Node+336)(R1)
+	FMOVQ F3, (Bank_Node+400)(R1)
+	FMOVQ F4, (Bank_Node+464)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+
+done:
+	ADD $16, R12, R12
+	CMP $32, R12
+	BNE pass
+	RET
+
+// func stillStiff4(b *Bank, w *Bench, force *floats, from, frames int)
+TEXT ·stillStiff4(SB), NOSPLIT, $0-40
+	MOVD $bias<>(SB), R11
+	FMOVQ (R11), F31
+	MOVD $0, R12
+
+pass:
+	MOVD b+0(FP), R11
+	ADD R12, R11, R0
+	ADD R12<<1, R11, R1
+	MOVD w+8(FP), R11
+	ADD R12<<1, R11, R7
+	ADD R12, R11, R13
+	ADD $Bench_window, R13, R4
+	MOVD from+24(FP), R11
+	ADD $Bank_Out, R0, R2
+	ADD R11<<5, R2, R2
+	MOVD force+16(FP), R3
+	ADD R12, R3, R3
+	MOVD frames+32(FP), R9
+	MOVD $-48, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 0(R4)
+	FMOVQ F1, 32(R4)
+	FMOVQ F2, 64(R4)
+	FMOVQ F3, 96(R4)
+	ADD $16, R8, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 128(R4)
+	FMOVQ F1, 160(R4)
+	FMOVQ F2, 192(R4)
+	FMOVQ F3, 224(R4)
+	ADD $16, R8, R8
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 256(R4)
+	FMOVQ F1, 288(R4)
+	FMOVQ F2, 320(R4)
+	FMOVQ F3, 352(R4)
+	ADD $16, R8, R8
+
+groups:
+	CMP $4, R9
+	BLT rest
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ F3, (Bench_read+96)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+448)(R1), F7
+	FMOVQ (Bank_Node+512)(R1), F8
+	FMOVQ (Bank_Node+576)(R1), F9
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
+	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
+	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
+	WORD $0x4ee1d50e // fsub v14.2d, v8.2d, v1.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d52f // fsub v15.2d, v9.2d, v0.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+64)(R13)
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dd0f // fmul v15.2d, v8.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee0d4ee // fsub v14.2d, v7.2d, v0.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4eedd50f // fsub v15.2d, v8.2d, v13.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
+	FMOVD F14, (Bench_filtered+96)(R13)
+	FMOVQ F12, (Bank_V1+0)(R1)
+	FMOVQ F10, (Bank_V2+0)(R1)
+	FMOVQ F7, (Bank_Node+0)(R1)
+	FMOVQ F8, (Bank_Node+64)(R1)
+	FMOVQ F9, (Bank_Node+128)(R1)
+	FMOVQ F13, (Bank_Node+192)(R1)
+	FMOVQ F0, (Bank_Node+256)(R1)
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ F2, (Bank_Node+384)(R1)
+	FMOVQ F3, (Bank_Node+448)(R1)
+	FMOVQ F4, (Bank_Node+512)(R1)
+	FMOVQ F5, (Bank_Node+576)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_Node+400)(R1), F6
+	FMOVQ (Bank_Node+464)(R1), F7
+	FMOVQ (Bank_Node+528)(R1), F8
+	FMOVQ (Bank_Node+592)(R1), F9
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
+	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
+	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
+	WORD $0x4ee1d50e // fsub v14.2d, v8.2d, v1.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d52f // fsub v15.2d, v9.2d, v0.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+72)(R13)
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd0f // fmul v15.2d, v8.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x4ee0d4ee // fsub v14.2d, v7.2d, v0.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4eedd50f // fsub v15.2d, v8.2d, v13.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
+	FMOVD F14, (Bench_filtered+104)(R13)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
+	FMOVQ F7, (Bank_Node+16)(R1)
+	FMOVQ F8, (Bank_Node+80)(R1)
+	FMOVQ F9, (Bank_Node+144)(R1)
+	FMOVQ F13, (Bank_Node+208)(R1)
+	FMOVQ F0, (Bank_Node+272)(R1)
+	FMOVQ F1, (Bank_Node+336)(R1)
+	FMOVQ F2, (Bank_Node+400)(R1)
+	FMOVQ F3, (Bank_Node+464)(R1)
+	FMOVQ F4, (Bank_Node+528)(R1)
+	FMOVQ F5, (Bank_Node+592)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bench_filtered+96)(R13), F3
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	ADD $16, R8, R8
+	ADD $128, R2, R2
+	ADD $128, R3, R3
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	JMP groups
+
+rest:
+	CMP $0, R9
+	BEQ done
+	CMP $2, R9
+	BEQ two
+	CMP $3, R9
+	BEQ three
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 64(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 96(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 128(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 192(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 256(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 320(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 384(R4), F4
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+448)(R1), F7
+	FMOVQ (Bank_Node+512)(R1), F8
+	FMOVQ (Bank_Node+576)(R1), F9
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ F12, (Bank_V1+0)(R1)
+	FMOVQ F10, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_Node+0)(R1)
+	FMOVQ F0, (Bank_Node+64)(R1)
+	FMOVQ F1, (Bank_Node+128)(R1)
+	FMOVQ F2, (Bank_Node+192)(R1)
+	FMOVQ F3, (Bank_Node+256)(R1)
+	FMOVQ F4, (Bank_Node+320)(R1)
+	FMOVQ F5, (Bank_Node+384)(R1)
+	FMOVQ F6, (Bank_Node+448)(R1)
+	FMOVQ F7, (Bank_Node+512)(R1)
+	FMOVQ F8, (Bank_Node+576)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_Node+400)(R1), F6
+	FMOVQ (Bank_Node+464)(R1), F7
+	FMOVQ (Bank_Node+528)(R1), F8
+	FMOVQ (Bank_Node+592)(R1), F9
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
+	FMOVQ F13, (Bank_Node+16)(R1)
+	FMOVQ F0, (Bank_Node+80)(R1)
+	FMOVQ F1, (Bank_Node+144)(R1)
+	FMOVQ F2, (Bank_Node+208)(R1)
+	FMOVQ F3, (Bank_Node+272)(R1)
+	FMOVQ F4, (Bank_Node+336)(R1)
+	FMOVQ F5, (Bank_Node+400)(R1)
+	FMOVQ F6, (Bank_Node+464)(R1)
+	FMOVQ F7, (Bank_Node+528)(R1)
+	FMOVQ F8, (Bank_Node+592)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	JMP done
+
+two:
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 96(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 128(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 384(R4), F5
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+448)(R1), F7
+	FMOVQ (Bank_Node+512)(R1), F8
+	FMOVQ (Bank_Node+576)(R1), F9
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
+	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ F11, (Bank_V1+0)(R1)
+	FMOVQ F12, (Bank_V2+0)(R1)
+	FMOVQ F9, (Bank_Node+0)(R1)
+	FMOVQ F13, (Bank_Node+64)(R1)
+	FMOVQ F0, (Bank_Node+128)(R1)
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F2, (Bank_Node+256)(R1)
+	FMOVQ F3, (Bank_Node+320)(R1)
+	FMOVQ F4, (Bank_Node+384)(R1)
+	FMOVQ F5, (Bank_Node+448)(R1)
+	FMOVQ F6, (Bank_Node+512)(R1)
+	FMOVQ F7, (Bank_Node+576)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_Node+400)(R1), F6
+	FMOVQ (Bank_Node+464)(R1), F7
+	FMOVQ (Bank_Node+528)(R1), F8
+	FMOVQ (Bank_Node+592)(R1), F9
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
+	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ F12, (Bank_V2+16)(R1)
+	FMOVQ F9, (Bank_Node+16)(R1)
+	FMOVQ F13, (Bank_Node+80)(R1)
+	FMOVQ F0, (Bank_Node+144)(R1)
+	FMOVQ F1, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+272)(R1)
+	FMOVQ F3, (Bank_Node+336)(R1)
+	FMOVQ F4, (Bank_Node+400)(R1)
+	FMOVQ F5, (Bank_Node+464)(R1)
+	FMOVQ F6, (Bank_Node+528)(R1)
+	FMOVQ F7, (Bank_Node+592)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+	JMP done
+
+three:
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 128(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 160(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 192(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 288(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 320(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 352(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 384(R4), F6
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+64)(R1), F1
+	FMOVQ (Bank_Node+128)(R1), F2
+	FMOVQ (Bank_Node+192)(R1), F3
+	FMOVQ (Bank_Node+256)(R1), F4
+	FMOVQ (Bank_Node+320)(R1), F5
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+448)(R1), F7
+	FMOVQ (Bank_Node+512)(R1), F8
+	FMOVQ (Bank_Node+576)(R1), F9
+	FMOVQ (Bank_V1+0)(R1), F10
+	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
+	FMOVD F14, (Bench_filtered+0)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
+	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
+	FMOVD F14, (Bench_filtered+32)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
+	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
+	WORD $0x4ee1d50e // fsub v14.2d, v8.2d, v1.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d52f // fsub v15.2d, v9.2d, v0.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+64)(R13)
+	FMOVQ F10, (Bank_V1+0)(R1)
+	FMOVQ F11, (Bank_V2+0)(R1)
+	FMOVQ F8, (Bank_Node+0)(R1)
+	FMOVQ F9, (Bank_Node+64)(R1)
+	FMOVQ F13, (Bank_Node+128)(R1)
+	FMOVQ F0, (Bank_Node+192)(R1)
+	FMOVQ F1, (Bank_Node+256)(R1)
+	FMOVQ F2, (Bank_Node+320)(R1)
+	FMOVQ F3, (Bank_Node+384)(R1)
+	FMOVQ F4, (Bank_Node+448)(R1)
+	FMOVQ F5, (Bank_Node+512)(R1)
+	FMOVQ F6, (Bank_Node+576)(R1)
+	FMOVQ (Bank_Node+16)(R1), F0
+	FMOVQ (Bank_Node+80)(R1), F1
+	FMOVQ (Bank_Node+144)(R1), F2
+	FMOVQ (Bank_Node+208)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F4
+	FMOVQ (Bank_Node+336)(R1), F5
+	FMOVQ (Bank_Node+400)(R1), F6
+	FMOVQ (Bank_Node+464)(R1), F7
+	FMOVQ (Bank_Node+528)(R1), F8
+	FMOVQ (Bank_Node+592)(R1), F9
+	FMOVQ (Bank_V1+16)(R1), F10
+	FMOVQ (Bank_V2+16)(R1), F11
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
+	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
+	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
+	FMOVD F14, (Bench_filtered+8)(R13)
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
+	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
+	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
+	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
+	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
+	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
+	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
+	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
+	FMOVD F14, (Bench_filtered+40)(R13)
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
+	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
+	WORD $0x4ee1d50e // fsub v14.2d, v8.2d, v1.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
+	WORD $0x4ee0d52f // fsub v15.2d, v9.2d, v0.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
+	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
+	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
+	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
+	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
+	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
+	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
+	FMOVD F14, (Bench_filtered+72)(R13)
+	FMOVQ F10, (Bank_V1+16)(R1)
+	FMOVQ F11, (Bank_V2+16)(R1)
+	FMOVQ F8, (Bank_Node+16)(R1)
+	FMOVQ F9, (Bank_Node+80)(R1)
+	FMOVQ F13, (Bank_Node+144)(R1)
+	FMOVQ F0, (Bank_Node+208)(R1)
+	FMOVQ F1, (Bank_Node+272)(R1)
+	FMOVQ F2, (Bank_Node+336)(R1)
+	FMOVQ F3, (Bank_Node+400)(R1)
+	FMOVQ F4, (Bank_Node+464)(R1)
+	FMOVQ F5, (Bank_Node+528)(R1)
+	FMOVQ F6, (Bank_Node+592)(R1)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, (R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, (R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, (R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, (R11)
+
+done:
+	ADD $16, R12, R12
+	CMP $32, R12
+	BNE pass
+	RET
+
 // func movingPlain(b *Bank, w *Bench, force *floats, from, frames int)
 TEXT ·movingPlain(SB), NOSPLIT, $0-40
 	MOVD $bias<>(SB), R11
@@ -3384,1361 +9868,6 @@ done:
 	BNE pass
 	RET
 
-// func stillStiff(b *Bank, w *Bench, force *floats, from, frames int)
-TEXT ·stillStiff(SB), NOSPLIT, $0-40
-	MOVD $bias<>(SB), R11
-	FMOVQ (R11), F31
-	MOVD $0, R12
-
-pass:
-	MOVD b+0(FP), R11
-	ADD R12, R11, R0
-	ADD R12<<1, R11, R1
-	MOVD w+8(FP), R11
-	ADD R12<<1, R11, R7
-	ADD R12, R11, R13
-	ADD $Bench_window, R13, R4
-	MOVD from+24(FP), R11
-	ADD $Bank_Out, R0, R2
-	ADD R11<<5, R2, R2
-	MOVD force+16(FP), R3
-	ADD R12, R3, R3
-	MOVD frames+32(FP), R9
-	MOVD $-48, R8
-	MOVD (Bench_source+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F0
-	MOVD (Bench_source+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F1
-	MOVD (Bench_source+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F2
-	MOVD (Bench_source+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F3
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	FMOVQ F0, 0(R4)
-	FMOVQ F1, 32(R4)
-	FMOVQ F2, 64(R4)
-	FMOVQ F3, 96(R4)
-	ADD $16, R8, R8
-	MOVD (Bench_source+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F0
-	MOVD (Bench_source+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F1
-	MOVD (Bench_source+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F2
-	MOVD (Bench_source+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F3
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	FMOVQ F0, 128(R4)
-	FMOVQ F1, 160(R4)
-	FMOVQ F2, 192(R4)
-	FMOVQ F3, 224(R4)
-	ADD $16, R8, R8
-	MOVD (Bench_source+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F0
-	MOVD (Bench_source+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F1
-	MOVD (Bench_source+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F2
-	MOVD (Bench_source+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F3
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	FMOVQ F0, 256(R4)
-	FMOVQ F1, 288(R4)
-	FMOVQ F2, 320(R4)
-	FMOVQ F3, 352(R4)
-	ADD $16, R8, R8
-
-groups:
-	CMP $4, R9
-	BLT rest
-	MOVD (Bench_source+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F0
-	MOVD (Bench_source+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F1
-	MOVD (Bench_source+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F2
-	MOVD (Bench_source+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F3
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	FMOVQ F0, 384(R4)
-	FMOVQ F1, 416(R4)
-	FMOVQ F2, 448(R4)
-	FMOVQ F3, 480(R4)
-	FMOVQ (Bank_Tap+352)(R0), F8
-	FMOVQ 32(R4), F4
-	FMOVQ 64(R4), F5
-	FMOVQ 96(R4), F6
-	FMOVQ 128(R4), F7
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
-	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
-	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
-	FMOVQ (Bank_Tap+320)(R0), F8
-	FMOVQ 160(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+288)(R0), F8
-	FMOVQ 192(R4), F5
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+256)(R0), F8
-	FMOVQ 224(R4), F6
-	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+224)(R0), F8
-	FMOVQ 256(R4), F7
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+192)(R0), F8
-	FMOVQ 288(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+160)(R0), F8
-	FMOVQ 320(R4), F5
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+128)(R0), F8
-	FMOVQ 352(R4), F6
-	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+96)(R0), F8
-	FMOVQ 384(R4), F7
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+64)(R0), F8
-	FMOVQ 416(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+32)(R0), F8
-	FMOVQ 448(R4), F5
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ (Bank_Tap+0)(R0), F8
-	FMOVQ 480(R4), F6
-	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
-	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
-	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
-	WORD $0x0e617867 // fcvtl v7.2d, v3.2s
-	FMOVQ (Bank_V1+0)(R1), F8
-	FMOVQ (Bank_V2+0)(R1), F9
-	FMOVQ (Bank_C1+0)(R1), F10
-	FMOVQ (Bank_C2+0)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
-	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
-	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
-	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
-	FMOVQ F7, (Bank_V1+0)(R1)
-	FMOVQ F6, (Bank_V2+0)(R1)
-	FMOVQ (Bank_Gain+0)(R1), F9
-	FMOVQ (Bank_Zero+0)(R1), F10
-	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V4.B16, V8.B16
-	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V4.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V5.B16, V8.B16
-	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V5.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V6.B16, V8.B16
-	WORD $0x4eeed4cf // fsub v15.2d, v6.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V6.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V7.B16, V8.B16
-	WORD $0x4eeed4ef // fsub v15.2d, v7.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V7.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
-	MOVD $(Bank_Section+0)(R1), R5
-	MOVD $(Bank_Node+0)(R1), R6
-	MOVD b+0(FP), R11
-	MOVD Bank_Sections(R11), R10
-
-sections1:
-	FMOVQ (Section_A1+0)(R5), F8
-	FMOVQ (Section_A2+0)(R5), F9
-	FMOVQ (Node_X+0)(R6), F10
-	FMOVQ (Node_X1+0)(R6), F11
-	FMOVQ (Node_X+128)(R6), F12
-	FMOVQ (Node_X1+128)(R6), F13
-	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
-	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
-	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
-	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
-	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	FMOVQ F7, (Node_X+0)(R6)
-	FMOVQ F6, (Node_X1+0)(R6)
-	VMOV V5.B16, V7.B16
-	VMOV V4.B16, V6.B16
-	VMOV V10.B16, V5.B16
-	VMOV V11.B16, V4.B16
-	ADD $256, R5, R5
-	ADD $128, R6, R6
-	SUB $1, R10, R10
-	CBNZ R10, sections1
-	FMOVQ F7, (Node_X+0)(R6)
-	FMOVQ F6, (Node_X1+0)(R6)
-	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
-	VMOV V15.D[0], V0.D[0]
-	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
-	VMOV V15.D[0], V1.D[0]
-	WORD $0x0e6168cf // fcvtn v15.2s, v6.2d
-	VMOV V15.D[0], V2.D[0]
-	WORD $0x0e6168ef // fcvtn v15.2s, v7.2d
-	VMOV V15.D[0], V3.D[0]
-	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
-	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
-	WORD $0x4e617846 // fcvtl2 v6.2d, v2.4s
-	WORD $0x4e617867 // fcvtl2 v7.2d, v3.4s
-	FMOVQ (Bank_V1+16)(R1), F8
-	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bank_C1+16)(R1), F10
-	FMOVQ (Bank_C2+16)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
-	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
-	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
-	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
-	FMOVQ F7, (Bank_V1+16)(R1)
-	FMOVQ F6, (Bank_V2+16)(R1)
-	FMOVQ (Bank_Gain+16)(R1), F9
-	FMOVQ (Bank_Zero+16)(R1), F10
-	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V4.B16, V8.B16
-	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V4.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V5.B16, V8.B16
-	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V5.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V6.B16, V8.B16
-	WORD $0x4eeed4cf // fsub v15.2d, v6.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V6.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V7.B16, V8.B16
-	WORD $0x4eeed4ef // fsub v15.2d, v7.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V7.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
-	MOVD $(Bank_Section+0)(R1), R5
-	MOVD $(Bank_Node+0)(R1), R6
-	MOVD b+0(FP), R11
-	MOVD Bank_Sections(R11), R10
-
-sections2:
-	FMOVQ (Section_A1+16)(R5), F8
-	FMOVQ (Section_A2+16)(R5), F9
-	FMOVQ (Node_X+16)(R6), F10
-	FMOVQ (Node_X1+16)(R6), F11
-	FMOVQ (Node_X+144)(R6), F12
-	FMOVQ (Node_X1+144)(R6), F13
-	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
-	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
-	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
-	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
-	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	FMOVQ F7, (Node_X+16)(R6)
-	FMOVQ F6, (Node_X1+16)(R6)
-	VMOV V5.B16, V7.B16
-	VMOV V4.B16, V6.B16
-	VMOV V10.B16, V5.B16
-	VMOV V11.B16, V4.B16
-	ADD $256, R5, R5
-	ADD $128, R6, R6
-	SUB $1, R10, R10
-	CBNZ R10, sections2
-	FMOVQ F7, (Node_X+16)(R6)
-	FMOVQ F6, (Node_X1+16)(R6)
-	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
-	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
-	WORD $0x4e6168c2 // fcvtn2 v2.4s, v6.2d
-	WORD $0x4e6168e3 // fcvtn2 v3.4s, v7.2d
-	FMOVQ (Bank_Power+0)(R0), F4
-	FMOVQ 0(R3), F16
-	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
-	FMOVQ F0, 0(R2)
-	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ 32(R3), F16
-	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
-	FMOVQ F1, 32(R2)
-	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ 64(R3), F16
-	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
-	FMOVQ F2, 64(R2)
-	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ 96(R3), F16
-	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
-	FMOVQ F3, 96(R2)
-	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ F4, (Bank_Power+0)(R0)
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	MOVD (Bench_target+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F0, (R11)
-	MOVD (Bench_target+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F1, (R11)
-	MOVD (Bench_target+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F2, (R11)
-	MOVD (Bench_target+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
-	ADD $128, R2, R2
-	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
-	JMP groups
-
-rest:
-	CMP $0, R9
-	BEQ done
-	CMP $2, R9
-	BEQ two
-	CMP $3, R9
-	BEQ three
-	MOVD (Bench_source+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F0
-	MOVD (Bench_source+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F1
-	MOVD (Bench_source+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F2
-	MOVD (Bench_source+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F3
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	FMOVQ F0, 384(R4)
-	FMOVQ (Bank_Tap+352)(R0), F8
-	FMOVQ 32(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
-	FMOVQ (Bank_Tap+320)(R0), F8
-	FMOVQ 64(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+288)(R0), F8
-	FMOVQ 96(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+256)(R0), F8
-	FMOVQ 128(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+224)(R0), F8
-	FMOVQ 160(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+192)(R0), F8
-	FMOVQ 192(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+160)(R0), F8
-	FMOVQ 224(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+128)(R0), F8
-	FMOVQ 256(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+96)(R0), F8
-	FMOVQ 288(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+64)(R0), F8
-	FMOVQ 320(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+32)(R0), F8
-	FMOVQ 352(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ (Bank_Tap+0)(R0), F8
-	FMOVQ 384(R4), F4
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
-	FMOVQ (Bank_V1+0)(R1), F8
-	FMOVQ (Bank_V2+0)(R1), F9
-	FMOVQ (Bank_C1+0)(R1), F10
-	FMOVQ (Bank_C2+0)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	FMOVQ F4, (Bank_V1+0)(R1)
-	FMOVQ F8, (Bank_V2+0)(R1)
-	FMOVQ (Bank_Gain+0)(R1), F9
-	FMOVQ (Bank_Zero+0)(R1), F10
-	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V4.B16, V8.B16
-	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V4.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
-	MOVD $(Bank_Section+0)(R1), R5
-	MOVD $(Bank_Node+0)(R1), R6
-	MOVD b+0(FP), R11
-	MOVD Bank_Sections(R11), R10
-
-sections3:
-	FMOVQ (Section_A1+0)(R5), F8
-	FMOVQ (Section_A2+0)(R5), F9
-	FMOVQ (Node_X+0)(R6), F10
-	FMOVQ (Node_X1+0)(R6), F11
-	FMOVQ (Node_X+128)(R6), F12
-	FMOVQ (Node_X1+128)(R6), F13
-	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
-	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
-	FMOVQ F4, (Node_X+0)(R6)
-	FMOVQ F10, (Node_X1+0)(R6)
-	VMOV V11.B16, V4.B16
-	ADD $256, R5, R5
-	ADD $128, R6, R6
-	SUB $1, R10, R10
-	CBNZ R10, sections3
-	FMOVQ F4, (Node_X+0)(R6)
-	FMOVQ F12, (Node_X1+0)(R6)
-	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
-	VMOV V15.D[0], V0.D[0]
-	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
-	FMOVQ (Bank_V1+16)(R1), F8
-	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bank_C1+16)(R1), F10
-	FMOVQ (Bank_C2+16)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	FMOVQ F4, (Bank_V1+16)(R1)
-	FMOVQ F8, (Bank_V2+16)(R1)
-	FMOVQ (Bank_Gain+16)(R1), F9
-	FMOVQ (Bank_Zero+16)(R1), F10
-	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V4.B16, V8.B16
-	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V4.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
-	MOVD $(Bank_Section+0)(R1), R5
-	MOVD $(Bank_Node+0)(R1), R6
-	MOVD b+0(FP), R11
-	MOVD Bank_Sections(R11), R10
-
-sections4:
-	FMOVQ (Section_A1+16)(R5), F8
-	FMOVQ (Section_A2+16)(R5), F9
-	FMOVQ (Node_X+16)(R6), F10
-	FMOVQ (Node_X1+16)(R6), F11
-	FMOVQ (Node_X+144)(R6), F12
-	FMOVQ (Node_X1+144)(R6), F13
-	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
-	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
-	FMOVQ F4, (Node_X+16)(R6)
-	FMOVQ F10, (Node_X1+16)(R6)
-	VMOV V11.B16, V4.B16
-	ADD $256, R5, R5
-	ADD $128, R6, R6
-	SUB $1, R10, R10
-	CBNZ R10, sections4
-	FMOVQ F4, (Node_X+16)(R6)
-	FMOVQ F12, (Node_X1+16)(R6)
-	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
-	FMOVQ (Bank_Power+0)(R0), F4
-	FMOVQ 0(R3), F16
-	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
-	FMOVQ F0, 0(R2)
-	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ F4, (Bank_Power+0)(R0)
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	MOVD (Bench_target+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F0, (R11)
-	MOVD (Bench_target+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F1, (R11)
-	MOVD (Bench_target+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F2, (R11)
-	MOVD (Bench_target+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	JMP done
-
-two:
-	MOVD (Bench_source+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F0
-	MOVD (Bench_source+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F1
-	MOVD (Bench_source+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F2
-	MOVD (Bench_source+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F3
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	FMOVQ F0, 384(R4)
-	FMOVQ F1, 416(R4)
-	FMOVQ (Bank_Tap+352)(R0), F8
-	FMOVQ 32(R4), F4
-	FMOVQ 64(R4), F5
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
-	FMOVQ (Bank_Tap+320)(R0), F8
-	FMOVQ 96(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+288)(R0), F8
-	FMOVQ 128(R4), F5
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+256)(R0), F8
-	FMOVQ 160(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+224)(R0), F8
-	FMOVQ 192(R4), F5
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+192)(R0), F8
-	FMOVQ 224(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+160)(R0), F8
-	FMOVQ 256(R4), F5
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+128)(R0), F8
-	FMOVQ 288(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+96)(R0), F8
-	FMOVQ 320(R4), F5
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+64)(R0), F8
-	FMOVQ 352(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+32)(R0), F8
-	FMOVQ 384(R4), F5
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ (Bank_Tap+0)(R0), F8
-	FMOVQ 416(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
-	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
-	FMOVQ (Bank_V1+0)(R1), F8
-	FMOVQ (Bank_V2+0)(R1), F9
-	FMOVQ (Bank_C1+0)(R1), F10
-	FMOVQ (Bank_C2+0)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	FMOVQ F5, (Bank_V1+0)(R1)
-	FMOVQ F4, (Bank_V2+0)(R1)
-	FMOVQ (Bank_Gain+0)(R1), F9
-	FMOVQ (Bank_Zero+0)(R1), F10
-	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V4.B16, V8.B16
-	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V4.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V5.B16, V8.B16
-	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V5.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
-	MOVD $(Bank_Section+0)(R1), R5
-	MOVD $(Bank_Node+0)(R1), R6
-	MOVD b+0(FP), R11
-	MOVD Bank_Sections(R11), R10
-
-sections5:
-	FMOVQ (Section_A1+0)(R5), F8
-	FMOVQ (Section_A2+0)(R5), F9
-	FMOVQ (Node_X+0)(R6), F10
-	FMOVQ (Node_X1+0)(R6), F11
-	FMOVQ (Node_X+128)(R6), F12
-	FMOVQ (Node_X1+128)(R6), F13
-	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
-	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
-	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
-	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
-	FMOVQ F5, (Node_X+0)(R6)
-	FMOVQ F4, (Node_X1+0)(R6)
-	VMOV V10.B16, V5.B16
-	VMOV V11.B16, V4.B16
-	ADD $256, R5, R5
-	ADD $128, R6, R6
-	SUB $1, R10, R10
-	CBNZ R10, sections5
-	FMOVQ F5, (Node_X+0)(R6)
-	FMOVQ F4, (Node_X1+0)(R6)
-	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
-	VMOV V15.D[0], V0.D[0]
-	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
-	VMOV V15.D[0], V1.D[0]
-	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
-	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
-	FMOVQ (Bank_V1+16)(R1), F8
-	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bank_C1+16)(R1), F10
-	FMOVQ (Bank_C2+16)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	FMOVQ F5, (Bank_V1+16)(R1)
-	FMOVQ F4, (Bank_V2+16)(R1)
-	FMOVQ (Bank_Gain+16)(R1), F9
-	FMOVQ (Bank_Zero+16)(R1), F10
-	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V4.B16, V8.B16
-	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V4.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V5.B16, V8.B16
-	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V5.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
-	MOVD $(Bank_Section+0)(R1), R5
-	MOVD $(Bank_Node+0)(R1), R6
-	MOVD b+0(FP), R11
-	MOVD Bank_Sections(R11), R10
-
-sections6:
-	FMOVQ (Section_A1+16)(R5), F8
-	FMOVQ (Section_A2+16)(R5), F9
-	FMOVQ (Node_X+16)(R6), F10
-	FMOVQ (Node_X1+16)(R6), F11
-	FMOVQ (Node_X+144)(R6), F12
-	FMOVQ (Node_X1+144)(R6), F13
-	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
-	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
-	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
-	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
-	FMOVQ F5, (Node_X+16)(R6)
-	FMOVQ F4, (Node_X1+16)(R6)
-	VMOV V10.B16, V5.B16
-	VMOV V11.B16, V4.B16
-	ADD $256, R5, R5
-	ADD $128, R6, R6
-	SUB $1, R10, R10
-	CBNZ R10, sections6
-	FMOVQ F5, (Node_X+16)(R6)
-	FMOVQ F4, (Node_X1+16)(R6)
-	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
-	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
-	FMOVQ (Bank_Power+0)(R0), F4
-	FMOVQ 0(R3), F16
-	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
-	FMOVQ F0, 0(R2)
-	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ 32(R3), F16
-	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
-	FMOVQ F1, 32(R2)
-	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ F4, (Bank_Power+0)(R0)
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	MOVD (Bench_target+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F0, (R11)
-	MOVD (Bench_target+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F1, (R11)
-	MOVD (Bench_target+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F2, (R11)
-	MOVD (Bench_target+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	JMP done
-
-three:
-	MOVD (Bench_source+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F0
-	MOVD (Bench_source+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F1
-	MOVD (Bench_source+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F2
-	MOVD (Bench_source+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ (R11), F3
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	FMOVQ F0, 384(R4)
-	FMOVQ F1, 416(R4)
-	FMOVQ F2, 448(R4)
-	FMOVQ (Bank_Tap+352)(R0), F8
-	FMOVQ 32(R4), F4
-	FMOVQ 64(R4), F5
-	FMOVQ 96(R4), F6
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
-	FMOVQ (Bank_Tap+320)(R0), F8
-	FMOVQ 128(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+288)(R0), F8
-	FMOVQ 160(R4), F5
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+256)(R0), F8
-	FMOVQ 192(R4), F6
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+224)(R0), F8
-	FMOVQ 224(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+192)(R0), F8
-	FMOVQ 256(R4), F5
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+160)(R0), F8
-	FMOVQ 288(R4), F6
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+128)(R0), F8
-	FMOVQ 320(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+96)(R0), F8
-	FMOVQ 352(R4), F5
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+64)(R0), F8
-	FMOVQ 384(R4), F6
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+32)(R0), F8
-	FMOVQ 416(R4), F4
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ (Bank_Tap+0)(R0), F8
-	FMOVQ 448(R4), F5
-	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
-	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
-	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
-	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
-	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
-	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
-	FMOVQ (Bank_V1+0)(R1), F8
-	FMOVQ (Bank_V2+0)(R1), F9
-	FMOVQ (Bank_C1+0)(R1), F10
-	FMOVQ (Bank_C2+0)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	FMOVQ F6, (Bank_V1+0)(R1)
-	FMOVQ F5, (Bank_V2+0)(R1)
-	FMOVQ (Bank_Gain+0)(R1), F9
-	FMOVQ (Bank_Zero+0)(R1), F10
-	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V4.B16, V8.B16
-	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V4.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V5.B16, V8.B16
-	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V5.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V6.B16, V8.B16
-	WORD $0x4eeed4cf // fsub v15.2d, v6.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V6.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
-	MOVD $(Bank_Section+0)(R1), R5
-	MOVD $(Bank_Node+0)(R1), R6
-	MOVD b+0(FP), R11
-	MOVD Bank_Sections(R11), R10
-
-sections7:
-	FMOVQ (Section_A1+0)(R5), F8
-	FMOVQ (Section_A2+0)(R5), F9
-	FMOVQ (Node_X+0)(R6), F10
-	FMOVQ (Node_X1+0)(R6), F11
-	FMOVQ (Node_X+128)(R6), F12
-	FMOVQ (Node_X1+128)(R6), F13
-	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
-	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
-	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
-	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
-	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	FMOVQ F6, (Node_X+0)(R6)
-	FMOVQ F5, (Node_X1+0)(R6)
-	VMOV V4.B16, V6.B16
-	VMOV V10.B16, V5.B16
-	VMOV V11.B16, V4.B16
-	ADD $256, R5, R5
-	ADD $128, R6, R6
-	SUB $1, R10, R10
-	CBNZ R10, sections7
-	FMOVQ F6, (Node_X+0)(R6)
-	FMOVQ F5, (Node_X1+0)(R6)
-	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
-	VMOV V15.D[0], V0.D[0]
-	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
-	VMOV V15.D[0], V1.D[0]
-	WORD $0x0e6168cf // fcvtn v15.2s, v6.2d
-	VMOV V15.D[0], V2.D[0]
-	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
-	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
-	WORD $0x4e617846 // fcvtl2 v6.2d, v2.4s
-	FMOVQ (Bank_V1+16)(R1), F8
-	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bank_C1+16)(R1), F10
-	FMOVQ (Bank_C2+16)(R1), F11
-	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
-	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
-	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
-	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
-	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
-	FMOVQ F6, (Bank_V1+16)(R1)
-	FMOVQ F5, (Bank_V2+16)(R1)
-	FMOVQ (Bank_Gain+16)(R1), F9
-	FMOVQ (Bank_Zero+16)(R1), F10
-	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V4.B16, V8.B16
-	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V4.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V5.B16, V8.B16
-	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V5.B16
-	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
-	VMOV V6.B16, V8.B16
-	WORD $0x4eeed4cf // fsub v15.2d, v6.2d, v14.2d
-	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
-	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
-	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
-	VMOV V12.B16, V6.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
-	MOVD $(Bank_Section+0)(R1), R5
-	MOVD $(Bank_Node+0)(R1), R6
-	MOVD b+0(FP), R11
-	MOVD Bank_Sections(R11), R10
-
-sections8:
-	FMOVQ (Section_A1+16)(R5), F8
-	FMOVQ (Section_A2+16)(R5), F9
-	FMOVQ (Node_X+16)(R6), F10
-	FMOVQ (Node_X1+16)(R6), F11
-	FMOVQ (Node_X+144)(R6), F12
-	FMOVQ (Node_X1+144)(R6), F13
-	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
-	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
-	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
-	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
-	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
-	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
-	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	FMOVQ F6, (Node_X+16)(R6)
-	FMOVQ F5, (Node_X1+16)(R6)
-	VMOV V4.B16, V6.B16
-	VMOV V10.B16, V5.B16
-	VMOV V11.B16, V4.B16
-	ADD $256, R5, R5
-	ADD $128, R6, R6
-	SUB $1, R10, R10
-	CBNZ R10, sections8
-	FMOVQ F6, (Node_X+16)(R6)
-	FMOVQ F5, (Node_X1+16)(R6)
-	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
-	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
-	WORD $0x4e6168c2 // fcvtn2 v2.4s, v6.2d
-	FMOVQ (Bank_Power+0)(R0), F4
-	FMOVQ 0(R3), F16
-	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
-	FMOVQ F0, 0(R2)
-	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ 32(R3), F16
-	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
-	FMOVQ F1, 32(R2)
-	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ 64(R3), F16
-	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
-	FMOVQ F2, 64(R2)
-	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
-	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
-	FMOVQ F4, (Bank_Power+0)(R0)
-	VZIP1 V1.S4, V0.S4, V4.S4
-	VZIP2 V1.S4, V0.S4, V5.S4
-	VZIP1 V3.S4, V2.S4, V6.S4
-	VZIP2 V3.S4, V2.S4, V7.S4
-	VZIP1 V6.D2, V4.D2, V0.D2
-	VZIP2 V6.D2, V4.D2, V1.D2
-	VZIP1 V7.D2, V5.D2, V2.D2
-	VZIP2 V7.D2, V5.D2, V3.D2
-	MOVD (Bench_target+0)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F0, (R11)
-	MOVD (Bench_target+8)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F1, (R11)
-	MOVD (Bench_target+16)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F2, (R11)
-	MOVD (Bench_target+24)(R7), R11
-	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-
-done:
-	ADD $16, R12, R12
-	CMP $32, R12
-	BNE pass
-	RET
-
 // func movingStiff(b *Bank, w *Bench, force *floats, from, frames int)
 TEXT ·movingStiff(SB), NOSPLIT, $0-40
 	MOVD $bias<>(SB), R11
@@ -5038,7 +10167,7 @@ groups:
 	FMOVQ (Bank_Gain+0)(R1), F9
 	FMOVQ (Bank_Zero+0)(R1), F10
 	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
+	FMOVQ (Bank_Node+0)(R1), F12
 	FMOVQ (Bank_DGain+0)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+0)(R1), F16
@@ -5091,7 +10220,6 @@ groups:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V7.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
 	FMOVQ F9, (Bank_Gain+0)(R1)
 	FMOVQ F10, (Bank_Zero+0)(R1)
 	FMOVQ F11, (Bank_Pole+0)(R1)
@@ -5210,7 +10338,7 @@ sections1:
 	FMOVQ (Bank_Gain+16)(R1), F9
 	FMOVQ (Bank_Zero+16)(R1), F10
 	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
+	FMOVQ (Bank_Node+16)(R1), F12
 	FMOVQ (Bank_DGain+16)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+16)(R1), F16
@@ -5263,7 +10391,6 @@ sections1:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V7.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
 	FMOVQ F9, (Bank_Gain+16)(R1)
 	FMOVQ F10, (Bank_Zero+16)(R1)
 	FMOVQ F11, (Bank_Pole+16)(R1)
@@ -5487,7 +10614,7 @@ rest:
 	FMOVQ (Bank_Gain+0)(R1), F9
 	FMOVQ (Bank_Zero+0)(R1), F10
 	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
+	FMOVQ (Bank_Node+0)(R1), F12
 	FMOVQ (Bank_DGain+0)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+0)(R1), F16
@@ -5501,7 +10628,6 @@ rest:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V4.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
 	FMOVQ F9, (Bank_Gain+0)(R1)
 	FMOVQ F10, (Bank_Zero+0)(R1)
 	FMOVQ F11, (Bank_Pole+0)(R1)
@@ -5560,7 +10686,7 @@ sections3:
 	FMOVQ (Bank_Gain+16)(R1), F9
 	FMOVQ (Bank_Zero+16)(R1), F10
 	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
+	FMOVQ (Bank_Node+16)(R1), F12
 	FMOVQ (Bank_DGain+16)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+16)(R1), F16
@@ -5574,7 +10700,6 @@ sections3:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V4.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
 	FMOVQ F9, (Bank_Gain+16)(R1)
 	FMOVQ F10, (Bank_Zero+16)(R1)
 	FMOVQ F11, (Bank_Pole+16)(R1)
@@ -5771,7 +10896,7 @@ two:
 	FMOVQ (Bank_Gain+0)(R1), F9
 	FMOVQ (Bank_Zero+0)(R1), F10
 	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
+	FMOVQ (Bank_Node+0)(R1), F12
 	FMOVQ (Bank_DGain+0)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+0)(R1), F16
@@ -5798,7 +10923,6 @@ two:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V5.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
 	FMOVQ F9, (Bank_Gain+0)(R1)
 	FMOVQ F10, (Bank_Zero+0)(R1)
 	FMOVQ F11, (Bank_Pole+0)(R1)
@@ -5877,7 +11001,7 @@ sections5:
 	FMOVQ (Bank_Gain+16)(R1), F9
 	FMOVQ (Bank_Zero+16)(R1), F10
 	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
+	FMOVQ (Bank_Node+16)(R1), F12
 	FMOVQ (Bank_DGain+16)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+16)(R1), F16
@@ -5904,7 +11028,6 @@ sections5:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V5.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
 	FMOVQ F9, (Bank_Gain+16)(R1)
 	FMOVQ F10, (Bank_Zero+16)(R1)
 	FMOVQ F11, (Bank_Pole+16)(R1)
@@ -6153,7 +11276,7 @@ three:
 	FMOVQ (Bank_Gain+0)(R1), F9
 	FMOVQ (Bank_Zero+0)(R1), F10
 	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
+	FMOVQ (Bank_Node+0)(R1), F12
 	FMOVQ (Bank_DGain+0)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+0)(R1), F16
@@ -6193,7 +11316,6 @@ three:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V6.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
 	FMOVQ F9, (Bank_Gain+0)(R1)
 	FMOVQ F10, (Bank_Zero+0)(R1)
 	FMOVQ F11, (Bank_Pole+0)(R1)
@@ -6292,7 +11414,7 @@ sections7:
 	FMOVQ (Bank_Gain+16)(R1), F9
 	FMOVQ (Bank_Zero+16)(R1), F10
 	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
+	FMOVQ (Bank_Node+16)(R1), F12
 	FMOVQ (Bank_DGain+16)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+16)(R1), F16
@@ -6332,7 +11454,6 @@ sections7:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V6.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
 	FMOVQ F9, (Bank_Gain+16)(R1)
 	FMOVQ F10, (Bank_Zero+16)(R1)
 	FMOVQ F11, (Bank_Pole+16)(R1)
@@ -6922,7 +12043,7 @@ groups:
 	FMOVQ (Bank_Gain+0)(R1), F9
 	FMOVQ (Bank_Zero+0)(R1), F10
 	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
+	FMOVQ (Bank_Node+0)(R1), F12
 	FMOVQ (Bank_DGain+0)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+0)(R1), F16
@@ -6975,7 +12096,6 @@ groups:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V7.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
 	FMOVQ F9, (Bank_Gain+0)(R1)
 	FMOVQ F10, (Bank_Zero+0)(R1)
 	FMOVQ F11, (Bank_Pole+0)(R1)
@@ -7094,7 +12214,7 @@ sections1:
 	FMOVQ (Bank_Gain+16)(R1), F9
 	FMOVQ (Bank_Zero+16)(R1), F10
 	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
+	FMOVQ (Bank_Node+16)(R1), F12
 	FMOVQ (Bank_DGain+16)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+16)(R1), F16
@@ -7147,7 +12267,6 @@ sections1:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V7.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
 	FMOVQ F9, (Bank_Gain+16)(R1)
 	FMOVQ F10, (Bank_Zero+16)(R1)
 	FMOVQ F11, (Bank_Pole+16)(R1)
@@ -7442,7 +12561,7 @@ rest:
 	FMOVQ (Bank_Gain+0)(R1), F9
 	FMOVQ (Bank_Zero+0)(R1), F10
 	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
+	FMOVQ (Bank_Node+0)(R1), F12
 	FMOVQ (Bank_DGain+0)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+0)(R1), F16
@@ -7456,7 +12575,6 @@ rest:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V4.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
 	FMOVQ F9, (Bank_Gain+0)(R1)
 	FMOVQ F10, (Bank_Zero+0)(R1)
 	FMOVQ F11, (Bank_Pole+0)(R1)
@@ -7515,7 +12633,7 @@ sections3:
 	FMOVQ (Bank_Gain+16)(R1), F9
 	FMOVQ (Bank_Zero+16)(R1), F10
 	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
+	FMOVQ (Bank_Node+16)(R1), F12
 	FMOVQ (Bank_DGain+16)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+16)(R1), F16
@@ -7529,7 +12647,6 @@ sections3:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V4.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
 	FMOVQ F9, (Bank_Gain+16)(R1)
 	FMOVQ F10, (Bank_Zero+16)(R1)
 	FMOVQ F11, (Bank_Pole+16)(R1)
@@ -7835,7 +12952,7 @@ two:
 	FMOVQ (Bank_Gain+0)(R1), F9
 	FMOVQ (Bank_Zero+0)(R1), F10
 	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
+	FMOVQ (Bank_Node+0)(R1), F12
 	FMOVQ (Bank_DGain+0)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+0)(R1), F16
@@ -7862,7 +12979,6 @@ two:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V5.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
 	FMOVQ F9, (Bank_Gain+0)(R1)
 	FMOVQ F10, (Bank_Zero+0)(R1)
 	FMOVQ F11, (Bank_Pole+0)(R1)
@@ -7941,7 +13057,7 @@ sections5:
 	FMOVQ (Bank_Gain+16)(R1), F9
 	FMOVQ (Bank_Zero+16)(R1), F10
 	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
+	FMOVQ (Bank_Node+16)(R1), F12
 	FMOVQ (Bank_DGain+16)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+16)(R1), F16
@@ -7968,7 +13084,6 @@ sections5:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V5.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
 	FMOVQ F9, (Bank_Gain+16)(R1)
 	FMOVQ F10, (Bank_Zero+16)(R1)
 	FMOVQ F11, (Bank_Pole+16)(R1)
@@ -8364,7 +13479,7 @@ three:
 	FMOVQ (Bank_Gain+0)(R1), F9
 	FMOVQ (Bank_Zero+0)(R1), F10
 	FMOVQ (Bank_Pole+0)(R1), F11
-	FMOVQ (Bank_Shelf+0)(R1), F12
+	FMOVQ (Bank_Node+0)(R1), F12
 	FMOVQ (Bank_DGain+0)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+0)(R1), F16
@@ -8404,7 +13519,6 @@ three:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V6.B16
-	FMOVQ F12, (Bank_Shelf+0)(R1)
 	FMOVQ F9, (Bank_Gain+0)(R1)
 	FMOVQ F10, (Bank_Zero+0)(R1)
 	FMOVQ F11, (Bank_Pole+0)(R1)
@@ -8503,7 +13617,7 @@ sections7:
 	FMOVQ (Bank_Gain+16)(R1), F9
 	FMOVQ (Bank_Zero+16)(R1), F10
 	FMOVQ (Bank_Pole+16)(R1), F11
-	FMOVQ (Bank_Shelf+16)(R1), F12
+	FMOVQ (Bank_Node+16)(R1), F12
 	FMOVQ (Bank_DGain+16)(R1), F16
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	FMOVQ (Bank_DZero+16)(R1), F16
@@ -8543,7 +13657,6 @@ sections7:
 	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
 	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
 	VMOV V12.B16, V6.B16
-	FMOVQ F12, (Bank_Shelf+16)(R1)
 	FMOVQ F9, (Bank_Gain+16)(R1)
 	FMOVQ F10, (Bank_Zero+16)(R1)
 	FMOVQ F11, (Bank_Pole+16)(R1)

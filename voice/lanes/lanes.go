@@ -45,7 +45,7 @@ type (
 //
 //	x = sum over i of Tap[i] line[at - Back + Taps-1 - i]
 //	v = Level x - C2 v'' - C1 v'
-//	v = Shelf(v), then through the allpass sections, where there are any
+//	v = shelf(v), then through the allpass sections, where there are any
 //	y = line[at] = Out = v + force
 //
 // Still, Level is in the taps and not multiplied. Where lanes move, all that has a D-sister changes by it
@@ -67,7 +67,6 @@ type Bank struct {
 	V1, V2                              doubles // the loss filter's last two outputs
 	Gain, Zero, Pole                    doubles // of the shelf
 	DGain, DZero, DPole                 doubles
-	Shelf                               doubles // its last output
 	Section                             [MaxSections]Section
 	Node                                [MaxSections + 1]Node
 	At                                  [Width]int64 // where each lane's next sample goes in the line
@@ -116,9 +115,9 @@ type Bench struct {
 	Line []float32
 	Rows *Rows
 
-	window              [Frames + Taps + 4]floats
-	offsets             [4]floats
-	source, target, row [Width]uintptr
+	window                  [Frames + Taps + 4]floats
+	offsets, read, filtered [4]floats
+	source, target, row     [Width]uintptr
 }
 
 // Force is what drives each lane in each frame of a control step.
@@ -135,10 +134,11 @@ const (
 
 // Kernel renders banks and mixes them.
 type Kernel struct {
-	name         string
-	plain, stiff kinds
-	turn         func(b *Bank, w *Bench) // begins a block of a glide
-	mix          func(b *Bank, m *Mix, from, frames int)
+	name  string
+	plain kinds
+	stiff [MaxSections + 1]kinds  // by the number of sections
+	turn  func(b *Bank, w *Bench) // begins a block of a glide
+	mix   func(b *Bank, m *Mix, from, frames int)
 }
 
 // kinds is by Motion.
@@ -175,7 +175,7 @@ func (k Kernel) Render(b *Bank, w *Bench, force *Force, motion Motion, from, unt
 	}
 	do := k.plain[motion]
 	if b.Sections > 0 {
-		do = k.stiff[motion]
+		do = k.stiff[b.Sections][motion]
 	}
 	for start := from; from < until; {
 		end := until
@@ -277,12 +277,12 @@ func (b *Bank) singles() (all [plainSingles + 2*Taps + SlopeTaps + curveRoom]*fl
 }
 
 // filterDoubles is how many doubles a lane has beside those of its sections.
-const filterDoubles = 13
+const filterDoubles = 12
 
 func (b *Bank) doubles() (all [filterDoubles + 4*MaxSections + 2*(MaxSections+1)]*doubles) {
 	copy(all[:], []*doubles{
 		&b.C1, &b.C2, &b.DC1, &b.DC2, &b.V1, &b.V2,
-		&b.Gain, &b.Zero, &b.Pole, &b.DGain, &b.DZero, &b.DPole, &b.Shelf,
+		&b.Gain, &b.Zero, &b.Pole, &b.DGain, &b.DZero, &b.DPole,
 	})
 	rest := all[filterDoubles:]
 	for i := range b.Section {

@@ -6,10 +6,18 @@ func Portable() Kernel {
 	return Kernel{
 		name:  "portable",
 		plain: kinds{each((*Bank).plain), moving, gliding},
-		stiff: kinds{each((*Bank).stiff), moving, gliding},
+		stiff: forSections(each((*Bank).stiff), moving, gliding),
 		turn:  turnLanes,
 		mix:   mixLanes,
 	}
+}
+
+// forSections is one kernel of each kind for all numbers of sections.
+func forSections(still, moving, gliding run) (all [MaxSections + 1]kinds) {
+	for i := range all {
+		all[i] = kinds{still, moving, gliding}
+	}
+	return all
 }
 
 func mixLanes(b *Bank, m *Mix, from, frames int) {
@@ -224,8 +232,7 @@ func (b *Bank) lose(l int, x float32) float64 {
 	if b.Sections == 0 {
 		return v
 	}
-	v = float64(b.Gain[l]*(v-float64(b.Zero[l]*before))) + float64(b.Pole[l]*b.Shelf[l])
-	b.Shelf[l] = v
+	v = float64(b.Gain[l]*(v-float64(b.Zero[l]*before))) + float64(b.Pole[l]*b.Node[0].X[l])
 	return v
 }
 

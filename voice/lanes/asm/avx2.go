@@ -115,6 +115,21 @@ func (a avx2) narrow(d, s, scratch reg, h half) {
 	}
 }
 
+func (a avx2) widenM(d reg, m mem, h half) {
+	a.put("VCVTPS2PD %s, Y%d", avx2Pointers.at(m.plus(16*int(h))), d)
+}
+
+func (a avx2) storeHalf(m mem, s, scratch reg, h half) {
+	a.put("VCVTPD2PSY Y%d, X%d", s, scratch)
+	a.put("VMOVUPS X%d, %s", scratch, avx2Pointers.at(m.plus(16*int(h))))
+}
+
+// join loads by halves, as they were stored: a load across two stores has to wait for both.
+func (a avx2) join(d reg, m mem) {
+	a.put("VMOVUPS %s, X%d", avx2Pointers.at(m), d)
+	a.put("VINSERTF128 $1, %s, Y%d, Y%d", avx2Pointers.at(m.plus(16)), d, d)
+}
+
 // loadQuad loads four samples of each line, lanes 0 to 3 below lanes 4 to 7.
 func (a avx2) loadQuad(d, scratch [4]reg, table string) {
 	for i, d := range d {

@@ -6,13 +6,17 @@ import "fmt"
 type kernel struct {
 	machine
 	moving, gliding, stiff bool
+	unrolled               int // sections of a still stiff string
 	loops                  int // labels so far
 }
 
 func generate(m machine) string {
 	fmt.Fprintf(m.text(), header, m.goarch())
+	(&kernel{machine: m}).write()
+	for sections := 1; sections <= maxSections; sections++ {
+		(&kernel{machine: m, stiff: true, unrolled: sections}).write()
+	}
 	for _, stiff := range []bool{false, true} {
-		(&kernel{machine: m, stiff: stiff}).write()
 		(&kernel{machine: m, stiff: stiff, moving: true}).write()
 		(&kernel{machine: m, stiff: stiff, moving: true, gliding: true}).write()
 	}
@@ -41,6 +45,7 @@ GLOBL bias<>(SB), RODATA|NOPTR, $32
 
 const (
 	taps                 = 12
+	maxSections          = 4
 	slopeTaps, curveTaps = 8, 6
 	rowQuads             = 7  // of taps, slope and curve together
 	floats               = 32 // bytes of one float of every lane of a bank
@@ -55,7 +60,9 @@ func (k *kernel) name() string {
 	case k.moving:
 		name = "moving"
 	}
-	if k.stiff {
+	if k.unrolled > 0 {
+		name += fmt.Sprint("Stiff", k.unrolled)
+	} else if k.stiff {
 		name += "Stiff"
 	} else {
 		name += "Plain"
@@ -106,10 +113,13 @@ func (k *kernel) remainder(n int) {
 // is written.
 func (k *kernel) group(n int) {
 	k.read(n)
-	if k.moving || k.stiff {
+	switch {
+	case k.unrolled > 0:
+		k.filterUnrolled(n)
+	case k.moving || k.stiff:
 		k.filter(n, low)
 		k.filter(n, high)
-	} else {
+	default:
 		k.loseBoth(n)
 	}
 	k.sound(n)
@@ -307,7 +317,7 @@ func (k *kernel) shelf(x []reg, h half) {
 	for i, name := range names {
 		k.load(reg(gain+i), k.double(name, h))
 	}
-	k.load(last, k.double("Shelf", h))
+	k.load(last, mem{bankD, "Bank_Node", int(h) * k.width()}) // its last output: what came before the first section
 	for _, x := range x {
 		if k.moving {
 			for i, name := range names {
@@ -322,7 +332,6 @@ func (k *kernel) shelf(x []reg, h half) {
 		k.addD(last, u, t)
 		k.copy(x, last)
 	}
-	k.store(k.double("Shelf", h), last)
 	if k.moving {
 		for i, name := range names {
 			k.store(k.double(name, h), reg(gain+i))
@@ -387,6 +396,74 @@ func (k *kernel) sections(x []reg, h half) {
 		k.store(history(0, "X1"), x[len(x)-2])
 	} else {
 		k.store(history(0, "X1"), lastOut)
+	}
+}
+
+// filterUnrolled takes n frames, in registers 0 to n-1, through all filters of still stiff
+// strings, frame by frame, with the whole history of one half of the lanes in registers. Nothing is
+// moved between them: the register that a frame frees takes the next result.
+func (k *kernel) filterUnrolled(n int) {
+	for f := range n {
+		k.store(mem{benchF, "Bench_read", f * floats}, reg(f))
+	}
+	for _, h := range []half{low, high} {
+		k.unroll(n, h)
+	}
+	for f := range n {
+		k.join(reg(f), mem{benchF, "Bench_filtered", f * floats})
+	}
+}
+
+func (k *kernel) unroll(n int, h half) {
+	const t, u = 14, 15
+	section := func(i int, field int) mem {
+		return mem{bankD, "Bank_Section", i*4*doubles + field*doubles + int(h)*k.width()}
+	}
+	node := func(i int, field int) mem {
+		return mem{bankD, "Bank_Node", i*2*doubles + field*doubles + int(h)*k.width()}
+	}
+	var now, before [maxSections + 1]reg // of each node
+	for i := range k.unrolled + 1 {
+		now[i], before[i] = reg(2*i), reg(2*i+1)
+		k.load(now[i], node(i, 0))
+		k.load(before[i], node(i, 1))
+	}
+	last, older, x, free := reg(10), reg(11), reg(12), reg(13)
+	k.load(last, k.double("V1", h))
+	k.load(older, k.double("V2", h))
+	for f := range n {
+		k.widenM(x, mem{benchF, "Bench_read", f * floats}, h)
+		k.mulDm(t, older, k.double("C2", h))
+		k.subD(x, x, t)
+		k.mulDm(t, last, k.double("C1", h))
+		k.subD(x, x, t)
+		// the shelf, whose last output is what came before the first section
+		k.mulDm(t, last, k.double("Zero", h))
+		k.subD(t, x, t)
+		k.mulDm(t, t, k.double("Gain", h))
+		k.mulDm(u, now[0], k.double("Pole", h))
+		k.addD(free, t, u)
+		last, older, x = x, last, older
+		for i := range k.unrolled {
+			in := free
+			k.subD(t, in, before[i+1])
+			k.mulDm(t, t, section(i, 1))
+			k.addD(t, t, before[i])
+			k.subD(u, now[i], now[i+1])
+			k.mulDm(u, u, section(i, 0))
+			free = before[i]
+			before[i], now[i] = now[i], in
+			k.addD(free, t, u)
+		}
+		s := k.unrolled
+		k.storeHalf(mem{benchF, "Bench_filtered", f * floats}, free, t, h)
+		free, before[s], now[s] = before[s], now[s], free
+	}
+	k.store(k.double("V1", h), last)
+	k.store(k.double("V2", h), older)
+	for i := range k.unrolled + 1 {
+		k.store(node(i, 0), now[i])
+		k.store(node(i, 1), before[i])
 	}
 }
 

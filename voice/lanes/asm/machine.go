@@ -91,6 +91,9 @@ type machine interface {
 	addBias(d, a reg)
 	widen(d, s reg, h half)
 	narrow(d, s, scratch reg, h half) // the other half of d stays
+	widenM(d reg, m mem, h half)      // of an f32 vector in memory
+	storeHalf(m mem, s, scratch reg, h half)
+	join(d reg, m mem) // what storeHalf stored
 	mulFm(d, a reg, m mem)
 	loadQuad(d, scratch [4]reg, table string) // of Bench: where each lane's are
 	storeQuad(s, scratch [4]reg)              // destroys s

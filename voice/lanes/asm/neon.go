@@ -176,6 +176,18 @@ func (n neon) narrow(d, s, scratch reg, h half) {
 	n.put("VMOV V%d.D[0], V%d.D[0]", scratch, d)
 }
 
+func (n neon) widenM(d reg, m mem, h half) {
+	n.load(operand, m)
+	n.widen(d, operand, h)
+}
+
+func (n neon) storeHalf(m mem, s, scratch reg, h half) {
+	n.word(fcvtn, scratch, s)
+	n.put("FMOVD F%d, %s", scratch, neonPointers.at(m.plus(8*int(h))))
+}
+
+func (n neon) join(d reg, m mem) { n.load(d, m) }
+
 func (n neon) loadQuad(d, scratch [4]reg, table string) {
 	for i, d := range d {
 		n.line(table, i)
