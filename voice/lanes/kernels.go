@@ -66,9 +66,19 @@ type kernel func(b *Bank, w *Bench, force *floats, from, frames int)
 func onLines(do kernel) run {
 	return func(b *Bank, w *Bench, force *Force, ahead, from, frames int) {
 		base := uintptr(unsafe.Pointer(unsafe.SliceData(w.Line)))
+		last := int64(len(w.Line)) - int64(frames) - Spill
 		for i, at := range b.At {
-			w.source[i] = base + 4*uintptr(b.oldest(i, int64(ahead))+Taps-1)
-			w.target[i] = base + 4*uintptr(at+int64(ahead))
+			at += int64(ahead)
+			back := b.Back[i]
+			first := at - back
+			if first < b.Floor[i] {
+				first += b.Ring[i]
+			}
+			if back < Taps-1+Shortest || first < History || first > last-Taps || at < 0 || at > last {
+				panic("lanes: a lane reaches outside its line")
+			}
+			w.source[i] = base + 4*uintptr(first+Taps-1)
+			w.target[i] = base + 4*uintptr(at)
 		}
 		do(b, w, &force[from], from, frames)
 		runtime.KeepAlive(w.Line)

@@ -1165,238 +1165,246 @@ groups:
 	FMOVQ F1, (Bench_read+32)(R13)
 	FMOVQ F2, (Bench_read+64)(R13)
 	FMOVQ F3, (Bench_read+96)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc6f // fmul v15.2d, v3.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee1d44e // fsub v14.2d, v2.2d, v1.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d46f // fsub v15.2d, v3.2d, v0.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x0e6169ae // fcvtn v14.2s, v13.2d
-	FMOVD F14, (Bench_filtered+64)(R13)
-	FMOVQ (Bench_read+96)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc4f // fmul v15.2d, v2.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee0d42e // fsub v14.2d, v1.2d, v0.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4eedd44f // fsub v15.2d, v2.2d, v13.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+96)(R13)
-	FMOVQ F12, (Bank_V1+0)(R1)
-	FMOVQ F10, (Bank_V2+0)(R1)
-	FMOVQ F1, (Bank_Node+0)(R1)
-	FMOVQ F2, (Bank_Node+64)(R1)
-	FMOVQ F3, (Bank_Node+128)(R1)
-	FMOVQ F13, (Bank_Node+192)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc6f // fmul v15.2d, v3.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee1d44e // fsub v14.2d, v2.2d, v1.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d46f // fsub v15.2d, v3.2d, v0.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x0e6169ae // fcvtn v14.2s, v13.2d
-	FMOVD F14, (Bench_filtered+72)(R13)
-	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dca2 // fmul v2.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70ddaa // fmul v10.2d, v13.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc4f // fmul v15.2d, v2.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee0d42e // fsub v14.2d, v1.2d, v0.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4eedd44f // fsub v15.2d, v2.2d, v13.2d
-	FMOVQ (Bank_Section+16)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+104)(R13)
-	FMOVQ F12, (Bank_V1+16)(R1)
-	FMOVQ F10, (Bank_V2+16)(R1)
-	FMOVQ F1, (Bank_Node+16)(R1)
-	FMOVQ F2, (Bank_Node+80)(R1)
-	FMOVQ F3, (Bank_Node+144)(R1)
-	FMOVQ F13, (Bank_Node+208)(R1)
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+16)(R1), F8
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4ee7d467 // fsub v7.2d, v3.2d, v7.2d
+	WORD $0x4eefd56f // fsub v15.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e1 // fadd v1.2d, v7.2d, v0.2d
+	WORD $0x4e68d5e9 // fadd v9.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc67 // fmul v7.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6f // fmul v15.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc20 // fmul v0.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd28 // fmul v8.2d, v9.2d, v16.2d
+	WORD $0x4ee7d487 // fsub v7.2d, v4.2d, v7.2d
+	WORD $0x4eefd58f // fsub v15.2d, v12.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e2 // fadd v2.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ea // fadd v10.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc87 // fmul v7.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8f // fmul v15.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc40 // fmul v0.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd48 // fmul v8.2d, v10.2d, v16.2d
+	WORD $0x4ee7d4a7 // fsub v7.2d, v5.2d, v7.2d
+	WORD $0x4eefd5af // fsub v15.2d, v13.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e3 // fadd v3.2d, v7.2d, v0.2d
+	WORD $0x4e68d5eb // fadd v11.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca7 // fmul v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc60 // fmul v0.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd68 // fmul v8.2d, v11.2d, v16.2d
+	WORD $0x4ee7d4c7 // fsub v7.2d, v6.2d, v7.2d
+	WORD $0x4eefd5cf // fsub v15.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e4 // fadd v4.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ec // fadd v12.2d, v15.2d, v8.2d
+	FMOVQ F5, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_V2+16)(R1)
+	FMOVQ F6, (Bank_V1+0)(R1)
+	FMOVQ F14, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+64)(R1)
+	FMOVQ F11, (Bank_Node+80)(R1)
+	FMOVQ F4, (Bank_Node+0)(R1)
+	FMOVQ F12, (Bank_Node+16)(R1)
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F9, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	WORD $0x0e6168e5 // fcvtn v5.2s, v7.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e6169ed // fcvtn v13.2s, v15.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616805 // fcvtn v5.2s, v0.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61690d // fcvtn v13.2s, v8.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
+	WORD $0x0e616825 // fcvtn v5.2s, v1.2d
+	FMOVD F5, (Bench_filtered+64)(R13)
+	WORD $0x0e61692d // fcvtn v13.2s, v9.2d
+	FMOVD F13, (Bench_filtered+72)(R13)
+	WORD $0x0e616845 // fcvtn v5.2s, v2.2d
+	FMOVD F5, (Bench_filtered+96)(R13)
+	WORD $0x0e61694d // fcvtn v13.2s, v10.2d
+	FMOVD F13, (Bench_filtered+104)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bench_filtered+64)(R13), F2
@@ -1527,82 +1535,92 @@ rest:
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ F12, (Bank_V1+0)(R1)
-	FMOVQ F10, (Bank_V2+0)(R1)
-	FMOVQ F13, (Bank_Node+0)(R1)
-	FMOVQ F0, (Bank_Node+64)(R1)
-	FMOVQ F1, (Bank_Node+128)(R1)
-	FMOVQ F2, (Bank_Node+192)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
-	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F4
+	FMOVQ (Bank_V1+16)(R1), F12
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F5
+	FMOVQ (Bank_Node+16)(R1), F13
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4ee4d464 // fsub v4.2d, v3.2d, v4.2d
+	WORD $0x4eecd56c // fsub v12.2d, v11.2d, v12.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	WORD $0x4e65d486 // fadd v6.2d, v4.2d, v5.2d
+	WORD $0x4e6dd58e // fadd v14.2d, v12.2d, v13.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ F7, (Bank_V2+0)(R1)
+	FMOVQ F15, (Bank_V2+16)(R1)
+	FMOVQ F3, (Bank_V1+0)(R1)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F1
+	FMOVQ (Bank_Node+16)(R1), F9
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d421 // fsub v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d529 // fsub v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ F12, (Bank_V1+16)(R1)
-	FMOVQ F10, (Bank_V2+16)(R1)
-	FMOVQ F13, (Bank_Node+16)(R1)
-	FMOVQ F0, (Bank_Node+80)(R1)
-	FMOVQ F1, (Bank_Node+144)(R1)
-	FMOVQ F2, (Bank_Node+208)(R1)
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d421 // fadd v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d4c0 // fsub v0.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d5c8 // fsub v8.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4e61d402 // fadd v2.2d, v0.2d, v1.2d
+	WORD $0x4e69d50a // fadd v10.2d, v8.2d, v9.2d
+	FMOVQ (Bank_Node+0)(R1), F7
+	FMOVQ (Bank_Node+16)(R1), F15
+	FMOVQ F7, (Bank_Node+64)(R1)
+	FMOVQ F15, (Bank_Node+80)(R1)
+	FMOVQ F6, (Bank_Node+0)(R1)
+	FMOVQ F14, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F3
+	FMOVQ (Bank_Node+144)(R1), F11
+	FMOVQ F3, (Bank_Node+192)(R1)
+	FMOVQ F11, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	WORD $0x0e616844 // fcvtn v4.2s, v2.2d
+	FMOVD F4, (Bench_filtered+0)(R13)
+	WORD $0x0e61694c // fcvtn v12.2s, v10.2d
+	FMOVD F12, (Bench_filtered+8)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bank_Power+0)(R0), F4
 	FMOVQ 0(R3), F16
@@ -1731,134 +1749,142 @@ two:
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	FMOVQ F0, (Bench_read+0)(R13)
 	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ F11, (Bank_V1+0)(R1)
-	FMOVQ F12, (Bank_V2+0)(R1)
-	FMOVQ F3, (Bank_Node+0)(R1)
-	FMOVQ F13, (Bank_Node+64)(R1)
-	FMOVQ F0, (Bank_Node+128)(R1)
-	FMOVQ F1, (Bank_Node+192)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F5
+	FMOVQ (Bank_V1+16)(R1), F13
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	WORD $0x4ee5d465 // fsub v5.2d, v3.2d, v5.2d
+	WORD $0x4eedd56d // fsub v13.2d, v11.2d, v13.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc65 // fmul v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6d // fmul v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dce6 // fmul v6.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddee // fmul v14.2d, v15.2d, v16.2d
+	WORD $0x4ee5d485 // fsub v5.2d, v4.2d, v5.2d
+	WORD $0x4eedd58d // fsub v13.2d, v12.2d, v13.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_V2+0)(R1)
+	FMOVQ F11, (Bank_V2+16)(R1)
+	FMOVQ F4, (Bank_V1+0)(R1)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F2
+	FMOVQ (Bank_Node+16)(R1), F10
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d442 // fsub v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54a // fsub v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
-	FMOVQ F11, (Bank_V1+16)(R1)
-	FMOVQ F12, (Bank_V2+16)(R1)
-	FMOVQ F3, (Bank_Node+16)(R1)
-	FMOVQ F13, (Bank_Node+80)(R1)
-	FMOVQ F0, (Bank_Node+144)(R1)
-	FMOVQ F1, (Bank_Node+208)(R1)
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d4e1 // fsub v1.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d5e9 // fsub v9.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e62d423 // fadd v3.2d, v1.2d, v2.2d
+	WORD $0x4e6ad52b // fadd v11.2d, v9.2d, v10.2d
+	WORD $0x4ee3d4e2 // fsub v2.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ea // fsub v10.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d401 // fsub v1.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d509 // fsub v9.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e62d424 // fadd v4.2d, v1.2d, v2.2d
+	WORD $0x4e6ad52c // fadd v12.2d, v9.2d, v10.2d
+	FMOVQ F7, (Bank_Node+64)(R1)
+	FMOVQ F15, (Bank_Node+80)(R1)
+	FMOVQ F0, (Bank_Node+0)(R1)
+	FMOVQ F8, (Bank_Node+16)(R1)
+	FMOVQ F3, (Bank_Node+192)(R1)
+	FMOVQ F11, (Bank_Node+208)(R1)
+	FMOVQ F4, (Bank_Node+128)(R1)
+	FMOVQ F12, (Bank_Node+144)(R1)
+	WORD $0x0e616865 // fcvtn v5.2s, v3.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e61696d // fcvtn v13.2s, v11.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616885 // fcvtn v5.2s, v4.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61698d // fcvtn v13.2s, v12.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bank_Power+0)(R0), F4
@@ -2020,186 +2046,194 @@ three:
 	FMOVQ F0, (Bench_read+0)(R13)
 	FMOVQ F1, (Bench_read+32)(R13)
 	FMOVQ F2, (Bench_read+64)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc6f // fmul v15.2d, v3.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee1d44e // fsub v14.2d, v2.2d, v1.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d46f // fsub v15.2d, v3.2d, v0.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x0e6169ae // fcvtn v14.2s, v13.2d
-	FMOVD F14, (Bench_filtered+64)(R13)
-	FMOVQ F10, (Bank_V1+0)(R1)
-	FMOVQ F11, (Bank_V2+0)(R1)
-	FMOVQ F2, (Bank_Node+0)(R1)
-	FMOVQ F3, (Bank_Node+64)(R1)
-	FMOVQ F13, (Bank_Node+128)(R1)
-	FMOVQ F0, (Bank_Node+192)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee2d46e // fsub v14.2d, v3.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
 	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F6
+	FMOVQ (Bank_V1+16)(R1), F14
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F7
+	FMOVQ (Bank_Node+16)(R1), F15
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4ee6d466 // fsub v6.2d, v3.2d, v6.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Gain+16)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c0 // fadd v0.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc66 // fmul v6.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc07 // fmul v7.2d, v0.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc6f // fmul v15.2d, v3.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee1d44e // fsub v14.2d, v2.2d, v1.2d
-	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd0f // fmul v15.2d, v8.2d, v16.2d
+	WORD $0x4ee6d486 // fsub v6.2d, v4.2d, v6.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d46f // fsub v15.2d, v3.2d, v0.2d
+	WORD $0x4e67d4c1 // fadd v1.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc86 // fmul v6.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc27 // fmul v7.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
+	WORD $0x4ee6d4a6 // fsub v6.2d, v5.2d, v6.2d
+	WORD $0x4eeed5ae // fsub v14.2d, v13.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c2 // fadd v2.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
+	FMOVQ F4, (Bank_V2+0)(R1)
+	FMOVQ F12, (Bank_V2+16)(R1)
+	FMOVQ F5, (Bank_V1+0)(R1)
+	FMOVQ F13, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F4
+	FMOVQ (Bank_Node+16)(R1), F12
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d484 // fsub v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d58c // fsub v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x0e6169ae // fcvtn v14.2s, v13.2d
-	FMOVD F14, (Bench_filtered+72)(R13)
-	FMOVQ F10, (Bank_V1+16)(R1)
-	FMOVQ F11, (Bank_V2+16)(R1)
-	FMOVQ F2, (Bank_Node+16)(R1)
-	FMOVQ F3, (Bank_Node+80)(R1)
-	FMOVQ F13, (Bank_Node+144)(R1)
-	FMOVQ F0, (Bank_Node+208)(R1)
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d403 // fsub v3.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d50b // fsub v11.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d465 // fadd v5.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56d // fadd v13.2d, v11.2d, v12.2d
+	WORD $0x4ee5d404 // fsub v4.2d, v0.2d, v5.2d
+	WORD $0x4eedd50c // fsub v12.2d, v8.2d, v13.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d423 // fsub v3.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d52b // fsub v11.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d466 // fadd v6.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56e // fadd v14.2d, v11.2d, v12.2d
+	WORD $0x4ee6d424 // fsub v4.2d, v1.2d, v6.2d
+	WORD $0x4eeed52c // fsub v12.2d, v9.2d, v14.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	WORD $0x4e60d484 // fadd v4.2d, v4.2d, v0.2d
+	WORD $0x4e68d58c // fadd v12.2d, v12.2d, v8.2d
+	WORD $0x4ee5d443 // fsub v3.2d, v2.2d, v5.2d
+	WORD $0x4eedd54b // fsub v11.2d, v10.2d, v13.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d460 // fadd v0.2d, v3.2d, v4.2d
+	WORD $0x4e6cd568 // fadd v8.2d, v11.2d, v12.2d
+	FMOVQ F1, (Bank_Node+64)(R1)
+	FMOVQ F9, (Bank_Node+80)(R1)
+	FMOVQ F2, (Bank_Node+0)(R1)
+	FMOVQ F10, (Bank_Node+16)(R1)
+	FMOVQ F6, (Bank_Node+192)(R1)
+	FMOVQ F14, (Bank_Node+208)(R1)
+	FMOVQ F0, (Bank_Node+128)(R1)
+	FMOVQ F8, (Bank_Node+144)(R1)
+	WORD $0x0e6168a7 // fcvtn v7.2s, v5.2d
+	FMOVD F7, (Bench_filtered+0)(R13)
+	WORD $0x0e6169af // fcvtn v15.2s, v13.2d
+	FMOVD F15, (Bench_filtered+8)(R13)
+	WORD $0x0e6168c7 // fcvtn v7.2s, v6.2d
+	FMOVD F7, (Bench_filtered+32)(R13)
+	WORD $0x0e6169cf // fcvtn v15.2s, v14.2d
+	FMOVD F15, (Bench_filtered+40)(R13)
+	WORD $0x0e616807 // fcvtn v7.2s, v0.2d
+	FMOVD F7, (Bench_filtered+64)(R13)
+	WORD $0x0e61690f // fcvtn v15.2s, v8.2d
+	FMOVD F15, (Bench_filtered+72)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bench_filtered+64)(R13), F2
@@ -2498,310 +2532,326 @@ groups:
 	FMOVQ F1, (Bench_read+32)(R13)
 	FMOVQ F2, (Bench_read+64)(R13)
 	FMOVQ F3, (Bench_read+96)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dcaf // fmul v15.2d, v5.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee1d48e // fsub v14.2d, v4.2d, v1.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d4af // fsub v15.2d, v5.2d, v0.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+64)(R13)
-	FMOVQ (Bench_read+96)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc8f // fmul v15.2d, v4.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee0d46e // fsub v14.2d, v3.2d, v0.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4eedd48f // fsub v15.2d, v4.2d, v13.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
-	FMOVD F14, (Bench_filtered+96)(R13)
-	FMOVQ F12, (Bank_V1+0)(R1)
-	FMOVQ F10, (Bank_V2+0)(R1)
-	FMOVQ F3, (Bank_Node+0)(R1)
-	FMOVQ F4, (Bank_Node+64)(R1)
-	FMOVQ F5, (Bank_Node+128)(R1)
-	FMOVQ F13, (Bank_Node+192)(R1)
-	FMOVQ F0, (Bank_Node+256)(R1)
-	FMOVQ F1, (Bank_Node+320)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dcaf // fmul v15.2d, v5.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee1d48e // fsub v14.2d, v4.2d, v1.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d4af // fsub v15.2d, v5.2d, v0.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+72)(R13)
-	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dca2 // fmul v2.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70ddaa // fmul v10.2d, v13.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+16)(R1), F8
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc8f // fmul v15.2d, v4.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee0d46e // fsub v14.2d, v3.2d, v0.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4eedd48f // fsub v15.2d, v4.2d, v13.2d
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4ee7d467 // fsub v7.2d, v3.2d, v7.2d
+	WORD $0x4eefd56f // fsub v15.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e1 // fadd v1.2d, v7.2d, v0.2d
+	WORD $0x4e68d5e9 // fadd v9.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc67 // fmul v7.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6f // fmul v15.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc20 // fmul v0.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd28 // fmul v8.2d, v9.2d, v16.2d
+	WORD $0x4ee7d487 // fsub v7.2d, v4.2d, v7.2d
+	WORD $0x4eefd58f // fsub v15.2d, v12.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e2 // fadd v2.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ea // fadd v10.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc87 // fmul v7.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8f // fmul v15.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc40 // fmul v0.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd48 // fmul v8.2d, v10.2d, v16.2d
+	WORD $0x4ee7d4a7 // fsub v7.2d, v5.2d, v7.2d
+	WORD $0x4eefd5af // fsub v15.2d, v13.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e3 // fadd v3.2d, v7.2d, v0.2d
+	WORD $0x4e68d5eb // fadd v11.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca7 // fmul v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc60 // fmul v0.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd68 // fmul v8.2d, v11.2d, v16.2d
+	WORD $0x4ee7d4c7 // fsub v7.2d, v6.2d, v7.2d
+	WORD $0x4eefd5cf // fsub v15.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e4 // fadd v4.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ec // fadd v12.2d, v15.2d, v8.2d
+	FMOVQ F5, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_V2+16)(R1)
+	FMOVQ F6, (Bank_V1+0)(R1)
+	FMOVQ F14, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
-	FMOVQ (Bank_Section+336)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+64)(R1)
+	FMOVQ F11, (Bank_Node+80)(R1)
+	FMOVQ F4, (Bank_Node+0)(R1)
+	FMOVQ F12, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F6
+	FMOVQ (Bank_Node+144)(R1), F14
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x0e61680e // fcvtn v14.2s, v0.2d
-	FMOVD F14, (Bench_filtered+104)(R13)
-	FMOVQ F12, (Bank_V1+16)(R1)
-	FMOVQ F10, (Bank_V2+16)(R1)
-	FMOVQ F3, (Bank_Node+16)(R1)
-	FMOVQ F4, (Bank_Node+80)(R1)
-	FMOVQ F5, (Bank_Node+144)(R1)
-	FMOVQ F13, (Bank_Node+208)(R1)
-	FMOVQ F0, (Bank_Node+272)(R1)
-	FMOVQ F1, (Bank_Node+336)(R1)
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d4e5 // fsub v5.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d5ed // fsub v13.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d405 // fsub v5.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d50d // fsub v13.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	WORD $0x4ee4d406 // fsub v6.2d, v0.2d, v4.2d
+	WORD $0x4eecd50e // fsub v14.2d, v8.2d, v12.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c6 // fadd v6.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ce // fadd v14.2d, v14.2d, v15.2d
+	WORD $0x4ee3d425 // fsub v5.2d, v1.2d, v3.2d
+	WORD $0x4eebd52d // fsub v13.2d, v9.2d, v11.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d4c6 // fadd v6.2d, v6.2d, v0.2d
+	WORD $0x4e68d5ce // fadd v14.2d, v14.2d, v8.2d
+	WORD $0x4ee4d445 // fsub v5.2d, v2.2d, v4.2d
+	WORD $0x4eecd54d // fsub v13.2d, v10.2d, v12.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F9, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	FMOVQ F7, (Bank_Node+320)(R1)
+	FMOVQ F15, (Bank_Node+336)(R1)
+	FMOVQ F0, (Bank_Node+256)(R1)
+	FMOVQ F8, (Bank_Node+272)(R1)
+	WORD $0x0e616865 // fcvtn v5.2s, v3.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e61696d // fcvtn v13.2s, v11.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616885 // fcvtn v5.2s, v4.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61698d // fcvtn v13.2s, v12.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
+	WORD $0x0e6168e5 // fcvtn v5.2s, v7.2d
+	FMOVD F5, (Bench_filtered+64)(R13)
+	WORD $0x0e6169ed // fcvtn v13.2s, v15.2d
+	FMOVD F13, (Bench_filtered+72)(R13)
+	WORD $0x0e616805 // fcvtn v5.2s, v0.2d
+	FMOVD F5, (Bench_filtered+96)(R13)
+	WORD $0x0e61690d // fcvtn v13.2s, v8.2d
+	FMOVD F13, (Bench_filtered+104)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bench_filtered+64)(R13), F2
@@ -2932,106 +2982,122 @@ rest:
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ F12, (Bank_V1+0)(R1)
-	FMOVQ F10, (Bank_V2+0)(R1)
-	FMOVQ F13, (Bank_Node+0)(R1)
-	FMOVQ F0, (Bank_Node+64)(R1)
-	FMOVQ F1, (Bank_Node+128)(R1)
-	FMOVQ F2, (Bank_Node+192)(R1)
-	FMOVQ F3, (Bank_Node+256)(R1)
-	FMOVQ F4, (Bank_Node+320)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
-	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F4
+	FMOVQ (Bank_V1+16)(R1), F12
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F5
+	FMOVQ (Bank_Node+16)(R1), F13
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4ee4d464 // fsub v4.2d, v3.2d, v4.2d
+	WORD $0x4eecd56c // fsub v12.2d, v11.2d, v12.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	WORD $0x4e65d486 // fadd v6.2d, v4.2d, v5.2d
+	WORD $0x4e6dd58e // fadd v14.2d, v12.2d, v13.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ F7, (Bank_V2+0)(R1)
+	FMOVQ F15, (Bank_V2+16)(R1)
+	FMOVQ F3, (Bank_V1+0)(R1)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F1
+	FMOVQ (Bank_Node+16)(R1), F9
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d421 // fsub v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d529 // fsub v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d421 // fadd v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d4c0 // fsub v0.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d5c8 // fsub v8.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4e61d402 // fadd v2.2d, v0.2d, v1.2d
+	WORD $0x4e69d50a // fadd v10.2d, v8.2d, v9.2d
+	FMOVQ (Bank_Node+0)(R1), F7
+	FMOVQ (Bank_Node+16)(R1), F15
+	FMOVQ F7, (Bank_Node+64)(R1)
+	FMOVQ F15, (Bank_Node+80)(R1)
+	FMOVQ F6, (Bank_Node+0)(R1)
+	FMOVQ F14, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F4
+	FMOVQ (Bank_Node+144)(R1), F12
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d484 // fsub v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d58c // fsub v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ F12, (Bank_V1+16)(R1)
-	FMOVQ F10, (Bank_V2+16)(R1)
-	FMOVQ F13, (Bank_Node+16)(R1)
-	FMOVQ F0, (Bank_Node+80)(R1)
-	FMOVQ F1, (Bank_Node+144)(R1)
-	FMOVQ F2, (Bank_Node+208)(R1)
-	FMOVQ F3, (Bank_Node+272)(R1)
-	FMOVQ F4, (Bank_Node+336)(R1)
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d443 // fsub v3.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d54b // fsub v11.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d465 // fadd v5.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56d // fadd v13.2d, v11.2d, v12.2d
+	FMOVQ (Bank_Node+128)(R1), F0
+	FMOVQ (Bank_Node+144)(R1), F8
+	FMOVQ F0, (Bank_Node+192)(R1)
+	FMOVQ F8, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F1
+	FMOVQ (Bank_Node+272)(R1), F9
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ F9, (Bank_Node+336)(R1)
+	FMOVQ F5, (Bank_Node+256)(R1)
+	FMOVQ F13, (Bank_Node+272)(R1)
+	WORD $0x0e6168a7 // fcvtn v7.2s, v5.2d
+	FMOVD F7, (Bench_filtered+0)(R13)
+	WORD $0x0e6169af // fcvtn v15.2s, v13.2d
+	FMOVD F15, (Bench_filtered+8)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bank_Power+0)(R0), F4
 	FMOVQ 0(R3), F16
@@ -3160,174 +3226,190 @@ two:
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	FMOVQ F0, (Bench_read+0)(R13)
 	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ F11, (Bank_V1+0)(R1)
-	FMOVQ F12, (Bank_V2+0)(R1)
-	FMOVQ F5, (Bank_Node+0)(R1)
-	FMOVQ F13, (Bank_Node+64)(R1)
-	FMOVQ F0, (Bank_Node+128)(R1)
-	FMOVQ F1, (Bank_Node+192)(R1)
-	FMOVQ F2, (Bank_Node+256)(R1)
-	FMOVQ F3, (Bank_Node+320)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F5
+	FMOVQ (Bank_V1+16)(R1), F13
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	WORD $0x4ee5d465 // fsub v5.2d, v3.2d, v5.2d
+	WORD $0x4eedd56d // fsub v13.2d, v11.2d, v13.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc65 // fmul v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6d // fmul v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dce6 // fmul v6.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddee // fmul v14.2d, v15.2d, v16.2d
+	WORD $0x4ee5d485 // fsub v5.2d, v4.2d, v5.2d
+	WORD $0x4eedd58d // fsub v13.2d, v12.2d, v13.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_V2+0)(R1)
+	FMOVQ F11, (Bank_V2+16)(R1)
+	FMOVQ F4, (Bank_V1+0)(R1)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F2
+	FMOVQ (Bank_Node+16)(R1), F10
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d442 // fsub v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54a // fsub v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d4e1 // fsub v1.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d5e9 // fsub v9.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e62d423 // fadd v3.2d, v1.2d, v2.2d
+	WORD $0x4e6ad52b // fadd v11.2d, v9.2d, v10.2d
+	WORD $0x4ee3d4e2 // fsub v2.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ea // fsub v10.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d401 // fsub v1.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d509 // fsub v9.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e62d424 // fadd v4.2d, v1.2d, v2.2d
+	WORD $0x4e6ad52c // fadd v12.2d, v9.2d, v10.2d
+	FMOVQ F7, (Bank_Node+64)(R1)
+	FMOVQ F15, (Bank_Node+80)(R1)
+	FMOVQ F0, (Bank_Node+0)(R1)
+	FMOVQ F8, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F6
+	FMOVQ (Bank_Node+144)(R1), F14
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
-	FMOVQ F11, (Bank_V1+16)(R1)
-	FMOVQ F12, (Bank_V2+16)(R1)
-	FMOVQ F5, (Bank_Node+16)(R1)
-	FMOVQ F13, (Bank_Node+80)(R1)
-	FMOVQ F0, (Bank_Node+144)(R1)
-	FMOVQ F1, (Bank_Node+208)(R1)
-	FMOVQ F2, (Bank_Node+272)(R1)
-	FMOVQ F3, (Bank_Node+336)(R1)
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d465 // fsub v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d56d // fsub v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d485 // fsub v5.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d58d // fsub v13.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+192)(R1)
+	FMOVQ F11, (Bank_Node+208)(R1)
+	FMOVQ F4, (Bank_Node+128)(R1)
+	FMOVQ F12, (Bank_Node+144)(R1)
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ F9, (Bank_Node+336)(R1)
+	FMOVQ F2, (Bank_Node+256)(R1)
+	FMOVQ F10, (Bank_Node+272)(R1)
+	WORD $0x0e616827 // fcvtn v7.2s, v1.2d
+	FMOVD F7, (Bench_filtered+0)(R13)
+	WORD $0x0e61692f // fcvtn v15.2s, v9.2d
+	FMOVD F15, (Bench_filtered+8)(R13)
+	WORD $0x0e616847 // fcvtn v7.2s, v2.2d
+	FMOVD F7, (Bench_filtered+32)(R13)
+	WORD $0x0e61694f // fcvtn v15.2s, v10.2d
+	FMOVD F15, (Bench_filtered+40)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bank_Power+0)(R0), F4
@@ -3489,242 +3571,258 @@ three:
 	FMOVQ F0, (Bench_read+0)(R13)
 	FMOVQ F1, (Bench_read+32)(R13)
 	FMOVQ F2, (Bench_read+64)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dcaf // fmul v15.2d, v5.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee1d48e // fsub v14.2d, v4.2d, v1.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d4af // fsub v15.2d, v5.2d, v0.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+64)(R13)
-	FMOVQ F10, (Bank_V1+0)(R1)
-	FMOVQ F11, (Bank_V2+0)(R1)
-	FMOVQ F4, (Bank_Node+0)(R1)
-	FMOVQ F5, (Bank_Node+64)(R1)
-	FMOVQ F13, (Bank_Node+128)(R1)
-	FMOVQ F0, (Bank_Node+192)(R1)
-	FMOVQ F1, (Bank_Node+256)(R1)
-	FMOVQ F2, (Bank_Node+320)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ae // fsub v14.2d, v5.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
 	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F6
+	FMOVQ (Bank_V1+16)(R1), F14
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F7
+	FMOVQ (Bank_Node+16)(R1), F15
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4ee6d466 // fsub v6.2d, v3.2d, v6.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Gain+16)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c0 // fadd v0.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc66 // fmul v6.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc07 // fmul v7.2d, v0.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dcaf // fmul v15.2d, v5.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee1d48e // fsub v14.2d, v4.2d, v1.2d
-	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd0f // fmul v15.2d, v8.2d, v16.2d
+	WORD $0x4ee6d486 // fsub v6.2d, v4.2d, v6.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d4af // fsub v15.2d, v5.2d, v0.2d
+	WORD $0x4e67d4c1 // fadd v1.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc86 // fmul v6.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc27 // fmul v7.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
+	WORD $0x4ee6d4a6 // fsub v6.2d, v5.2d, v6.2d
+	WORD $0x4eeed5ae // fsub v14.2d, v13.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c2 // fadd v2.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
+	FMOVQ F4, (Bank_V2+0)(R1)
+	FMOVQ F12, (Bank_V2+16)(R1)
+	FMOVQ F5, (Bank_V1+0)(R1)
+	FMOVQ F13, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F4
+	FMOVQ (Bank_Node+16)(R1), F12
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d484 // fsub v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d58c // fsub v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d403 // fsub v3.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d50b // fsub v11.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d465 // fadd v5.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56d // fadd v13.2d, v11.2d, v12.2d
+	WORD $0x4ee5d404 // fsub v4.2d, v0.2d, v5.2d
+	WORD $0x4eedd50c // fsub v12.2d, v8.2d, v13.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d423 // fsub v3.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d52b // fsub v11.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d466 // fadd v6.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56e // fadd v14.2d, v11.2d, v12.2d
+	WORD $0x4ee6d424 // fsub v4.2d, v1.2d, v6.2d
+	WORD $0x4eeed52c // fsub v12.2d, v9.2d, v14.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	WORD $0x4e60d484 // fadd v4.2d, v4.2d, v0.2d
+	WORD $0x4e68d58c // fadd v12.2d, v12.2d, v8.2d
+	WORD $0x4ee5d443 // fsub v3.2d, v2.2d, v5.2d
+	WORD $0x4eedd54b // fsub v11.2d, v10.2d, v13.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d460 // fadd v0.2d, v3.2d, v4.2d
+	WORD $0x4e6cd568 // fadd v8.2d, v11.2d, v12.2d
+	FMOVQ F1, (Bank_Node+64)(R1)
+	FMOVQ F9, (Bank_Node+80)(R1)
+	FMOVQ F2, (Bank_Node+0)(R1)
+	FMOVQ F10, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F3
+	FMOVQ (Bank_Node+144)(R1), F11
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d463 // fsub v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d56b // fsub v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d463 // fadd v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d4a7 // fsub v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d5af // fsub v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x0e61682e // fcvtn v14.2s, v1.2d
-	FMOVD F14, (Bench_filtered+72)(R13)
-	FMOVQ F10, (Bank_V1+16)(R1)
-	FMOVQ F11, (Bank_V2+16)(R1)
-	FMOVQ F4, (Bank_Node+16)(R1)
-	FMOVQ F5, (Bank_Node+80)(R1)
-	FMOVQ F13, (Bank_Node+144)(R1)
-	FMOVQ F0, (Bank_Node+208)(R1)
-	FMOVQ F1, (Bank_Node+272)(R1)
-	FMOVQ F2, (Bank_Node+336)(R1)
+	WORD $0x4e63d4e4 // fadd v4.2d, v7.2d, v3.2d
+	WORD $0x4e6bd5ec // fadd v12.2d, v15.2d, v11.2d
+	WORD $0x4ee4d4a3 // fsub v3.2d, v5.2d, v4.2d
+	WORD $0x4eecd5ab // fsub v11.2d, v13.2d, v12.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d463 // fadd v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c7 // fsub v7.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5cf // fsub v15.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e63d4e1 // fadd v1.2d, v7.2d, v3.2d
+	WORD $0x4e6bd5e9 // fadd v9.2d, v15.2d, v11.2d
+	WORD $0x4ee1d4c3 // fsub v3.2d, v6.2d, v1.2d
+	WORD $0x4ee9d5cb // fsub v11.2d, v14.2d, v9.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e65d463 // fadd v3.2d, v3.2d, v5.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x4ee4d407 // fsub v7.2d, v0.2d, v4.2d
+	WORD $0x4eecd50f // fsub v15.2d, v8.2d, v12.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e63d4e5 // fadd v5.2d, v7.2d, v3.2d
+	WORD $0x4e6bd5ed // fadd v13.2d, v15.2d, v11.2d
+	FMOVQ F6, (Bank_Node+192)(R1)
+	FMOVQ F14, (Bank_Node+208)(R1)
+	FMOVQ F0, (Bank_Node+128)(R1)
+	FMOVQ F8, (Bank_Node+144)(R1)
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ F9, (Bank_Node+336)(R1)
+	FMOVQ F5, (Bank_Node+256)(R1)
+	FMOVQ F13, (Bank_Node+272)(R1)
+	WORD $0x0e616882 // fcvtn v2.2s, v4.2d
+	FMOVD F2, (Bench_filtered+0)(R13)
+	WORD $0x0e61698a // fcvtn v10.2s, v12.2d
+	FMOVD F10, (Bench_filtered+8)(R13)
+	WORD $0x0e616822 // fcvtn v2.2s, v1.2d
+	FMOVD F2, (Bench_filtered+32)(R13)
+	WORD $0x0e61692a // fcvtn v10.2s, v9.2d
+	FMOVD F10, (Bench_filtered+40)(R13)
+	WORD $0x0e6168a2 // fcvtn v2.2s, v5.2d
+	FMOVD F2, (Bench_filtered+64)(R13)
+	WORD $0x0e6169aa // fcvtn v10.2s, v13.2d
+	FMOVD F10, (Bench_filtered+72)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bench_filtered+64)(R13), F2
@@ -4023,382 +4121,406 @@ groups:
 	FMOVQ F1, (Bench_read+32)(R13)
 	FMOVQ F2, (Bench_read+64)(R13)
 	FMOVQ F3, (Bench_read+96)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_Node+384)(R1), F6
-	FMOVQ (Bank_Node+448)(R1), F7
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dcef // fmul v15.2d, v7.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x4ee1d4ce // fsub v14.2d, v6.2d, v1.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d4ef // fsub v15.2d, v7.2d, v0.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+64)(R13)
-	FMOVQ (Bench_read+96)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dccf // fmul v15.2d, v6.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee0d4ae // fsub v14.2d, v5.2d, v0.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4eedd4cf // fsub v15.2d, v6.2d, v13.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
-	FMOVD F14, (Bench_filtered+96)(R13)
-	FMOVQ F12, (Bank_V1+0)(R1)
-	FMOVQ F10, (Bank_V2+0)(R1)
-	FMOVQ F5, (Bank_Node+0)(R1)
-	FMOVQ F6, (Bank_Node+64)(R1)
-	FMOVQ F7, (Bank_Node+128)(R1)
-	FMOVQ F13, (Bank_Node+192)(R1)
-	FMOVQ F0, (Bank_Node+256)(R1)
-	FMOVQ F1, (Bank_Node+320)(R1)
-	FMOVQ F2, (Bank_Node+384)(R1)
-	FMOVQ F3, (Bank_Node+448)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_Node+400)(R1), F6
-	FMOVQ (Bank_Node+464)(R1), F7
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dcef // fmul v15.2d, v7.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x4ee1d4ce // fsub v14.2d, v6.2d, v1.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d4ef // fsub v15.2d, v7.2d, v0.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+72)(R13)
-	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dca2 // fmul v2.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70ddaa // fmul v10.2d, v13.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+16)(R1), F8
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dccf // fmul v15.2d, v6.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee0d4ae // fsub v14.2d, v5.2d, v0.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4eedd4cf // fsub v15.2d, v6.2d, v13.2d
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4ee7d467 // fsub v7.2d, v3.2d, v7.2d
+	WORD $0x4eefd56f // fsub v15.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e1 // fadd v1.2d, v7.2d, v0.2d
+	WORD $0x4e68d5e9 // fadd v9.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc67 // fmul v7.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6f // fmul v15.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc20 // fmul v0.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd28 // fmul v8.2d, v9.2d, v16.2d
+	WORD $0x4ee7d487 // fsub v7.2d, v4.2d, v7.2d
+	WORD $0x4eefd58f // fsub v15.2d, v12.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e2 // fadd v2.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ea // fadd v10.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc87 // fmul v7.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8f // fmul v15.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc40 // fmul v0.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd48 // fmul v8.2d, v10.2d, v16.2d
+	WORD $0x4ee7d4a7 // fsub v7.2d, v5.2d, v7.2d
+	WORD $0x4eefd5af // fsub v15.2d, v13.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e3 // fadd v3.2d, v7.2d, v0.2d
+	WORD $0x4e68d5eb // fadd v11.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca7 // fmul v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc60 // fmul v0.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd68 // fmul v8.2d, v11.2d, v16.2d
+	WORD $0x4ee7d4c7 // fsub v7.2d, v6.2d, v7.2d
+	WORD $0x4eefd5cf // fsub v15.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e4 // fadd v4.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ec // fadd v12.2d, v15.2d, v8.2d
+	FMOVQ F5, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_V2+16)(R1)
+	FMOVQ F6, (Bank_V1+0)(R1)
+	FMOVQ F14, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
-	FMOVQ (Bank_Section+336)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+64)(R1)
+	FMOVQ F11, (Bank_Node+80)(R1)
+	FMOVQ F4, (Bank_Node+0)(R1)
+	FMOVQ F12, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F6
+	FMOVQ (Bank_Node+144)(R1), F14
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+592)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d4e5 // fsub v5.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d5ed // fsub v13.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d405 // fsub v5.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d50d // fsub v13.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	WORD $0x4ee4d406 // fsub v6.2d, v0.2d, v4.2d
+	WORD $0x4eecd50e // fsub v14.2d, v8.2d, v12.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c6 // fadd v6.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ce // fadd v14.2d, v14.2d, v15.2d
+	WORD $0x4ee3d425 // fsub v5.2d, v1.2d, v3.2d
+	WORD $0x4eebd52d // fsub v13.2d, v9.2d, v11.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d4c6 // fadd v6.2d, v6.2d, v0.2d
+	WORD $0x4e68d5ce // fadd v14.2d, v14.2d, v8.2d
+	WORD $0x4ee4d445 // fsub v5.2d, v2.2d, v4.2d
+	WORD $0x4eecd54d // fsub v13.2d, v10.2d, v12.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F9, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F6
+	FMOVQ (Bank_Node+272)(R1), F14
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x0e61684e // fcvtn v14.2s, v2.2d
-	FMOVD F14, (Bench_filtered+104)(R13)
-	FMOVQ F12, (Bank_V1+16)(R1)
-	FMOVQ F10, (Bank_V2+16)(R1)
-	FMOVQ F5, (Bank_Node+16)(R1)
-	FMOVQ F6, (Bank_Node+80)(R1)
-	FMOVQ F7, (Bank_Node+144)(R1)
-	FMOVQ F13, (Bank_Node+208)(R1)
-	FMOVQ F0, (Bank_Node+272)(R1)
-	FMOVQ F1, (Bank_Node+336)(R1)
-	FMOVQ F2, (Bank_Node+400)(R1)
-	FMOVQ F3, (Bank_Node+464)(R1)
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d465 // fsub v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d56d // fsub v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d485 // fsub v5.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d58d // fsub v13.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	WORD $0x4ee2d486 // fsub v6.2d, v4.2d, v2.2d
+	WORD $0x4eead58e // fsub v14.2d, v12.2d, v10.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d4c6 // fadd v6.2d, v6.2d, v3.2d
+	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
+	WORD $0x4ee1d4e5 // fsub v5.2d, v7.2d, v1.2d
+	WORD $0x4ee9d5ed // fsub v13.2d, v15.2d, v9.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d4c6 // fadd v6.2d, v6.2d, v4.2d
+	WORD $0x4e6cd5ce // fadd v14.2d, v14.2d, v12.2d
+	WORD $0x4ee2d405 // fsub v5.2d, v0.2d, v2.2d
+	WORD $0x4eead50d // fsub v13.2d, v8.2d, v10.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	FMOVQ F7, (Bank_Node+320)(R1)
+	FMOVQ F15, (Bank_Node+336)(R1)
+	FMOVQ F0, (Bank_Node+256)(R1)
+	FMOVQ F8, (Bank_Node+272)(R1)
+	FMOVQ F3, (Bank_Node+448)(R1)
+	FMOVQ F11, (Bank_Node+464)(R1)
+	FMOVQ F4, (Bank_Node+384)(R1)
+	FMOVQ F12, (Bank_Node+400)(R1)
+	WORD $0x0e616825 // fcvtn v5.2s, v1.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e61692d // fcvtn v13.2s, v9.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616845 // fcvtn v5.2s, v2.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61694d // fcvtn v13.2s, v10.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
+	WORD $0x0e616865 // fcvtn v5.2s, v3.2d
+	FMOVD F5, (Bench_filtered+64)(R13)
+	WORD $0x0e61696d // fcvtn v13.2s, v11.2d
+	FMOVD F13, (Bench_filtered+72)(R13)
+	WORD $0x0e616885 // fcvtn v5.2s, v4.2d
+	FMOVD F5, (Bench_filtered+96)(R13)
+	WORD $0x0e61698d // fcvtn v13.2s, v12.2d
+	FMOVD F13, (Bench_filtered+104)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bench_filtered+64)(R13), F2
@@ -4529,130 +4651,152 @@ rest:
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_Node+384)(R1), F6
-	FMOVQ (Bank_Node+448)(R1), F7
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ F12, (Bank_V1+0)(R1)
-	FMOVQ F10, (Bank_V2+0)(R1)
-	FMOVQ F13, (Bank_Node+0)(R1)
-	FMOVQ F0, (Bank_Node+64)(R1)
-	FMOVQ F1, (Bank_Node+128)(R1)
-	FMOVQ F2, (Bank_Node+192)(R1)
-	FMOVQ F3, (Bank_Node+256)(R1)
-	FMOVQ F4, (Bank_Node+320)(R1)
-	FMOVQ F5, (Bank_Node+384)(R1)
-	FMOVQ F6, (Bank_Node+448)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_Node+400)(R1), F6
-	FMOVQ (Bank_Node+464)(R1), F7
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
-	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F4
+	FMOVQ (Bank_V1+16)(R1), F12
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F5
+	FMOVQ (Bank_Node+16)(R1), F13
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4ee4d464 // fsub v4.2d, v3.2d, v4.2d
+	WORD $0x4eecd56c // fsub v12.2d, v11.2d, v12.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	WORD $0x4e65d486 // fadd v6.2d, v4.2d, v5.2d
+	WORD $0x4e6dd58e // fadd v14.2d, v12.2d, v13.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ F7, (Bank_V2+0)(R1)
+	FMOVQ F15, (Bank_V2+16)(R1)
+	FMOVQ F3, (Bank_V1+0)(R1)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F1
+	FMOVQ (Bank_Node+16)(R1), F9
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d421 // fsub v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d529 // fsub v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d421 // fadd v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d4c0 // fsub v0.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d5c8 // fsub v8.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4e61d402 // fadd v2.2d, v0.2d, v1.2d
+	WORD $0x4e69d50a // fadd v10.2d, v8.2d, v9.2d
+	FMOVQ (Bank_Node+0)(R1), F7
+	FMOVQ (Bank_Node+16)(R1), F15
+	FMOVQ F7, (Bank_Node+64)(R1)
+	FMOVQ F15, (Bank_Node+80)(R1)
+	FMOVQ F6, (Bank_Node+0)(R1)
+	FMOVQ F14, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F4
+	FMOVQ (Bank_Node+144)(R1), F12
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d484 // fsub v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d58c // fsub v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d443 // fsub v3.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d54b // fsub v11.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d465 // fadd v5.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56d // fadd v13.2d, v11.2d, v12.2d
+	FMOVQ (Bank_Node+128)(R1), F0
+	FMOVQ (Bank_Node+144)(R1), F8
+	FMOVQ F0, (Bank_Node+192)(R1)
+	FMOVQ F8, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F7
+	FMOVQ (Bank_Node+272)(R1), F15
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d4e7 // fsub v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d5ef // fsub v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
 	FMOVQ (Bank_Section+528)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ F12, (Bank_V1+16)(R1)
-	FMOVQ F10, (Bank_V2+16)(R1)
-	FMOVQ F13, (Bank_Node+16)(R1)
-	FMOVQ F0, (Bank_Node+80)(R1)
-	FMOVQ F1, (Bank_Node+144)(R1)
-	FMOVQ F2, (Bank_Node+208)(R1)
-	FMOVQ F3, (Bank_Node+272)(R1)
-	FMOVQ F4, (Bank_Node+336)(R1)
-	FMOVQ F5, (Bank_Node+400)(R1)
-	FMOVQ F6, (Bank_Node+464)(R1)
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d4e7 // fadd v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d5ef // fadd v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d4a1 // fsub v1.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d5a9 // fsub v9.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e67d426 // fadd v6.2d, v1.2d, v7.2d
+	WORD $0x4e6fd52e // fadd v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Node+256)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F11
+	FMOVQ F3, (Bank_Node+320)(R1)
+	FMOVQ F11, (Bank_Node+336)(R1)
+	FMOVQ F5, (Bank_Node+256)(R1)
+	FMOVQ F13, (Bank_Node+272)(R1)
+	FMOVQ (Bank_Node+384)(R1), F4
+	FMOVQ (Bank_Node+400)(R1), F12
+	FMOVQ F4, (Bank_Node+448)(R1)
+	FMOVQ F12, (Bank_Node+464)(R1)
+	FMOVQ F6, (Bank_Node+384)(R1)
+	FMOVQ F14, (Bank_Node+400)(R1)
+	WORD $0x0e6168c0 // fcvtn v0.2s, v6.2d
+	FMOVD F0, (Bench_filtered+0)(R13)
+	WORD $0x0e6169c8 // fcvtn v8.2s, v14.2d
+	FMOVD F8, (Bench_filtered+8)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bank_Power+0)(R0), F4
 	FMOVQ 0(R3), F16
@@ -4781,214 +4925,238 @@ two:
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	FMOVQ F0, (Bench_read+0)(R13)
 	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_Node+384)(R1), F6
-	FMOVQ (Bank_Node+448)(R1), F7
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ F11, (Bank_V1+0)(R1)
-	FMOVQ F12, (Bank_V2+0)(R1)
-	FMOVQ F7, (Bank_Node+0)(R1)
-	FMOVQ F13, (Bank_Node+64)(R1)
-	FMOVQ F0, (Bank_Node+128)(R1)
-	FMOVQ F1, (Bank_Node+192)(R1)
-	FMOVQ F2, (Bank_Node+256)(R1)
-	FMOVQ F3, (Bank_Node+320)(R1)
-	FMOVQ F4, (Bank_Node+384)(R1)
-	FMOVQ F5, (Bank_Node+448)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_Node+400)(R1), F6
-	FMOVQ (Bank_Node+464)(R1), F7
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F5
+	FMOVQ (Bank_V1+16)(R1), F13
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	WORD $0x4ee5d465 // fsub v5.2d, v3.2d, v5.2d
+	WORD $0x4eedd56d // fsub v13.2d, v11.2d, v13.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc65 // fmul v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6d // fmul v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dce6 // fmul v6.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddee // fmul v14.2d, v15.2d, v16.2d
+	WORD $0x4ee5d485 // fsub v5.2d, v4.2d, v5.2d
+	WORD $0x4eedd58d // fsub v13.2d, v12.2d, v13.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_V2+0)(R1)
+	FMOVQ F11, (Bank_V2+16)(R1)
+	FMOVQ F4, (Bank_V1+0)(R1)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F2
+	FMOVQ (Bank_Node+16)(R1), F10
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d442 // fsub v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54a // fsub v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d4e1 // fsub v1.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d5e9 // fsub v9.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e62d423 // fadd v3.2d, v1.2d, v2.2d
+	WORD $0x4e6ad52b // fadd v11.2d, v9.2d, v10.2d
+	WORD $0x4ee3d4e2 // fsub v2.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ea // fsub v10.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d401 // fsub v1.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d509 // fsub v9.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e62d424 // fadd v4.2d, v1.2d, v2.2d
+	WORD $0x4e6ad52c // fadd v12.2d, v9.2d, v10.2d
+	FMOVQ F7, (Bank_Node+64)(R1)
+	FMOVQ F15, (Bank_Node+80)(R1)
+	FMOVQ F0, (Bank_Node+0)(R1)
+	FMOVQ F8, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F6
+	FMOVQ (Bank_Node+144)(R1), F14
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+592)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d465 // fsub v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d56d // fsub v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d485 // fsub v5.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d58d // fsub v13.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+192)(R1)
+	FMOVQ F11, (Bank_Node+208)(R1)
+	FMOVQ F4, (Bank_Node+128)(R1)
+	FMOVQ F12, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F0
+	FMOVQ (Bank_Node+272)(R1), F8
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d400 // fsub v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d508 // fsub v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
 	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d400 // fadd v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d427 // fsub v7.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d52f // fsub v15.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
-	FMOVQ F11, (Bank_V1+16)(R1)
-	FMOVQ F12, (Bank_V2+16)(R1)
-	FMOVQ F7, (Bank_Node+16)(R1)
-	FMOVQ F13, (Bank_Node+80)(R1)
-	FMOVQ F0, (Bank_Node+144)(R1)
-	FMOVQ F1, (Bank_Node+208)(R1)
-	FMOVQ F2, (Bank_Node+272)(R1)
-	FMOVQ F3, (Bank_Node+336)(R1)
-	FMOVQ F4, (Bank_Node+400)(R1)
-	FMOVQ F5, (Bank_Node+464)(R1)
+	WORD $0x4e60d4e5 // fadd v5.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ed // fadd v13.2d, v15.2d, v8.2d
+	WORD $0x4ee5d420 // fsub v0.2d, v1.2d, v5.2d
+	WORD $0x4eedd528 // fsub v8.2d, v9.2d, v13.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4e70d400 // fadd v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d447 // fsub v7.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d54f // fsub v15.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e6 // fadd v6.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ee // fadd v14.2d, v15.2d, v8.2d
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ F9, (Bank_Node+336)(R1)
+	FMOVQ F2, (Bank_Node+256)(R1)
+	FMOVQ F10, (Bank_Node+272)(R1)
+	FMOVQ F5, (Bank_Node+448)(R1)
+	FMOVQ F13, (Bank_Node+464)(R1)
+	FMOVQ F6, (Bank_Node+384)(R1)
+	FMOVQ F14, (Bank_Node+400)(R1)
+	WORD $0x0e6168a3 // fcvtn v3.2s, v5.2d
+	FMOVD F3, (Bench_filtered+0)(R13)
+	WORD $0x0e6169ab // fcvtn v11.2s, v13.2d
+	FMOVD F11, (Bench_filtered+8)(R13)
+	WORD $0x0e6168c3 // fcvtn v3.2s, v6.2d
+	FMOVD F3, (Bench_filtered+32)(R13)
+	WORD $0x0e6169cb // fcvtn v11.2s, v14.2d
+	FMOVD F11, (Bench_filtered+40)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bank_Power+0)(R0), F4
@@ -5150,298 +5318,322 @@ three:
 	FMOVQ F0, (Bench_read+0)(R13)
 	FMOVQ F1, (Bench_read+32)(R13)
 	FMOVQ F2, (Bench_read+64)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_Node+384)(R1), F6
-	FMOVQ (Bank_Node+448)(R1), F7
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dcef // fmul v15.2d, v7.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x4ee1d4ce // fsub v14.2d, v6.2d, v1.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d4ef // fsub v15.2d, v7.2d, v0.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+64)(R13)
-	FMOVQ F10, (Bank_V1+0)(R1)
-	FMOVQ F11, (Bank_V2+0)(R1)
-	FMOVQ F6, (Bank_Node+0)(R1)
-	FMOVQ F7, (Bank_Node+64)(R1)
-	FMOVQ F13, (Bank_Node+128)(R1)
-	FMOVQ F0, (Bank_Node+192)(R1)
-	FMOVQ F1, (Bank_Node+256)(R1)
-	FMOVQ F2, (Bank_Node+320)(R1)
-	FMOVQ F3, (Bank_Node+384)(R1)
-	FMOVQ F4, (Bank_Node+448)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_Node+400)(R1), F6
-	FMOVQ (Bank_Node+464)(R1), F7
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee2d4ee // fsub v14.2d, v7.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
 	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F6
+	FMOVQ (Bank_V1+16)(R1), F14
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F7
+	FMOVQ (Bank_Node+16)(R1), F15
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4ee6d466 // fsub v6.2d, v3.2d, v6.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Gain+16)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c0 // fadd v0.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc66 // fmul v6.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc07 // fmul v7.2d, v0.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dcef // fmul v15.2d, v7.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x4ee1d4ce // fsub v14.2d, v6.2d, v1.2d
-	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd0f // fmul v15.2d, v8.2d, v16.2d
+	WORD $0x4ee6d486 // fsub v6.2d, v4.2d, v6.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d4ef // fsub v15.2d, v7.2d, v0.2d
+	WORD $0x4e67d4c1 // fadd v1.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc86 // fmul v6.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc27 // fmul v7.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
+	WORD $0x4ee6d4a6 // fsub v6.2d, v5.2d, v6.2d
+	WORD $0x4eeed5ae // fsub v14.2d, v13.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c2 // fadd v2.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
+	FMOVQ F4, (Bank_V2+0)(R1)
+	FMOVQ F12, (Bank_V2+16)(R1)
+	FMOVQ F5, (Bank_V1+0)(R1)
+	FMOVQ F13, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F4
+	FMOVQ (Bank_Node+16)(R1), F12
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d484 // fsub v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d58c // fsub v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d403 // fsub v3.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d50b // fsub v11.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d465 // fadd v5.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56d // fadd v13.2d, v11.2d, v12.2d
+	WORD $0x4ee5d404 // fsub v4.2d, v0.2d, v5.2d
+	WORD $0x4eedd50c // fsub v12.2d, v8.2d, v13.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d423 // fsub v3.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d52b // fsub v11.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d466 // fadd v6.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56e // fadd v14.2d, v11.2d, v12.2d
+	WORD $0x4ee6d424 // fsub v4.2d, v1.2d, v6.2d
+	WORD $0x4eeed52c // fsub v12.2d, v9.2d, v14.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	WORD $0x4e60d484 // fadd v4.2d, v4.2d, v0.2d
+	WORD $0x4e68d58c // fadd v12.2d, v12.2d, v8.2d
+	WORD $0x4ee5d443 // fsub v3.2d, v2.2d, v5.2d
+	WORD $0x4eedd54b // fsub v11.2d, v10.2d, v13.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d460 // fadd v0.2d, v3.2d, v4.2d
+	WORD $0x4e6cd568 // fadd v8.2d, v11.2d, v12.2d
+	FMOVQ F1, (Bank_Node+64)(R1)
+	FMOVQ F9, (Bank_Node+80)(R1)
+	FMOVQ F2, (Bank_Node+0)(R1)
+	FMOVQ F10, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F3
+	FMOVQ (Bank_Node+144)(R1), F11
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d463 // fsub v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d56b // fsub v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d463 // fadd v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d4a7 // fsub v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d5af // fsub v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	WORD $0x4e63d4e4 // fadd v4.2d, v7.2d, v3.2d
+	WORD $0x4e6bd5ec // fadd v12.2d, v15.2d, v11.2d
+	WORD $0x4ee4d4a3 // fsub v3.2d, v5.2d, v4.2d
+	WORD $0x4eecd5ab // fsub v11.2d, v13.2d, v12.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d463 // fadd v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c7 // fsub v7.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5cf // fsub v15.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e63d4e1 // fadd v1.2d, v7.2d, v3.2d
+	WORD $0x4e6bd5e9 // fadd v9.2d, v15.2d, v11.2d
+	WORD $0x4ee1d4c3 // fsub v3.2d, v6.2d, v1.2d
+	WORD $0x4ee9d5cb // fsub v11.2d, v14.2d, v9.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e65d463 // fadd v3.2d, v3.2d, v5.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x4ee4d407 // fsub v7.2d, v0.2d, v4.2d
+	WORD $0x4eecd50f // fsub v15.2d, v8.2d, v12.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e63d4e5 // fadd v5.2d, v7.2d, v3.2d
+	WORD $0x4e6bd5ed // fadd v13.2d, v15.2d, v11.2d
+	FMOVQ F6, (Bank_Node+192)(R1)
+	FMOVQ F14, (Bank_Node+208)(R1)
+	FMOVQ F0, (Bank_Node+128)(R1)
+	FMOVQ F8, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F7
+	FMOVQ (Bank_Node+272)(R1), F15
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d4e7 // fsub v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d5ef // fsub v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
 	FMOVQ (Bank_Section+528)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x0e61686e // fcvtn v14.2s, v3.2d
-	FMOVD F14, (Bench_filtered+72)(R13)
-	FMOVQ F10, (Bank_V1+16)(R1)
-	FMOVQ F11, (Bank_V2+16)(R1)
-	FMOVQ F6, (Bank_Node+16)(R1)
-	FMOVQ F7, (Bank_Node+80)(R1)
-	FMOVQ F13, (Bank_Node+144)(R1)
-	FMOVQ F0, (Bank_Node+208)(R1)
-	FMOVQ F1, (Bank_Node+272)(R1)
-	FMOVQ F2, (Bank_Node+336)(R1)
-	FMOVQ F3, (Bank_Node+400)(R1)
-	FMOVQ F4, (Bank_Node+464)(R1)
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d4e7 // fadd v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d5ef // fadd v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d482 // fsub v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d58a // fsub v10.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	WORD $0x4e67d443 // fadd v3.2d, v2.2d, v7.2d
+	WORD $0x4e6fd54b // fadd v11.2d, v10.2d, v15.2d
+	WORD $0x4ee3d487 // fsub v7.2d, v4.2d, v3.2d
+	WORD $0x4eebd58f // fsub v15.2d, v12.2d, v11.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4e70d4e7 // fadd v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4e70d5ef // fadd v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d422 // fsub v2.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d52a // fsub v10.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	WORD $0x4e67d446 // fadd v6.2d, v2.2d, v7.2d
+	WORD $0x4e6fd54e // fadd v14.2d, v10.2d, v15.2d
+	WORD $0x4ee6d427 // fsub v7.2d, v1.2d, v6.2d
+	WORD $0x4eeed52f // fsub v15.2d, v9.2d, v14.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e64d4e7 // fadd v7.2d, v7.2d, v4.2d
+	WORD $0x4e6cd5ef // fadd v15.2d, v15.2d, v12.2d
+	WORD $0x4ee3d4a2 // fsub v2.2d, v5.2d, v3.2d
+	WORD $0x4eebd5aa // fsub v10.2d, v13.2d, v11.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	WORD $0x4e67d444 // fadd v4.2d, v2.2d, v7.2d
+	WORD $0x4e6fd54c // fadd v12.2d, v10.2d, v15.2d
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ F9, (Bank_Node+336)(R1)
+	FMOVQ F5, (Bank_Node+256)(R1)
+	FMOVQ F13, (Bank_Node+272)(R1)
+	FMOVQ F6, (Bank_Node+448)(R1)
+	FMOVQ F14, (Bank_Node+464)(R1)
+	FMOVQ F4, (Bank_Node+384)(R1)
+	FMOVQ F12, (Bank_Node+400)(R1)
+	WORD $0x0e616860 // fcvtn v0.2s, v3.2d
+	FMOVD F0, (Bench_filtered+0)(R13)
+	WORD $0x0e616968 // fcvtn v8.2s, v11.2d
+	FMOVD F8, (Bench_filtered+8)(R13)
+	WORD $0x0e6168c0 // fcvtn v0.2s, v6.2d
+	FMOVD F0, (Bench_filtered+32)(R13)
+	WORD $0x0e6169c8 // fcvtn v8.2s, v14.2d
+	FMOVD F8, (Bench_filtered+40)(R13)
+	WORD $0x0e616880 // fcvtn v0.2s, v4.2d
+	FMOVD F0, (Bench_filtered+64)(R13)
+	WORD $0x0e616988 // fcvtn v8.2s, v12.2d
+	FMOVD F8, (Bench_filtered+72)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bench_filtered+64)(R13), F2
@@ -5740,454 +5932,486 @@ groups:
 	FMOVQ F1, (Bench_read+32)(R13)
 	FMOVQ F2, (Bench_read+64)(R13)
 	FMOVQ F3, (Bench_read+96)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_Node+384)(R1), F6
-	FMOVQ (Bank_Node+448)(R1), F7
-	FMOVQ (Bank_Node+512)(R1), F8
-	FMOVQ (Bank_Node+576)(R1), F9
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
-	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
-	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
-	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
-	WORD $0x4ee1d50e // fsub v14.2d, v8.2d, v1.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d52f // fsub v15.2d, v9.2d, v0.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+64)(R13)
-	FMOVQ (Bench_read+96)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dd0f // fmul v15.2d, v8.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee0d4ee // fsub v14.2d, v7.2d, v0.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
-	WORD $0x4eedd50f // fsub v15.2d, v8.2d, v13.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
-	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
-	FMOVD F14, (Bench_filtered+96)(R13)
-	FMOVQ F12, (Bank_V1+0)(R1)
-	FMOVQ F10, (Bank_V2+0)(R1)
-	FMOVQ F7, (Bank_Node+0)(R1)
-	FMOVQ F8, (Bank_Node+64)(R1)
-	FMOVQ F9, (Bank_Node+128)(R1)
-	FMOVQ F13, (Bank_Node+192)(R1)
-	FMOVQ F0, (Bank_Node+256)(R1)
-	FMOVQ F1, (Bank_Node+320)(R1)
-	FMOVQ F2, (Bank_Node+384)(R1)
-	FMOVQ F3, (Bank_Node+448)(R1)
-	FMOVQ F4, (Bank_Node+512)(R1)
-	FMOVQ F5, (Bank_Node+576)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_Node+400)(R1), F6
-	FMOVQ (Bank_Node+464)(R1), F7
-	FMOVQ (Bank_Node+528)(R1), F8
-	FMOVQ (Bank_Node+592)(R1), F9
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
-	FMOVQ (Bank_Section+848)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
-	FMOVQ (Bank_Section+784)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
-	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
-	FMOVQ (Bank_Section+848)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
-	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
-	FMOVQ (Bank_Section+784)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
-	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
-	WORD $0x4ee1d50e // fsub v14.2d, v8.2d, v1.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d52f // fsub v15.2d, v9.2d, v0.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+848)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+784)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+72)(R13)
-	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ (Bench_read+96)(R13), F16
+	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dca2 // fmul v2.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70ddaa // fmul v10.2d, v13.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+16)(R1), F8
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dd0f // fmul v15.2d, v8.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x4ee0d4ee // fsub v14.2d, v7.2d, v0.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
-	WORD $0x4eedd50f // fsub v15.2d, v8.2d, v13.2d
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4ee7d467 // fsub v7.2d, v3.2d, v7.2d
+	WORD $0x4eefd56f // fsub v15.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e1 // fadd v1.2d, v7.2d, v0.2d
+	WORD $0x4e68d5e9 // fadd v9.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc67 // fmul v7.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6f // fmul v15.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc20 // fmul v0.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd28 // fmul v8.2d, v9.2d, v16.2d
+	WORD $0x4ee7d487 // fsub v7.2d, v4.2d, v7.2d
+	WORD $0x4eefd58f // fsub v15.2d, v12.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e2 // fadd v2.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ea // fadd v10.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc87 // fmul v7.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8f // fmul v15.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc40 // fmul v0.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd48 // fmul v8.2d, v10.2d, v16.2d
+	WORD $0x4ee7d4a7 // fsub v7.2d, v5.2d, v7.2d
+	WORD $0x4eefd5af // fsub v15.2d, v13.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e3 // fadd v3.2d, v7.2d, v0.2d
+	WORD $0x4e68d5eb // fadd v11.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca7 // fmul v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc60 // fmul v0.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd68 // fmul v8.2d, v11.2d, v16.2d
+	WORD $0x4ee7d4c7 // fsub v7.2d, v6.2d, v7.2d
+	WORD $0x4eefd5cf // fsub v15.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e4 // fadd v4.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ec // fadd v12.2d, v15.2d, v8.2d
+	FMOVQ F5, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_V2+16)(R1)
+	FMOVQ F6, (Bank_V1+0)(R1)
+	FMOVQ F14, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
-	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
-	FMOVQ (Bank_Section+336)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+64)(R1)
+	FMOVQ F11, (Bank_Node+80)(R1)
+	FMOVQ F4, (Bank_Node+0)(R1)
+	FMOVQ F12, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F6
+	FMOVQ (Bank_Node+144)(R1), F14
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+592)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d4e5 // fsub v5.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d5ed // fsub v13.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d405 // fsub v5.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d50d // fsub v13.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	WORD $0x4ee4d406 // fsub v6.2d, v0.2d, v4.2d
+	WORD $0x4eecd50e // fsub v14.2d, v8.2d, v12.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c6 // fadd v6.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ce // fadd v14.2d, v14.2d, v15.2d
+	WORD $0x4ee3d425 // fsub v5.2d, v1.2d, v3.2d
+	WORD $0x4eebd52d // fsub v13.2d, v9.2d, v11.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d4c6 // fadd v6.2d, v6.2d, v0.2d
+	WORD $0x4e68d5ce // fadd v14.2d, v14.2d, v8.2d
+	WORD $0x4ee4d445 // fsub v5.2d, v2.2d, v4.2d
+	WORD $0x4eecd54d // fsub v13.2d, v10.2d, v12.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F9, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F6
+	FMOVQ (Bank_Node+272)(R1), F14
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+848)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d465 // fsub v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d56d // fsub v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d485 // fsub v5.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d58d // fsub v13.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	WORD $0x4ee2d486 // fsub v6.2d, v4.2d, v2.2d
+	WORD $0x4eead58e // fsub v14.2d, v12.2d, v10.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d4c6 // fadd v6.2d, v6.2d, v3.2d
+	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
+	WORD $0x4ee1d4e5 // fsub v5.2d, v7.2d, v1.2d
+	WORD $0x4ee9d5ed // fsub v13.2d, v15.2d, v9.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d4c6 // fadd v6.2d, v6.2d, v4.2d
+	WORD $0x4e6cd5ce // fadd v14.2d, v14.2d, v12.2d
+	WORD $0x4ee2d405 // fsub v5.2d, v0.2d, v2.2d
+	WORD $0x4eead50d // fsub v13.2d, v8.2d, v10.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	FMOVQ F7, (Bank_Node+320)(R1)
+	FMOVQ F15, (Bank_Node+336)(R1)
+	FMOVQ F0, (Bank_Node+256)(R1)
+	FMOVQ F8, (Bank_Node+272)(R1)
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+400)(R1), F14
+	FMOVQ (Bank_Node+512)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+528)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+784)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x0e61688e // fcvtn v14.2s, v4.2d
-	FMOVD F14, (Bench_filtered+104)(R13)
-	FMOVQ F12, (Bank_V1+16)(R1)
-	FMOVQ F10, (Bank_V2+16)(R1)
-	FMOVQ F7, (Bank_Node+16)(R1)
-	FMOVQ F8, (Bank_Node+80)(R1)
-	FMOVQ F9, (Bank_Node+144)(R1)
-	FMOVQ F13, (Bank_Node+208)(R1)
-	FMOVQ F0, (Bank_Node+272)(R1)
-	FMOVQ F1, (Bank_Node+336)(R1)
-	FMOVQ F2, (Bank_Node+400)(R1)
-	FMOVQ F3, (Bank_Node+464)(R1)
-	FMOVQ F4, (Bank_Node+528)(R1)
-	FMOVQ F5, (Bank_Node+592)(R1)
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+576)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+592)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+512)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+528)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+448)(R1)
+	FMOVQ F11, (Bank_Node+464)(R1)
+	FMOVQ F4, (Bank_Node+384)(R1)
+	FMOVQ F12, (Bank_Node+400)(R1)
+	FMOVQ F1, (Bank_Node+576)(R1)
+	FMOVQ F9, (Bank_Node+592)(R1)
+	FMOVQ F2, (Bank_Node+512)(R1)
+	FMOVQ F10, (Bank_Node+528)(R1)
+	WORD $0x0e6168e5 // fcvtn v5.2s, v7.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e6169ed // fcvtn v13.2s, v15.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616805 // fcvtn v5.2s, v0.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61690d // fcvtn v13.2s, v8.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
+	WORD $0x0e616825 // fcvtn v5.2s, v1.2d
+	FMOVD F5, (Bench_filtered+64)(R13)
+	WORD $0x0e61692d // fcvtn v13.2s, v9.2d
+	FMOVD F13, (Bench_filtered+72)(R13)
+	WORD $0x0e616845 // fcvtn v5.2s, v2.2d
+	FMOVD F5, (Bench_filtered+96)(R13)
+	WORD $0x0e61694d // fcvtn v13.2s, v10.2d
+	FMOVD F13, (Bench_filtered+104)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bench_filtered+64)(R13), F2
@@ -6318,154 +6542,182 @@ rest:
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_Node+384)(R1), F6
-	FMOVQ (Bank_Node+448)(R1), F7
-	FMOVQ (Bank_Node+512)(R1), F8
-	FMOVQ (Bank_Node+576)(R1), F9
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
+	FMOVQ (Bench_read+0)(R13), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ F12, (Bank_V1+0)(R1)
-	FMOVQ F10, (Bank_V2+0)(R1)
-	FMOVQ F13, (Bank_Node+0)(R1)
-	FMOVQ F0, (Bank_Node+64)(R1)
-	FMOVQ F1, (Bank_Node+128)(R1)
-	FMOVQ F2, (Bank_Node+192)(R1)
-	FMOVQ F3, (Bank_Node+256)(R1)
-	FMOVQ F4, (Bank_Node+320)(R1)
-	FMOVQ F5, (Bank_Node+384)(R1)
-	FMOVQ F6, (Bank_Node+448)(R1)
-	FMOVQ F7, (Bank_Node+512)(R1)
-	FMOVQ F8, (Bank_Node+576)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_Node+400)(R1), F6
-	FMOVQ (Bank_Node+464)(R1), F7
-	FMOVQ (Bank_Node+528)(R1), F8
-	FMOVQ (Bank_Node+592)(R1), F9
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
-	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F4
+	FMOVQ (Bank_V1+16)(R1), F12
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F5
+	FMOVQ (Bank_Node+16)(R1), F13
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4ee4d464 // fsub v4.2d, v3.2d, v4.2d
+	WORD $0x4eecd56c // fsub v12.2d, v11.2d, v12.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	WORD $0x4e65d486 // fadd v6.2d, v4.2d, v5.2d
+	WORD $0x4e6dd58e // fadd v14.2d, v12.2d, v13.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ F7, (Bank_V2+0)(R1)
+	FMOVQ F15, (Bank_V2+16)(R1)
+	FMOVQ F3, (Bank_V1+0)(R1)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F1
+	FMOVQ (Bank_Node+16)(R1), F9
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d421 // fsub v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d529 // fsub v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d421 // fadd v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d4c0 // fsub v0.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d5c8 // fsub v8.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4e61d402 // fadd v2.2d, v0.2d, v1.2d
+	WORD $0x4e69d50a // fadd v10.2d, v8.2d, v9.2d
+	FMOVQ (Bank_Node+0)(R1), F7
+	FMOVQ (Bank_Node+16)(R1), F15
+	FMOVQ F7, (Bank_Node+64)(R1)
+	FMOVQ F15, (Bank_Node+80)(R1)
+	FMOVQ F6, (Bank_Node+0)(R1)
+	FMOVQ F14, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F4
+	FMOVQ (Bank_Node+144)(R1), F12
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d484 // fsub v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d58c // fsub v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d443 // fsub v3.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d54b // fsub v11.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d465 // fadd v5.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56d // fadd v13.2d, v11.2d, v12.2d
+	FMOVQ (Bank_Node+128)(R1), F0
+	FMOVQ (Bank_Node+144)(R1), F8
+	FMOVQ F0, (Bank_Node+192)(R1)
+	FMOVQ F8, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F7
+	FMOVQ (Bank_Node+272)(R1), F15
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d4e7 // fsub v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d5ef // fsub v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
 	FMOVQ (Bank_Section+528)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
-	FMOVQ (Bank_Section+848)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d4e7 // fadd v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d5ef // fadd v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d4a1 // fsub v1.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d5a9 // fsub v9.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e67d426 // fadd v6.2d, v1.2d, v7.2d
+	WORD $0x4e6fd52e // fadd v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Node+256)(R1), F3
+	FMOVQ (Bank_Node+272)(R1), F11
+	FMOVQ F3, (Bank_Node+320)(R1)
+	FMOVQ F11, (Bank_Node+336)(R1)
+	FMOVQ F5, (Bank_Node+256)(R1)
+	FMOVQ F13, (Bank_Node+272)(R1)
+	FMOVQ (Bank_Node+384)(R1), F0
+	FMOVQ (Bank_Node+400)(R1), F8
+	FMOVQ (Bank_Node+512)(R1), F16
+	WORD $0x4ef0d400 // fsub v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+528)(R1), F16
+	WORD $0x4ef0d508 // fsub v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
 	FMOVQ (Bank_Section+784)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ F12, (Bank_V1+16)(R1)
-	FMOVQ F10, (Bank_V2+16)(R1)
-	FMOVQ F13, (Bank_Node+16)(R1)
-	FMOVQ F0, (Bank_Node+80)(R1)
-	FMOVQ F1, (Bank_Node+144)(R1)
-	FMOVQ F2, (Bank_Node+208)(R1)
-	FMOVQ F3, (Bank_Node+272)(R1)
-	FMOVQ F4, (Bank_Node+336)(R1)
-	FMOVQ F5, (Bank_Node+400)(R1)
-	FMOVQ F6, (Bank_Node+464)(R1)
-	FMOVQ F7, (Bank_Node+528)(R1)
-	FMOVQ F8, (Bank_Node+592)(R1)
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4e70d400 // fadd v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+576)(R1), F16
+	WORD $0x4ef0d4c4 // fsub v4.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+592)(R1), F16
+	WORD $0x4ef0d5cc // fsub v12.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	WORD $0x4e60d482 // fadd v2.2d, v4.2d, v0.2d
+	WORD $0x4e68d58a // fadd v10.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Node+384)(R1), F1
+	FMOVQ (Bank_Node+400)(R1), F9
+	FMOVQ F1, (Bank_Node+448)(R1)
+	FMOVQ F9, (Bank_Node+464)(R1)
+	FMOVQ F6, (Bank_Node+384)(R1)
+	FMOVQ F14, (Bank_Node+400)(R1)
+	FMOVQ (Bank_Node+512)(R1), F7
+	FMOVQ (Bank_Node+528)(R1), F15
+	FMOVQ F7, (Bank_Node+576)(R1)
+	FMOVQ F15, (Bank_Node+592)(R1)
+	FMOVQ F2, (Bank_Node+512)(R1)
+	FMOVQ F10, (Bank_Node+528)(R1)
+	WORD $0x0e616843 // fcvtn v3.2s, v2.2d
+	FMOVD F3, (Bench_filtered+0)(R13)
+	WORD $0x0e61694b // fcvtn v11.2s, v10.2d
+	FMOVD F11, (Bench_filtered+8)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bank_Power+0)(R0), F4
 	FMOVQ 0(R3), F16
@@ -6594,254 +6846,286 @@ two:
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	FMOVQ F0, (Bench_read+0)(R13)
 	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_Node+384)(R1), F6
-	FMOVQ (Bank_Node+448)(R1), F7
-	FMOVQ (Bank_Node+512)(R1), F8
-	FMOVQ (Bank_Node+576)(R1), F9
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
-	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
-	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ F11, (Bank_V1+0)(R1)
-	FMOVQ F12, (Bank_V2+0)(R1)
-	FMOVQ F9, (Bank_Node+0)(R1)
-	FMOVQ F13, (Bank_Node+64)(R1)
-	FMOVQ F0, (Bank_Node+128)(R1)
-	FMOVQ F1, (Bank_Node+192)(R1)
-	FMOVQ F2, (Bank_Node+256)(R1)
-	FMOVQ F3, (Bank_Node+320)(R1)
-	FMOVQ F4, (Bank_Node+384)(R1)
-	FMOVQ F5, (Bank_Node+448)(R1)
-	FMOVQ F6, (Bank_Node+512)(R1)
-	FMOVQ F7, (Bank_Node+576)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_Node+400)(R1), F6
-	FMOVQ (Bank_Node+464)(R1), F7
-	FMOVQ (Bank_Node+528)(R1), F8
-	FMOVQ (Bank_Node+592)(R1), F9
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
-	FMOVQ (Bank_Section+848)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
-	FMOVQ (Bank_Section+784)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F5
+	FMOVQ (Bank_V1+16)(R1), F13
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
-	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
+	WORD $0x4ee5d465 // fsub v5.2d, v3.2d, v5.2d
+	WORD $0x4eedd56d // fsub v13.2d, v11.2d, v13.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc65 // fmul v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6d // fmul v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dce6 // fmul v6.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddee // fmul v14.2d, v15.2d, v16.2d
+	WORD $0x4ee5d485 // fsub v5.2d, v4.2d, v5.2d
+	WORD $0x4eedd58d // fsub v13.2d, v12.2d, v13.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_V2+0)(R1)
+	FMOVQ F11, (Bank_V2+16)(R1)
+	FMOVQ F4, (Bank_V1+0)(R1)
+	FMOVQ F12, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F2
+	FMOVQ (Bank_Node+16)(R1), F10
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d442 // fsub v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54a // fsub v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d4e1 // fsub v1.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d5e9 // fsub v9.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e62d423 // fadd v3.2d, v1.2d, v2.2d
+	WORD $0x4e6ad52b // fadd v11.2d, v9.2d, v10.2d
+	WORD $0x4ee3d4e2 // fsub v2.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ea // fsub v10.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d401 // fsub v1.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d509 // fsub v9.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc21 // fmul v1.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd29 // fmul v9.2d, v9.2d, v16.2d
+	WORD $0x4e62d424 // fadd v4.2d, v1.2d, v2.2d
+	WORD $0x4e6ad52c // fadd v12.2d, v9.2d, v10.2d
+	FMOVQ F7, (Bank_Node+64)(R1)
+	FMOVQ F15, (Bank_Node+80)(R1)
+	FMOVQ F0, (Bank_Node+0)(R1)
+	FMOVQ F8, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F6
+	FMOVQ (Bank_Node+144)(R1), F14
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+592)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d465 // fsub v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d56d // fsub v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d485 // fsub v5.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d58d // fsub v13.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+192)(R1)
+	FMOVQ F11, (Bank_Node+208)(R1)
+	FMOVQ F4, (Bank_Node+128)(R1)
+	FMOVQ F12, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F0
+	FMOVQ (Bank_Node+272)(R1), F8
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d400 // fsub v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d508 // fsub v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
 	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d400 // fadd v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d427 // fsub v7.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d52f // fsub v15.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
-	FMOVQ (Bank_Section+848)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
-	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
+	WORD $0x4e60d4e5 // fadd v5.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ed // fadd v13.2d, v15.2d, v8.2d
+	WORD $0x4ee5d420 // fsub v0.2d, v1.2d, v5.2d
+	WORD $0x4eedd528 // fsub v8.2d, v9.2d, v13.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4e70d400 // fadd v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d447 // fsub v7.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d54f // fsub v15.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e6 // fadd v6.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ee // fadd v14.2d, v15.2d, v8.2d
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ F9, (Bank_Node+336)(R1)
+	FMOVQ F2, (Bank_Node+256)(R1)
+	FMOVQ F10, (Bank_Node+272)(R1)
+	FMOVQ (Bank_Node+384)(R1), F4
+	FMOVQ (Bank_Node+400)(R1), F12
+	FMOVQ (Bank_Node+512)(R1), F16
+	WORD $0x4ef0d484 // fsub v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+528)(R1), F16
+	WORD $0x4ef0d58c // fsub v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Section+784)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
-	FMOVQ F11, (Bank_V1+16)(R1)
-	FMOVQ F12, (Bank_V2+16)(R1)
-	FMOVQ F9, (Bank_Node+16)(R1)
-	FMOVQ F13, (Bank_Node+80)(R1)
-	FMOVQ F0, (Bank_Node+144)(R1)
-	FMOVQ F1, (Bank_Node+208)(R1)
-	FMOVQ F2, (Bank_Node+272)(R1)
-	FMOVQ F3, (Bank_Node+336)(R1)
-	FMOVQ F4, (Bank_Node+400)(R1)
-	FMOVQ F5, (Bank_Node+464)(R1)
-	FMOVQ F6, (Bank_Node+528)(R1)
-	FMOVQ F7, (Bank_Node+592)(R1)
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+576)(R1), F16
+	WORD $0x4ef0d4a3 // fsub v3.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Node+592)(R1), F16
+	WORD $0x4ef0d5ab // fsub v11.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d467 // fadd v7.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56f // fadd v15.2d, v11.2d, v12.2d
+	WORD $0x4ee7d4a4 // fsub v4.2d, v5.2d, v7.2d
+	WORD $0x4eefd5ac // fsub v12.2d, v13.2d, v15.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+512)(R1), F16
+	WORD $0x4ef0d4c3 // fsub v3.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+528)(R1), F16
+	WORD $0x4ef0d5cb // fsub v11.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d460 // fadd v0.2d, v3.2d, v4.2d
+	WORD $0x4e6cd568 // fadd v8.2d, v11.2d, v12.2d
+	FMOVQ F5, (Bank_Node+448)(R1)
+	FMOVQ F13, (Bank_Node+464)(R1)
+	FMOVQ F6, (Bank_Node+384)(R1)
+	FMOVQ F14, (Bank_Node+400)(R1)
+	FMOVQ F7, (Bank_Node+576)(R1)
+	FMOVQ F15, (Bank_Node+592)(R1)
+	FMOVQ F0, (Bank_Node+512)(R1)
+	FMOVQ F8, (Bank_Node+528)(R1)
+	WORD $0x0e6168e1 // fcvtn v1.2s, v7.2d
+	FMOVD F1, (Bench_filtered+0)(R13)
+	WORD $0x0e6169e9 // fcvtn v9.2s, v15.2d
+	FMOVD F9, (Bench_filtered+8)(R13)
+	WORD $0x0e616801 // fcvtn v1.2s, v0.2d
+	FMOVD F1, (Bench_filtered+32)(R13)
+	WORD $0x0e616909 // fcvtn v9.2s, v8.2d
+	FMOVD F9, (Bench_filtered+40)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bank_Power+0)(R0), F4
@@ -7003,354 +7287,386 @@ three:
 	FMOVQ F0, (Bench_read+0)(R13)
 	FMOVQ F1, (Bench_read+32)(R13)
 	FMOVQ F2, (Bench_read+64)(R13)
-	FMOVQ (Bank_Node+0)(R1), F0
-	FMOVQ (Bank_Node+64)(R1), F1
-	FMOVQ (Bank_Node+128)(R1), F2
-	FMOVQ (Bank_Node+192)(R1), F3
-	FMOVQ (Bank_Node+256)(R1), F4
-	FMOVQ (Bank_Node+320)(R1), F5
-	FMOVQ (Bank_Node+384)(R1), F6
-	FMOVQ (Bank_Node+448)(R1), F7
-	FMOVQ (Bank_Node+512)(R1), F8
-	FMOVQ (Bank_Node+576)(R1), F9
-	FMOVQ (Bank_V1+0)(R1), F10
-	FMOVQ (Bank_V2+0)(R1), F11
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x0e617a0c // fcvtl v12.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
-	FMOVD F14, (Bench_filtered+0)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
-	WORD $0x0e617a0b // fcvtl v11.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
-	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
-	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
-	FMOVD F14, (Bench_filtered+32)(R13)
-	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x0e617a0a // fcvtl v10.2d, v16.2s
-	FMOVQ (Bank_C2+0)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_C1+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Zero+0)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
-	FMOVQ (Bank_Gain+0)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+0)(R1), F16
-	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
-	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
-	WORD $0x4ee1d50e // fsub v14.2d, v8.2d, v1.2d
-	FMOVQ (Bank_Section+64)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d52f // fsub v15.2d, v9.2d, v0.2d
-	FMOVQ (Bank_Section+0)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+320)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+256)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+576)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+512)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+832)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+768)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+64)(R13)
-	FMOVQ F10, (Bank_V1+0)(R1)
-	FMOVQ F11, (Bank_V2+0)(R1)
-	FMOVQ F8, (Bank_Node+0)(R1)
-	FMOVQ F9, (Bank_Node+64)(R1)
-	FMOVQ F13, (Bank_Node+128)(R1)
-	FMOVQ F0, (Bank_Node+192)(R1)
-	FMOVQ F1, (Bank_Node+256)(R1)
-	FMOVQ F2, (Bank_Node+320)(R1)
-	FMOVQ F3, (Bank_Node+384)(R1)
-	FMOVQ F4, (Bank_Node+448)(R1)
-	FMOVQ F5, (Bank_Node+512)(R1)
-	FMOVQ F6, (Bank_Node+576)(R1)
-	FMOVQ (Bank_Node+16)(R1), F0
-	FMOVQ (Bank_Node+80)(R1), F1
-	FMOVQ (Bank_Node+144)(R1), F2
-	FMOVQ (Bank_Node+208)(R1), F3
-	FMOVQ (Bank_Node+272)(R1), F4
-	FMOVQ (Bank_Node+336)(R1), F5
-	FMOVQ (Bank_Node+400)(R1), F6
-	FMOVQ (Bank_Node+464)(R1), F7
-	FMOVQ (Bank_Node+528)(R1), F8
-	FMOVQ (Bank_Node+592)(R1), F9
-	FMOVQ (Bank_V1+16)(R1), F10
-	FMOVQ (Bank_V2+16)(R1), F11
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
 	FMOVQ (Bench_read+0)(R13), F16
-	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
-	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58c // fsub v12.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70dc0f // fmul v15.2d, v0.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x4ee9d4ae // fsub v14.2d, v5.2d, v9.2d
-	FMOVQ (Bank_Section+848)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e67d5ce // fadd v14.2d, v14.2d, v7.2d
-	WORD $0x4ee8d4cf // fsub v15.2d, v6.2d, v8.2d
-	FMOVQ (Bank_Section+784)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c7 // fadd v7.2d, v14.2d, v15.2d
-	WORD $0x0e6168ee // fcvtn v14.2s, v7.2d
-	FMOVD F14, (Bench_filtered+8)(R13)
-	FMOVQ (Bench_read+32)(R13), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd4e // fmul v14.2d, v10.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56b // fsub v11.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
-	FMOVQ (Bank_Gain+16)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	FMOVQ (Bank_Pole+16)(R1), F16
-	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
-	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
-	WORD $0x4ee2d52e // fsub v14.2d, v9.2d, v2.2d
-	FMOVQ (Bank_Section+80)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e60d5ce // fadd v14.2d, v14.2d, v0.2d
-	WORD $0x4ee1d5af // fsub v15.2d, v13.2d, v1.2d
-	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c0 // fadd v0.2d, v14.2d, v15.2d
-	WORD $0x4ee4d40e // fsub v14.2d, v0.2d, v4.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e62d5ce // fadd v14.2d, v14.2d, v2.2d
-	WORD $0x4ee3d42f // fsub v15.2d, v1.2d, v3.2d
-	FMOVQ (Bank_Section+272)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c2 // fadd v2.2d, v14.2d, v15.2d
-	WORD $0x4ee6d44e // fsub v14.2d, v2.2d, v6.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
-	WORD $0x4ee5d46f // fsub v15.2d, v3.2d, v5.2d
-	FMOVQ (Bank_Section+528)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
-	WORD $0x4ee8d48e // fsub v14.2d, v4.2d, v8.2d
-	FMOVQ (Bank_Section+848)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e66d5ce // fadd v14.2d, v14.2d, v6.2d
-	WORD $0x4ee7d4af // fsub v15.2d, v5.2d, v7.2d
-	FMOVQ (Bank_Section+784)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c6 // fadd v6.2d, v14.2d, v15.2d
-	WORD $0x0e6168ce // fcvtn v14.2s, v6.2d
-	FMOVD F14, (Bench_filtered+40)(R13)
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ (Bench_read+32)(R13), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
 	FMOVQ (Bench_read+64)(R13), F16
-	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ (Bench_read+64)(R13), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
 	FMOVQ (Bank_C2+16)(R1), F16
-	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
 	FMOVQ (Bank_C1+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54a // fsub v10.2d, v10.2d, v14.2d
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F6
+	FMOVQ (Bank_V1+16)(R1), F14
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Zero+16)(R1), F16
-	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
-	WORD $0x4eeed54e // fsub v14.2d, v10.2d, v14.2d
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F7
+	FMOVQ (Bank_Node+16)(R1), F15
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4ee6d466 // fsub v6.2d, v3.2d, v6.2d
+	WORD $0x4eeed56e // fsub v14.2d, v11.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
 	FMOVQ (Bank_Gain+16)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c0 // fadd v0.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc66 // fmul v6.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6e // fmul v14.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc07 // fmul v7.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd0f // fmul v15.2d, v8.2d, v16.2d
+	WORD $0x4ee6d486 // fsub v6.2d, v4.2d, v6.2d
+	WORD $0x4eeed58e // fsub v14.2d, v12.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c1 // fadd v1.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5c9 // fadd v9.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc86 // fmul v6.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc27 // fmul v7.2d, v1.2d, v16.2d
 	FMOVQ (Bank_Pole+16)(R1), F16
 	WORD $0x6e70dd2f // fmul v15.2d, v9.2d, v16.2d
-	WORD $0x4e6fd5c8 // fadd v8.2d, v14.2d, v15.2d
-	WORD $0x4ee1d50e // fsub v14.2d, v8.2d, v1.2d
-	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x4ee6d4a6 // fsub v6.2d, v5.2d, v6.2d
+	WORD $0x4eeed5ae // fsub v14.2d, v13.2d, v14.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
 	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e6dd5ce // fadd v14.2d, v14.2d, v13.2d
-	WORD $0x4ee0d52f // fsub v15.2d, v9.2d, v0.2d
+	WORD $0x4e67d4c2 // fadd v2.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
+	FMOVQ F4, (Bank_V2+0)(R1)
+	FMOVQ F12, (Bank_V2+16)(R1)
+	FMOVQ F5, (Bank_V1+0)(R1)
+	FMOVQ F13, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F4
+	FMOVQ (Bank_Node+16)(R1), F12
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d484 // fsub v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d58c // fsub v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
 	FMOVQ (Bank_Section+16)(R1), F16
-	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5cd // fadd v13.2d, v14.2d, v15.2d
-	WORD $0x4ee3d5ae // fsub v14.2d, v13.2d, v3.2d
-	FMOVQ (Bank_Section+336)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e61d5ce // fadd v14.2d, v14.2d, v1.2d
-	WORD $0x4ee2d40f // fsub v15.2d, v0.2d, v2.2d
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d403 // fsub v3.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d50b // fsub v11.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d465 // fadd v5.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56d // fadd v13.2d, v11.2d, v12.2d
+	WORD $0x4ee5d404 // fsub v4.2d, v0.2d, v5.2d
+	WORD $0x4eedd50c // fsub v12.2d, v8.2d, v13.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d484 // fadd v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d58c // fadd v12.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d423 // fsub v3.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d52b // fsub v11.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d466 // fadd v6.2d, v3.2d, v4.2d
+	WORD $0x4e6cd56e // fadd v14.2d, v11.2d, v12.2d
+	WORD $0x4ee6d424 // fsub v4.2d, v1.2d, v6.2d
+	WORD $0x4eeed52c // fsub v12.2d, v9.2d, v14.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dc84 // fmul v4.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70dd8c // fmul v12.2d, v12.2d, v16.2d
+	WORD $0x4e60d484 // fadd v4.2d, v4.2d, v0.2d
+	WORD $0x4e68d58c // fadd v12.2d, v12.2d, v8.2d
+	WORD $0x4ee5d443 // fsub v3.2d, v2.2d, v5.2d
+	WORD $0x4eedd54b // fsub v11.2d, v10.2d, v13.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e64d460 // fadd v0.2d, v3.2d, v4.2d
+	WORD $0x4e6cd568 // fadd v8.2d, v11.2d, v12.2d
+	FMOVQ F1, (Bank_Node+64)(R1)
+	FMOVQ F9, (Bank_Node+80)(R1)
+	FMOVQ F2, (Bank_Node+0)(R1)
+	FMOVQ F10, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F3
+	FMOVQ (Bank_Node+144)(R1), F11
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d463 // fsub v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d56b // fsub v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
 	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d463 // fadd v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d4a7 // fsub v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d5af // fsub v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c1 // fadd v1.2d, v14.2d, v15.2d
-	WORD $0x4ee5d42e // fsub v14.2d, v1.2d, v5.2d
-	FMOVQ (Bank_Section+592)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e63d5ce // fadd v14.2d, v14.2d, v3.2d
-	WORD $0x4ee4d44f // fsub v15.2d, v2.2d, v4.2d
+	WORD $0x4e63d4e4 // fadd v4.2d, v7.2d, v3.2d
+	WORD $0x4e6bd5ec // fadd v12.2d, v15.2d, v11.2d
+	WORD $0x4ee4d4a3 // fsub v3.2d, v5.2d, v4.2d
+	WORD $0x4eecd5ab // fsub v11.2d, v13.2d, v12.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d463 // fadd v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c7 // fsub v7.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5cf // fsub v15.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e63d4e1 // fadd v1.2d, v7.2d, v3.2d
+	WORD $0x4e6bd5e9 // fadd v9.2d, v15.2d, v11.2d
+	WORD $0x4ee1d4c3 // fsub v3.2d, v6.2d, v1.2d
+	WORD $0x4ee9d5cb // fsub v11.2d, v14.2d, v9.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dc63 // fmul v3.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70dd6b // fmul v11.2d, v11.2d, v16.2d
+	WORD $0x4e65d463 // fadd v3.2d, v3.2d, v5.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x4ee4d407 // fsub v7.2d, v0.2d, v4.2d
+	WORD $0x4eecd50f // fsub v15.2d, v8.2d, v12.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e63d4e5 // fadd v5.2d, v7.2d, v3.2d
+	WORD $0x4e6bd5ed // fadd v13.2d, v15.2d, v11.2d
+	FMOVQ F6, (Bank_Node+192)(R1)
+	FMOVQ F14, (Bank_Node+208)(R1)
+	FMOVQ F0, (Bank_Node+128)(R1)
+	FMOVQ F8, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F7
+	FMOVQ (Bank_Node+272)(R1), F15
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d4e7 // fsub v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d5ef // fsub v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
 	FMOVQ (Bank_Section+528)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c3 // fadd v3.2d, v14.2d, v15.2d
-	WORD $0x4ee7d46e // fsub v14.2d, v3.2d, v7.2d
-	FMOVQ (Bank_Section+848)(R1), F16
-	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
-	WORD $0x4ee6d48f // fsub v15.2d, v4.2d, v6.2d
-	FMOVQ (Bank_Section+784)(R1), F16
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d4e7 // fadd v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d5ef // fadd v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d482 // fsub v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d58a // fsub v10.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	WORD $0x4e67d443 // fadd v3.2d, v2.2d, v7.2d
+	WORD $0x4e6fd54b // fadd v11.2d, v10.2d, v15.2d
+	WORD $0x4ee3d487 // fsub v7.2d, v4.2d, v3.2d
+	WORD $0x4eebd58f // fsub v15.2d, v12.2d, v11.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
 	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
-	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
-	WORD $0x0e6168ae // fcvtn v14.2s, v5.2d
-	FMOVD F14, (Bench_filtered+72)(R13)
-	FMOVQ F10, (Bank_V1+16)(R1)
-	FMOVQ F11, (Bank_V2+16)(R1)
-	FMOVQ F8, (Bank_Node+16)(R1)
-	FMOVQ F9, (Bank_Node+80)(R1)
-	FMOVQ F13, (Bank_Node+144)(R1)
-	FMOVQ F0, (Bank_Node+208)(R1)
-	FMOVQ F1, (Bank_Node+272)(R1)
-	FMOVQ F2, (Bank_Node+336)(R1)
-	FMOVQ F3, (Bank_Node+400)(R1)
-	FMOVQ F4, (Bank_Node+464)(R1)
-	FMOVQ F5, (Bank_Node+528)(R1)
-	FMOVQ F6, (Bank_Node+592)(R1)
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4e70d4e7 // fadd v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4e70d5ef // fadd v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d422 // fsub v2.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d52a // fsub v10.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	WORD $0x4e67d446 // fadd v6.2d, v2.2d, v7.2d
+	WORD $0x4e6fd54e // fadd v14.2d, v10.2d, v15.2d
+	WORD $0x4ee6d427 // fsub v7.2d, v1.2d, v6.2d
+	WORD $0x4eeed52f // fsub v15.2d, v9.2d, v14.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e64d4e7 // fadd v7.2d, v7.2d, v4.2d
+	WORD $0x4e6cd5ef // fadd v15.2d, v15.2d, v12.2d
+	WORD $0x4ee3d4a2 // fsub v2.2d, v5.2d, v3.2d
+	WORD $0x4eebd5aa // fsub v10.2d, v13.2d, v11.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	WORD $0x4e67d444 // fadd v4.2d, v2.2d, v7.2d
+	WORD $0x4e6fd54c // fadd v12.2d, v10.2d, v15.2d
+	FMOVQ F1, (Bank_Node+320)(R1)
+	FMOVQ F9, (Bank_Node+336)(R1)
+	FMOVQ F5, (Bank_Node+256)(R1)
+	FMOVQ F13, (Bank_Node+272)(R1)
+	FMOVQ (Bank_Node+384)(R1), F2
+	FMOVQ (Bank_Node+400)(R1), F10
+	FMOVQ (Bank_Node+512)(R1), F16
+	WORD $0x4ef0d442 // fsub v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+528)(R1), F16
+	WORD $0x4ef0d54a // fsub v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+576)(R1), F16
+	WORD $0x4ef0d460 // fsub v0.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+592)(R1), F16
+	WORD $0x4ef0d568 // fsub v8.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4e62d407 // fadd v7.2d, v0.2d, v2.2d
+	WORD $0x4e6ad50f // fadd v15.2d, v8.2d, v10.2d
+	WORD $0x4ee7d462 // fsub v2.2d, v3.2d, v7.2d
+	WORD $0x4eefd56a // fsub v10.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4e70d442 // fadd v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Node+512)(R1), F16
+	WORD $0x4ef0d4c0 // fsub v0.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+528)(R1), F16
+	WORD $0x4ef0d5c8 // fsub v8.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4e62d401 // fadd v1.2d, v0.2d, v2.2d
+	WORD $0x4e6ad509 // fadd v9.2d, v8.2d, v10.2d
+	WORD $0x4ee1d4c2 // fsub v2.2d, v6.2d, v1.2d
+	WORD $0x4ee9d5ca // fsub v10.2d, v14.2d, v9.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dc42 // fmul v2.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70dd4a // fmul v10.2d, v10.2d, v16.2d
+	WORD $0x4e63d442 // fadd v2.2d, v2.2d, v3.2d
+	WORD $0x4e6bd54a // fadd v10.2d, v10.2d, v11.2d
+	WORD $0x4ee7d480 // fsub v0.2d, v4.2d, v7.2d
+	WORD $0x4eefd588 // fsub v8.2d, v12.2d, v15.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4e62d403 // fadd v3.2d, v0.2d, v2.2d
+	WORD $0x4e6ad50b // fadd v11.2d, v8.2d, v10.2d
+	FMOVQ F6, (Bank_Node+448)(R1)
+	FMOVQ F14, (Bank_Node+464)(R1)
+	FMOVQ F4, (Bank_Node+384)(R1)
+	FMOVQ F12, (Bank_Node+400)(R1)
+	FMOVQ F1, (Bank_Node+576)(R1)
+	FMOVQ F9, (Bank_Node+592)(R1)
+	FMOVQ F3, (Bank_Node+512)(R1)
+	FMOVQ F11, (Bank_Node+528)(R1)
+	WORD $0x0e6168e5 // fcvtn v5.2s, v7.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e6169ed // fcvtn v13.2s, v15.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616825 // fcvtn v5.2s, v1.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61692d // fcvtn v13.2s, v9.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
+	WORD $0x0e616865 // fcvtn v5.2s, v3.2d
+	FMOVD F5, (Bench_filtered+64)(R13)
+	WORD $0x0e61696d // fcvtn v13.2s, v11.2d
+	FMOVD F13, (Bench_filtered+72)(R13)
 	FMOVQ (Bench_filtered+0)(R13), F0
 	FMOVQ (Bench_filtered+32)(R13), F1
 	FMOVQ (Bench_filtered+64)(R13), F2
@@ -10241,9 +10557,9 @@ sections1:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -10251,9 +10567,9 @@ sections1:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -10261,9 +10577,9 @@ sections1:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
 	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
 	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -10271,9 +10587,9 @@ sections1:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
 	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e65d5ef // fadd v15.2d, v15.2d, v5.2d
 	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+0)(R5)
 	FMOVQ F9, (Section_A2+0)(R5)
@@ -10412,9 +10728,9 @@ sections2:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -10422,9 +10738,9 @@ sections2:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -10432,9 +10748,9 @@ sections2:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
 	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
 	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -10442,9 +10758,9 @@ sections2:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
 	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e65d5ef // fadd v15.2d, v15.2d, v5.2d
 	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+16)(R5)
 	FMOVQ F9, (Section_A2+16)(R5)
@@ -10649,9 +10965,9 @@ sections3:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+0)(R5)
 	FMOVQ F9, (Section_A2+0)(R5)
@@ -10721,9 +11037,9 @@ sections4:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+16)(R5)
 	FMOVQ F9, (Section_A2+16)(R5)
@@ -10944,9 +11260,9 @@ sections5:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -10954,9 +11270,9 @@ sections5:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+0)(R5)
 	FMOVQ F9, (Section_A2+0)(R5)
@@ -11049,9 +11365,9 @@ sections6:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -11059,9 +11375,9 @@ sections6:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+16)(R5)
 	FMOVQ F9, (Section_A2+16)(R5)
@@ -11337,9 +11653,9 @@ sections7:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -11347,9 +11663,9 @@ sections7:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -11357,9 +11673,9 @@ sections7:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
 	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
 	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+0)(R5)
 	FMOVQ F9, (Section_A2+0)(R5)
@@ -11475,9 +11791,9 @@ sections8:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -11485,9 +11801,9 @@ sections8:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -11495,9 +11811,9 @@ sections8:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
 	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
 	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+16)(R5)
 	FMOVQ F9, (Section_A2+16)(R5)
@@ -12117,9 +12433,9 @@ sections1:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -12127,9 +12443,9 @@ sections1:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -12137,9 +12453,9 @@ sections1:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
 	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
 	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -12147,9 +12463,9 @@ sections1:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
 	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e65d5ef // fadd v15.2d, v15.2d, v5.2d
 	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+0)(R5)
 	FMOVQ F9, (Section_A2+0)(R5)
@@ -12288,9 +12604,9 @@ sections2:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -12298,9 +12614,9 @@ sections2:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -12308,9 +12624,9 @@ sections2:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
 	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
 	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -12318,9 +12634,9 @@ sections2:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e65d5ce // fadd v14.2d, v14.2d, v5.2d
 	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e65d5ef // fadd v15.2d, v15.2d, v5.2d
 	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+16)(R5)
 	FMOVQ F9, (Section_A2+16)(R5)
@@ -12596,9 +12912,9 @@ sections3:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+0)(R5)
 	FMOVQ F9, (Section_A2+0)(R5)
@@ -12668,9 +12984,9 @@ sections4:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+16)(R5)
 	FMOVQ F9, (Section_A2+16)(R5)
@@ -13000,9 +13316,9 @@ sections5:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -13010,9 +13326,9 @@ sections5:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+0)(R5)
 	FMOVQ F9, (Section_A2+0)(R5)
@@ -13105,9 +13421,9 @@ sections6:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -13115,9 +13431,9 @@ sections6:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+16)(R5)
 	FMOVQ F9, (Section_A2+16)(R5)
@@ -13540,9 +13856,9 @@ sections7:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -13550,9 +13866,9 @@ sections7:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+0)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -13560,9 +13876,9 @@ sections7:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
 	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
 	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+0)(R5)
 	FMOVQ F9, (Section_A2+0)(R5)
@@ -13678,9 +13994,9 @@ sections8:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
 	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
 	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -13688,9 +14004,9 @@ sections8:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
 	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
 	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
 	FMOVQ (Section_DA1+16)(R5), F16
 	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
@@ -13698,9 +14014,9 @@ sections8:
 	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
 	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
 	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
-	WORD $0x4e64d5ce // fadd v14.2d, v14.2d, v4.2d
 	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
 	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
 	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
 	FMOVQ F8, (Section_A1+16)(R5)
 	FMOVQ F9, (Section_A2+16)(R5)
@@ -13977,7 +14293,9 @@ pass:
 	FMOVQ (Bank_Right+0)(R0), F1
 	FMOVQ (Bank_DRight+0)(R0), F3
 
-frames:
+fours:
+	CMP $4, R9
+	BLT rest
 	FMOVQ 0(R2), F4
 	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
 	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
@@ -13985,14 +14303,68 @@ frames:
 	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
 	FMOVQ F5, (Mix_Left+0)(R13)
 	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
-	WORD $0x6e21dc85 // fmul v5.4s, v4.4s, v1.4s
+	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
 	FMOVQ (Mix_Right+0)(R13), F16
+	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
+	FMOVQ F6, (Mix_Right+0)(R13)
+	FMOVQ 32(R2), F4
+	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
+	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
+	FMOVQ (Mix_Left+32)(R13), F16
 	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
-	FMOVQ F5, (Mix_Right+0)(R13)
+	FMOVQ F5, (Mix_Left+32)(R13)
+	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
+	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
+	FMOVQ (Mix_Right+32)(R13), F16
+	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
+	FMOVQ F6, (Mix_Right+32)(R13)
+	FMOVQ 64(R2), F4
+	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
+	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
+	FMOVQ (Mix_Left+64)(R13), F16
+	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
+	FMOVQ F5, (Mix_Left+64)(R13)
+	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
+	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
+	FMOVQ (Mix_Right+64)(R13), F16
+	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
+	FMOVQ F6, (Mix_Right+64)(R13)
+	FMOVQ 96(R2), F4
+	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
+	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
+	FMOVQ (Mix_Left+96)(R13), F16
+	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
+	FMOVQ F5, (Mix_Left+96)(R13)
+	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
+	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
+	FMOVQ (Mix_Right+96)(R13), F16
+	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
+	FMOVQ F6, (Mix_Right+96)(R13)
+	ADD $128, R2, R2
+	ADD $128, R13, R13
+	SUB $4, R9, R9
+	JMP fours
+
+rest:
+	CMP $0, R9
+	BEQ done
+	FMOVQ 0(R2), F4
+	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
+	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
+	FMOVQ (Mix_Left+0)(R13), F16
+	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
+	FMOVQ F5, (Mix_Left+0)(R13)
+	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
+	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
+	FMOVQ (Mix_Right+0)(R13), F16
+	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
+	FMOVQ F6, (Mix_Right+0)(R13)
 	ADD $32, R2, R2
 	ADD $32, R13, R13
 	SUB $1, R9, R9
-	CBNZ R9, frames
+	JMP rest
+
+done:
 	FMOVQ F0, (Bank_Left+0)(R0)
 	FMOVQ F1, (Bank_Right+0)(R0)
 	ADD $16, R12, R12

@@ -165,7 +165,7 @@ func (k Kernel) Mix(b *Bank, m *Mix, from, until int) {
 // Render computes frames from to until of a control step, at most Frames, in
 // all lanes of b. force may be nil. It leaves At as it is.
 //
-// It panics when a lane reaches outside the lines, or reads less than Shortest back.
+// It panics when a lane reaches outside the lines, or, on a vector unit, reads less than Shortest back.
 func (k Kernel) Render(b *Bank, w *Bench, force *Force, motion Motion, from, until int) {
 	if from < 0 || until > Frames {
 		panic("lanes: frames outside the control step")
@@ -185,18 +185,8 @@ func (k Kernel) Render(b *Bank, w *Bench, force *Force, motion Motion, from, unt
 				k.turn(b, w)
 			}
 		}
-		for i := range b.At {
-			b.check(i, Taps-1+Shortest, int64(until-start)+Spill, w.Line)
-		}
 		do(b, w, force, from-start, from, end-from)
 		from = end
-	}
-}
-
-func (b *Bank) check(lane int, least, ahead int64, line []float32) {
-	first := b.oldest(lane, 0)
-	if b.Back[lane] < least || first < History || first+ahead+Taps > int64(len(line)) || b.At[lane]+ahead > int64(len(line)) {
-		panic("lanes: a lane reaches outside its line")
 	}
 }
 

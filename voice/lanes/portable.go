@@ -55,7 +55,6 @@ func (b *Bank) Solo(lane int, w *Bench, force *Force, motion Motion, from, until
 				b.take(lane, b.turn(lane, w.Rows))
 			}
 		}
-		b.check(lane, Taps, int64(until-start), w.Line)
 		p := b.pass(lane, w, force, from-start, from, end-from)
 		if motion == Gliding && b.Glide[lane].Finger.Firm > 0 {
 			b.touched(p, w, b.At[lane]+int64(from-start))
@@ -242,7 +241,7 @@ func (b *Bank) disperse(l int, in float64) float64 {
 	for i := range b.Section[:b.Sections] {
 		s, left, right := &b.Section[i], &b.Node[i], &b.Node[i+1]
 		x, x1, y, y1 := left.X[l], left.X1[l], right.X[l], right.X1[l]
-		out := float64(s.A2[l]*(in-y1)) + x1 + float64(s.A1[l]*(x-y))
+		out := float64(s.A2[l]*(in-y1)) + (float64(s.A1[l]*(x-y)) + x1)
 		left.X1[l], left.X[l] = x, in
 		in = out
 	}

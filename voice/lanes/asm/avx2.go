@@ -59,8 +59,6 @@ func (a avx2) jumpIfEqual(name string, frames int) {
 	a.put("JEQ %s", name)
 }
 
-func (a avx2) jumpIfMore(name string) { a.put("JNZ %s", name) }
-
 func (a avx2) rewind(quads int)  { a.put("MOVQ $%d, DX", -16*quads) }
 func (a avx2) advance(group int) { a.put("ADDQ $%d, DX", 4*group) }
 
@@ -95,6 +93,7 @@ func (a avx2) addD(d, x, y reg)      { a.three("VADDPD", d, x, y) }
 func (a avx2) subD(d, x, y reg)      { a.three("VSUBPD", d, x, y) }
 func (a avx2) addDm(d, x reg, m mem) { a.threeM("VADDPD", d, x, m) }
 func (a avx2) mulDm(d, x reg, m mem) { a.threeM("VMULPD", d, x, m) }
+func (a avx2) subDm(d, x reg, m mem) { a.threeM("VSUBPD", d, x, m) }
 func (a avx2) addBias(d, x reg)      { a.put("VADDPS bias<>(SB), Y%d, Y%d", x, d) }
 
 func (a avx2) widen(d, s reg, h half) {

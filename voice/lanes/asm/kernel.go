@@ -369,9 +369,9 @@ func (k *kernel) sections(x []reg, h half) {
 		}
 		k.subD(t, in, out2)
 		k.mulD(t, t, a2)
-		k.addD(t, t, in2)
 		k.subD(u, in1, out1)
 		k.mulD(u, u, a1)
+		k.addD(u, u, in2)
 		free := in2
 		k.addD(free, t, u)
 		in2, in1, out2, out1 = in1, in, out1, free
@@ -400,71 +400,176 @@ func (k *kernel) sections(x []reg, h half) {
 }
 
 // filterUnrolled takes n frames, in registers 0 to n-1, through all filters of still stiff
-// strings, frame by frame, with the whole history of one half of the lanes in registers. Nothing is
-// moved between them: the register that a frame frees takes the next result.
+// strings, both halves of the lanes side by side: what one waits for, the other
+// uses. A result takes a register that has become free, so nothing is moved.
 func (k *kernel) filterUnrolled(n int) {
 	for f := range n {
 		k.store(mem{benchF, "Bench_read", f * floats}, reg(f))
 	}
-	for _, h := range []half{low, high} {
-		k.unroll(n, h)
+	var ways [2][]func()
+	for h := range ways {
+		s := side{kernel: k, h: half(h)}
+		for r := range 8 {
+			s.free = append(s.free, reg(8*h+r))
+		}
+		s.filter(n)
+		ways[h] = s.way
+	}
+	for i := range ways[low] {
+		ways[low][i]()
+		ways[high][i]()
 	}
 	for f := range n {
 		k.join(reg(f), mem{benchF, "Bench_filtered", f * floats})
 	}
 }
 
-func (k *kernel) unroll(n int, h half) {
-	const t, u = 14, 15
-	section := func(i int, field int) mem {
-		return mem{bankD, "Bank_Section", i*4*doubles + field*doubles + int(h)*k.width()}
+// side lists the instructions for one half of the lanes, on eight registers of its own.
+type side struct {
+	*kernel
+	h    half
+	free []reg
+	way  []func()
+}
+
+func (s *side) do(step func()) { s.way = append(s.way, step) }
+
+func (s *side) take() reg {
+	r := s.free[0]
+	s.free = s.free[1:]
+	return r
+}
+
+func (s *side) give(r reg) { s.free = append(s.free, r) }
+
+// node is what passed a section's end one or two frames before the group.
+func (s *side) node(i, ago int) mem {
+	return mem{bankD, "Bank_Node", (2*i+ago-1)*doubles + int(s.h)*s.width()}
+}
+
+func (s *side) filter(n int) {
+	x := s.lose(n)
+	x = s.shelf(x)
+	for i := range s.unrolled {
+		x = s.section(i, x)
 	}
-	node := func(i int, field int) mem {
-		return mem{bankD, "Bank_Node", i*2*doubles + field*doubles + int(h)*k.width()}
+	s.remember(s.node(s.unrolled, 1), s.node(s.unrolled, 2), x)
+	t := s.take()
+	for f, x := range x {
+		s.do(func() { s.storeHalf(mem{benchF, "Bench_filtered", f * floats}, x, t, s.h) })
 	}
-	var now, before [maxSections + 1]reg // of each node
-	for i := range k.unrolled + 1 {
-		now[i], before[i] = reg(2*i), reg(2*i+1)
-		k.load(now[i], node(i, 0))
-		k.load(before[i], node(i, 1))
+}
+
+// remember stores the last two of some frames.
+func (s *side) remember(one, two mem, x []reg) {
+	if len(x) == 1 {
+		t := s.take()
+		s.do(func() { s.load(t, one) })
+		s.do(func() { s.store(two, t) })
+		s.give(t)
+	} else {
+		s.do(func() { s.store(two, x[len(x)-2]) })
 	}
-	last, older, x, free := reg(10), reg(11), reg(12), reg(13)
-	k.load(last, k.double("V1", h))
-	k.load(older, k.double("V2", h))
+	s.do(func() { s.store(one, x[len(x)-1]) })
+}
+
+// lose takes what was read through the loss filter.
+func (s *side) lose(n int) (x []reg) {
+	last, older, t := s.take(), s.take(), s.take()
+	s.do(func() { s.load(last, s.double("V1", s.h)) })
+	s.do(func() { s.load(older, s.double("V2", s.h)) })
+	now, before := last, older
 	for f := range n {
-		k.widenM(x, mem{benchF, "Bench_read", f * floats}, h)
-		k.mulDm(t, older, k.double("C2", h))
-		k.subD(x, x, t)
-		k.mulDm(t, last, k.double("C1", h))
-		k.subD(x, x, t)
-		// the shelf, whose last output is what came before the first section
-		k.mulDm(t, last, k.double("Zero", h))
-		k.subD(t, x, t)
-		k.mulDm(t, t, k.double("Gain", h))
-		k.mulDm(u, now[0], k.double("Pole", h))
-		k.addD(free, t, u)
-		last, older, x = x, last, older
-		for i := range k.unrolled {
-			in := free
-			k.subD(t, in, before[i+1])
-			k.mulDm(t, t, section(i, 1))
-			k.addD(t, t, before[i])
-			k.subD(u, now[i], now[i+1])
-			k.mulDm(u, u, section(i, 0))
-			free = before[i]
-			before[i], now[i] = now[i], in
-			k.addD(free, t, u)
+		y, now1, before1 := s.take(), now, before
+		s.do(func() { s.widenM(y, mem{benchF, "Bench_read", f * floats}, s.h) })
+		s.do(func() { s.mulDm(t, before1, s.double("C2", s.h)) })
+		s.do(func() { s.subD(y, y, t) })
+		s.do(func() { s.mulDm(t, now1, s.double("C1", s.h)) })
+		s.do(func() { s.subD(y, y, t) })
+		x = append(x, y)
+		now, before = y, now
+	}
+	s.give(last)
+	s.give(older)
+	s.give(t)
+	return x
+}
+
+// shelf, whose last output is what came before the first section. It keeps the
+// loss filter's history, which it needs.
+func (s *side) shelf(x []reg) (out []reg) {
+	t, u := s.take(), s.take()
+	for f, y := range x {
+		to := s.take()
+		if f == 0 {
+			s.do(func() { s.load(t, s.double("V1", s.h)) })
+			s.do(func() { s.mulDm(t, t, s.double("Zero", s.h)) })
+			s.do(func() { s.load(u, s.node(0, 1)) })
+			s.do(func() { s.mulDm(u, u, s.double("Pole", s.h)) })
+		} else {
+			before, last := x[f-1], out[f-1]
+			s.do(func() { s.mulDm(t, before, s.double("Zero", s.h)) })
+			s.do(func() { s.mulDm(u, last, s.double("Pole", s.h)) })
+			if f-1 < len(x)-2 {
+				s.give(before)
+			}
 		}
-		s := k.unrolled
-		k.storeHalf(mem{benchF, "Bench_filtered", f * floats}, free, t, h)
-		free, before[s], now[s] = before[s], now[s], free
+		s.do(func() { s.subD(t, y, t) })
+		s.do(func() { s.mulDm(t, t, s.double("Gain", s.h)) })
+		s.do(func() { s.addD(to, t, u) })
+		out = append(out, to)
 	}
-	k.store(k.double("V1", h), last)
-	k.store(k.double("V2", h), older)
-	for i := range k.unrolled + 1 {
-		k.store(node(i, 0), now[i])
-		k.store(node(i, 1), before[i])
+	s.remember(s.double("V1", s.h), s.double("V2", s.h), x)
+	for _, r := range x[max(0, len(x)-2):] {
+		s.give(r)
 	}
+	s.give(t)
+	s.give(u)
+	return out
+}
+
+// section passes frames through an allpass section, in direct form I: its inputs are kept as
+// the section's before it has them as outputs.
+func (s *side) section(i int, in []reg) (out []reg) {
+	coefficient := func(field int) mem {
+		return mem{bankD, "Bank_Section", (4*i+field)*doubles + int(s.h)*s.width()}
+	}
+	t, u := s.take(), s.take()
+	for f, x := range in {
+		to := reg(-1)
+		switch f {
+		case 0:
+			to = s.take()
+			s.do(func() { s.load(u, s.node(i, 1)) })
+			s.do(func() { s.subDm(u, u, s.node(i+1, 1)) })
+			s.do(func() { s.mulDm(u, u, coefficient(0)) })
+			s.do(func() { s.addDm(u, u, s.node(i, 2)) })
+			s.do(func() { s.subDm(t, x, s.node(i+1, 2)) })
+		case 1:
+			to = s.take()
+			s.do(func() { s.subD(u, in[0], out[0]) })
+			s.do(func() { s.mulDm(u, u, coefficient(0)) })
+			s.do(func() { s.addDm(u, u, s.node(i, 1)) })
+			s.do(func() { s.subDm(t, x, s.node(i+1, 1)) })
+		default:
+			to = in[f-2]
+			last, older := out[f-1], out[f-2]
+			s.do(func() { s.subD(u, in[f-1], last) })
+			s.do(func() { s.mulDm(u, u, coefficient(0)) })
+			s.do(func() { s.addD(u, u, to) })
+			s.do(func() { s.subD(t, x, older) })
+		}
+		s.do(func() { s.mulDm(t, t, coefficient(1)) })
+		s.do(func() { s.addD(to, t, u) })
+		out = append(out, to)
+	}
+	s.give(t)
+	s.give(u)
+	s.remember(s.node(i, 1), s.node(i, 2), in)
+	for _, r := range in[max(0, len(in)-2):] {
+		s.give(r)
+	}
+	return out
 }
 
 // sound adds the force to n frames, in registers 0 to n-1, and them to the power.
@@ -504,19 +609,30 @@ func (k *kernel) writeMix() {
 		k.load(reg(i), mem{bank, "Bank_" + name, 0})
 		k.load(reg(2+i), mem{bank, "Bank_D" + name, 0})
 	}
-	k.label("frames")
-	k.load(y, mem{base: outs})
-	for i, name := range names {
-		gain, at := reg(i), mem{mix, "Mix_" + name, 0}
-		k.addF(gain, gain, reg(2+i))
-		k.mulF(part, y, gain)
-		k.addFm(part, part, at)
-		k.store(at, part)
+	frames := func(n int) {
+		for f := range n {
+			k.load(y, mem{base: outs, off: f * floats})
+			for i, name := range names {
+				gain, part, at := reg(i), reg(part+i), mem{mix, "Mix_" + name, f * floats}
+				k.addF(gain, gain, reg(2+i))
+				k.mulF(part, y, gain)
+				k.addFm(part, part, at)
+				k.store(at, part)
+			}
+		}
+		k.move(outs, n*floats)
+		k.move(mix, n*floats)
+		k.count(n)
 	}
-	k.move(outs, floats)
-	k.move(mix, floats)
-	k.count(1)
-	k.jumpIfMore("frames")
+	k.label("fours")
+	k.jumpIfLess("rest", 4)
+	frames(4)
+	k.jump("fours")
+	k.label("rest")
+	k.jumpIfEqual("done", 0)
+	frames(1)
+	k.jump("rest")
+	k.label("done")
 	for i, name := range names {
 		k.store(mem{bank, "Bank_" + name, 0}, reg(i))
 	}

@@ -68,10 +68,9 @@ type machine interface {
 	jump(name string)
 	jumpIfLess(name string, frames int) // as are left
 	jumpIfEqual(name string, frames int)
-	jumpIfMore(name string) // after count
-	rewind(quads int)       // the lines, to so many quads before the first
-	advance(group int)      // to the next quad in the lines
-	count(frames int)       // as done
+	rewind(quads int)  // the lines, to so many quads before the first
+	advance(group int) // to the next quad in the lines
+	count(frames int)  // as done
 	point(to pointer, at mem)
 	move(p pointer, bytes int)
 	countSections()
@@ -88,6 +87,7 @@ type machine interface {
 	subD(d, a, b reg)
 	addDm(d, a reg, m mem)
 	mulDm(d, a reg, m mem)
+	subDm(d, a reg, m mem)
 	addBias(d, a reg)
 	widen(d, s reg, h half)
 	narrow(d, s, scratch reg, h half) // the other half of d stays

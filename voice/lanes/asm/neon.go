@@ -85,8 +85,6 @@ func (n neon) jumpIfEqual(name string, frames int) {
 	n.put("BEQ %s", name)
 }
 
-func (n neon) jumpIfMore(name string) { n.put("CBNZ R9, %s", name) }
-
 func (n neon) rewind(quads int)  { n.put("MOVD $%d, R8", -16*quads) }
 func (n neon) advance(group int) { n.put("ADD $%d, R8, R8", 4*group) }
 
@@ -160,6 +158,7 @@ func (n neon) addD(d, x, y reg)      { n.word(faddD, d, x, y) }
 func (n neon) subD(d, x, y reg)      { n.word(fsubD, d, x, y) }
 func (n neon) addDm(d, x reg, m mem) { n.wordM(faddD, d, x, m) }
 func (n neon) mulDm(d, x reg, m mem) { n.wordM(fmulD, d, x, m) }
+func (n neon) subDm(d, x reg, m mem) { n.wordM(fsubD, d, x, m) }
 func (n neon) addBias(d, x reg)      { n.word(faddF, d, x, biases) }
 
 func (n neon) widen(d, s reg, h half) {
