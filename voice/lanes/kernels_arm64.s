@@ -29,6 +29,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+24(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2
@@ -111,8 +113,6 @@ pass:
 	FMOVQ F2, 320(R4)
 	FMOVQ F3, 352(R4)
 	ADD $16, R8, R8
-
-groups:
 	CMP $4, R9
 	BLT rest
 	MOVD (Bench_source+0)(R7), R11
@@ -262,14 +262,193 @@ groups:
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
 	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
 	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
-	WORD $0x4e617808 // fcvtl2 v8.2d, v0.4s
-	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
-	WORD $0x4e617829 // fcvtl2 v9.2d, v1.4s
-	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
-	WORD $0x4e61784a // fcvtl2 v10.2d, v2.4s
-	WORD $0x0e617867 // fcvtl v7.2d, v3.2s
-	WORD $0x4e61786b // fcvtl2 v11.2d, v3.4s
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+
+groups:
+	CMP $4, R9
+	BLT last
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ 0(R14), F16
+	WORD $0x4e617a08 // fcvtl2 v8.2d, v16.4s
+	FMOVQ 32(R14), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ 32(R14), F16
+	WORD $0x4e617a09 // fcvtl2 v9.2d, v16.4s
+	FMOVQ 64(R14), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ 64(R14), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ 96(R14), F16
+	WORD $0x0e617a07 // fcvtl v7.2d, v16.2s
+	FMOVQ 96(R14), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_V1+0)(R1), F12
 	FMOVQ (Bank_V2+0)(R1), F13
 	FMOVQ (Bank_V1+16)(R1), F0
@@ -370,22 +549,152 @@ groups:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -32(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -32(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -32(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
+	FMOVQ F3, -32(R11)
 	ADD $128, R2, R2
 	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
 	JMP groups
+
+last:
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ 0(R14), F16
+	WORD $0x4e617a08 // fcvtl2 v8.2d, v16.4s
+	FMOVQ 32(R14), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ 32(R14), F16
+	WORD $0x4e617a09 // fcvtl2 v9.2d, v16.4s
+	FMOVQ 64(R14), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ 64(R14), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
+	FMOVQ 96(R14), F16
+	WORD $0x0e617a07 // fcvtl v7.2d, v16.2s
+	FMOVQ 96(R14), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_V1+0)(R1), F12
+	FMOVQ (Bank_V2+0)(R1), F13
+	FMOVQ (Bank_V1+16)(R1), F0
+	FMOVQ (Bank_V2+16)(R1), F1
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70ddae // fmul v14.2d, v13.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4ee2d508 // fsub v8.2d, v8.2d, v2.2d
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dd8e // fmul v14.2d, v12.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4ee2d529 // fsub v9.2d, v9.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc8e // fmul v14.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd02 // fmul v2.2d, v8.2d, v16.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4ee2d529 // fsub v9.2d, v9.2d, v2.2d
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc8e // fmul v14.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd02 // fmul v2.2d, v8.2d, v16.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4ee2d54a // fsub v10.2d, v10.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dcae // fmul v14.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd22 // fmul v2.2d, v9.2d, v16.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4ee2d54a // fsub v10.2d, v10.2d, v2.2d
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dcae // fmul v14.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd22 // fmul v2.2d, v9.2d, v16.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x4ee2d56b // fsub v11.2d, v11.2d, v2.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dcce // fmul v14.2d, v6.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd42 // fmul v2.2d, v10.2d, v16.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x4ee2d56b // fsub v11.2d, v11.2d, v2.2d
+	FMOVQ F7, (Bank_V1+0)(R1)
+	FMOVQ F6, (Bank_V2+0)(R1)
+	FMOVQ F11, (Bank_V1+16)(R1)
+	FMOVQ F10, (Bank_V2+16)(R1)
+	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
+	VMOV V15.D[0], V0.D[0]
+	WORD $0x4e616900 // fcvtn2 v0.4s, v8.2d
+	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
+	VMOV V15.D[0], V1.D[0]
+	WORD $0x4e616921 // fcvtn2 v1.4s, v9.2d
+	WORD $0x0e6168cf // fcvtn v15.2s, v6.2d
+	VMOV V15.D[0], V2.D[0]
+	WORD $0x4e616942 // fcvtn2 v2.4s, v10.2d
+	WORD $0x0e6168ef // fcvtn v15.2s, v7.2d
+	VMOV V15.D[0], V3.D[0]
+	WORD $0x4e616963 // fcvtn2 v3.4s, v11.2d
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, -16(R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, -16(R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, -16(R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 rest:
 	CMP $0, R9
@@ -463,8 +772,12 @@ rest:
 	FMOVQ 384(R4), F4
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
-	WORD $0x4e617808 // fcvtl2 v8.2d, v0.4s
+	FMOVQ F0, 0(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ 0(R14), F16
+	WORD $0x4e617a08 // fcvtl2 v8.2d, v16.4s
 	FMOVQ (Bank_V1+0)(R1), F12
 	FMOVQ (Bank_V2+0)(R1), F13
 	FMOVQ (Bank_V1+16)(R1), F0
@@ -505,16 +818,18 @@ rest:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 two:
@@ -613,10 +928,17 @@ two:
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
-	WORD $0x4e617808 // fcvtl2 v8.2d, v0.4s
-	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
-	WORD $0x4e617829 // fcvtl2 v9.2d, v1.4s
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ 0(R14), F16
+	WORD $0x4e617a08 // fcvtl2 v8.2d, v16.4s
+	FMOVQ 32(R14), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ 32(R14), F16
+	WORD $0x4e617a09 // fcvtl2 v9.2d, v16.4s
 	FMOVQ (Bank_V1+0)(R1), F12
 	FMOVQ (Bank_V2+0)(R1), F13
 	FMOVQ (Bank_V1+16)(R1), F0
@@ -677,16 +999,18 @@ two:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 three:
@@ -811,12 +1135,22 @@ three:
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
-	WORD $0x4e617808 // fcvtl2 v8.2d, v0.4s
-	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
-	WORD $0x4e617829 // fcvtl2 v9.2d, v1.4s
-	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
-	WORD $0x4e61784a // fcvtl2 v10.2d, v2.4s
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ 0(R14), F16
+	WORD $0x4e617a08 // fcvtl2 v8.2d, v16.4s
+	FMOVQ 32(R14), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ 32(R14), F16
+	WORD $0x4e617a09 // fcvtl2 v9.2d, v16.4s
+	FMOVQ 64(R14), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ 64(R14), F16
+	WORD $0x4e617a0a // fcvtl2 v10.2d, v16.4s
 	FMOVQ (Bank_V1+0)(R1), F12
 	FMOVQ (Bank_V2+0)(R1), F13
 	FMOVQ (Bank_V1+16)(R1), F0
@@ -897,16 +1231,18 @@ three:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 done:
 	ADD $16, R12, R12
@@ -928,6 +1264,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+24(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2
@@ -1010,8 +1348,6 @@ pass:
 	FMOVQ F2, 320(R4)
 	FMOVQ F3, 352(R4)
 	ADD $16, R8, R8
-
-groups:
 	CMP $4, R9
 	BLT rest
 	MOVD (Bench_source+0)(R7), R11
@@ -1161,17 +1497,184 @@ groups:
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
 	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
 	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ F2, (Bench_read+64)(R13)
-	FMOVQ F3, (Bench_read+96)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+
+groups:
+	CMP $4, R9
+	BLT last
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -1185,9 +1688,9 @@ groups:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -1201,9 +1704,9 @@ groups:
 	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
 	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
 	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
@@ -1217,9 +1720,9 @@ groups:
 	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
 	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
 	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
-	FMOVQ (Bench_read+96)(R13), F16
+	FMOVQ 96(R14), F16
 	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
-	FMOVQ (Bench_read+96)(R13), F16
+	FMOVQ 96(R14), F16
 	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
@@ -1441,22 +1944,312 @@ groups:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -32(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -32(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -32(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
+	FMOVQ F3, -32(R11)
 	ADD $128, R2, R2
 	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
 	JMP groups
+
+last:
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
+	FMOVQ 0(R14), F16
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
+	FMOVQ 0(R14), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ 32(R14), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ 32(R14), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ 64(R14), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ 64(R14), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ 96(R14), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ 96(R14), F16
+	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dca2 // fmul v2.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70ddaa // fmul v10.2d, v13.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+16)(R1), F8
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4ee7d467 // fsub v7.2d, v3.2d, v7.2d
+	WORD $0x4eefd56f // fsub v15.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e1 // fadd v1.2d, v7.2d, v0.2d
+	WORD $0x4e68d5e9 // fadd v9.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc67 // fmul v7.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6f // fmul v15.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc20 // fmul v0.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd28 // fmul v8.2d, v9.2d, v16.2d
+	WORD $0x4ee7d487 // fsub v7.2d, v4.2d, v7.2d
+	WORD $0x4eefd58f // fsub v15.2d, v12.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e2 // fadd v2.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ea // fadd v10.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc87 // fmul v7.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8f // fmul v15.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc40 // fmul v0.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd48 // fmul v8.2d, v10.2d, v16.2d
+	WORD $0x4ee7d4a7 // fsub v7.2d, v5.2d, v7.2d
+	WORD $0x4eefd5af // fsub v15.2d, v13.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e3 // fadd v3.2d, v7.2d, v0.2d
+	WORD $0x4e68d5eb // fadd v11.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca7 // fmul v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc60 // fmul v0.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd68 // fmul v8.2d, v11.2d, v16.2d
+	WORD $0x4ee7d4c7 // fsub v7.2d, v6.2d, v7.2d
+	WORD $0x4eefd5cf // fsub v15.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e4 // fadd v4.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ec // fadd v12.2d, v15.2d, v8.2d
+	FMOVQ F5, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_V2+16)(R1)
+	FMOVQ F6, (Bank_V1+0)(R1)
+	FMOVQ F14, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+64)(R1)
+	FMOVQ F11, (Bank_Node+80)(R1)
+	FMOVQ F4, (Bank_Node+0)(R1)
+	FMOVQ F12, (Bank_Node+16)(R1)
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F9, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	WORD $0x0e6168e5 // fcvtn v5.2s, v7.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e6169ed // fcvtn v13.2s, v15.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616805 // fcvtn v5.2s, v0.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61690d // fcvtn v13.2s, v8.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
+	WORD $0x0e616825 // fcvtn v5.2s, v1.2d
+	FMOVD F5, (Bench_filtered+64)(R13)
+	WORD $0x0e61692d // fcvtn v13.2s, v9.2d
+	FMOVD F13, (Bench_filtered+72)(R13)
+	WORD $0x0e616845 // fcvtn v5.2s, v2.2d
+	FMOVD F5, (Bench_filtered+96)(R13)
+	WORD $0x0e61694d // fcvtn v13.2s, v10.2d
+	FMOVD F13, (Bench_filtered+104)(R13)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bench_filtered+96)(R13), F3
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, -16(R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, -16(R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, -16(R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 rest:
 	CMP $0, R9
@@ -1534,14 +2327,15 @@ rest:
 	FMOVQ 384(R4), F4
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F0, 0(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -1639,16 +2433,18 @@ rest:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 two:
@@ -1747,15 +2543,16 @@ two:
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -1769,9 +2566,9 @@ two:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -1909,16 +2706,18 @@ two:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 three:
@@ -2043,16 +2842,17 @@ three:
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -2066,9 +2866,9 @@ three:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -2082,9 +2882,9 @@ three:
 	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
 	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
 	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
@@ -2264,16 +3064,18 @@ three:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 done:
 	ADD $16, R12, R12
@@ -2295,6 +3097,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+24(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2
@@ -2377,8 +3181,6 @@ pass:
 	FMOVQ F2, 320(R4)
 	FMOVQ F3, 352(R4)
 	ADD $16, R8, R8
-
-groups:
 	CMP $4, R9
 	BLT rest
 	MOVD (Bench_source+0)(R7), R11
@@ -2528,17 +3330,184 @@ groups:
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
 	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
 	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ F2, (Bench_read+64)(R13)
-	FMOVQ F3, (Bench_read+96)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+
+groups:
+	CMP $4, R9
+	BLT last
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -2552,9 +3521,9 @@ groups:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -2568,9 +3537,9 @@ groups:
 	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
 	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
 	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
@@ -2584,9 +3553,9 @@ groups:
 	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
 	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
 	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
-	FMOVQ (Bench_read+96)(R13), F16
+	FMOVQ 96(R14), F16
 	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
-	FMOVQ (Bench_read+96)(R13), F16
+	FMOVQ 96(R14), F16
 	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
@@ -2888,22 +3857,392 @@ groups:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -32(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -32(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -32(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
+	FMOVQ F3, -32(R11)
 	ADD $128, R2, R2
 	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
 	JMP groups
+
+last:
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
+	FMOVQ 0(R14), F16
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
+	FMOVQ 0(R14), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ 32(R14), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ 32(R14), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ 64(R14), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ 64(R14), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ 96(R14), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ 96(R14), F16
+	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dca2 // fmul v2.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70ddaa // fmul v10.2d, v13.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+16)(R1), F8
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4ee7d467 // fsub v7.2d, v3.2d, v7.2d
+	WORD $0x4eefd56f // fsub v15.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e1 // fadd v1.2d, v7.2d, v0.2d
+	WORD $0x4e68d5e9 // fadd v9.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc67 // fmul v7.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6f // fmul v15.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc20 // fmul v0.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd28 // fmul v8.2d, v9.2d, v16.2d
+	WORD $0x4ee7d487 // fsub v7.2d, v4.2d, v7.2d
+	WORD $0x4eefd58f // fsub v15.2d, v12.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e2 // fadd v2.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ea // fadd v10.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc87 // fmul v7.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8f // fmul v15.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc40 // fmul v0.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd48 // fmul v8.2d, v10.2d, v16.2d
+	WORD $0x4ee7d4a7 // fsub v7.2d, v5.2d, v7.2d
+	WORD $0x4eefd5af // fsub v15.2d, v13.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e3 // fadd v3.2d, v7.2d, v0.2d
+	WORD $0x4e68d5eb // fadd v11.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca7 // fmul v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc60 // fmul v0.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd68 // fmul v8.2d, v11.2d, v16.2d
+	WORD $0x4ee7d4c7 // fsub v7.2d, v6.2d, v7.2d
+	WORD $0x4eefd5cf // fsub v15.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e4 // fadd v4.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ec // fadd v12.2d, v15.2d, v8.2d
+	FMOVQ F5, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_V2+16)(R1)
+	FMOVQ F6, (Bank_V1+0)(R1)
+	FMOVQ F14, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+64)(R1)
+	FMOVQ F11, (Bank_Node+80)(R1)
+	FMOVQ F4, (Bank_Node+0)(R1)
+	FMOVQ F12, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F6
+	FMOVQ (Bank_Node+144)(R1), F14
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d4e5 // fsub v5.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d5ed // fsub v13.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d405 // fsub v5.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d50d // fsub v13.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	WORD $0x4ee4d406 // fsub v6.2d, v0.2d, v4.2d
+	WORD $0x4eecd50e // fsub v14.2d, v8.2d, v12.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c6 // fadd v6.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ce // fadd v14.2d, v14.2d, v15.2d
+	WORD $0x4ee3d425 // fsub v5.2d, v1.2d, v3.2d
+	WORD $0x4eebd52d // fsub v13.2d, v9.2d, v11.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d4c6 // fadd v6.2d, v6.2d, v0.2d
+	WORD $0x4e68d5ce // fadd v14.2d, v14.2d, v8.2d
+	WORD $0x4ee4d445 // fsub v5.2d, v2.2d, v4.2d
+	WORD $0x4eecd54d // fsub v13.2d, v10.2d, v12.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F9, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	FMOVQ F7, (Bank_Node+320)(R1)
+	FMOVQ F15, (Bank_Node+336)(R1)
+	FMOVQ F0, (Bank_Node+256)(R1)
+	FMOVQ F8, (Bank_Node+272)(R1)
+	WORD $0x0e616865 // fcvtn v5.2s, v3.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e61696d // fcvtn v13.2s, v11.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616885 // fcvtn v5.2s, v4.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61698d // fcvtn v13.2s, v12.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
+	WORD $0x0e6168e5 // fcvtn v5.2s, v7.2d
+	FMOVD F5, (Bench_filtered+64)(R13)
+	WORD $0x0e6169ed // fcvtn v13.2s, v15.2d
+	FMOVD F13, (Bench_filtered+72)(R13)
+	WORD $0x0e616805 // fcvtn v5.2s, v0.2d
+	FMOVD F5, (Bench_filtered+96)(R13)
+	WORD $0x0e61690d // fcvtn v13.2s, v8.2d
+	FMOVD F13, (Bench_filtered+104)(R13)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bench_filtered+96)(R13), F3
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, -16(R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, -16(R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, -16(R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 rest:
 	CMP $0, R9
@@ -2981,14 +4320,15 @@ rest:
 	FMOVQ 384(R4), F4
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F0, 0(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -3116,16 +4456,18 @@ rest:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 two:
@@ -3224,15 +4566,16 @@ two:
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -3246,9 +4589,9 @@ two:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -3434,16 +4777,18 @@ two:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 three:
@@ -3568,16 +4913,17 @@ three:
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -3591,9 +4937,9 @@ three:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -3607,9 +4953,9 @@ three:
 	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
 	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
 	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
@@ -3853,16 +5199,18 @@ three:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 done:
 	ADD $16, R12, R12
@@ -3884,6 +5232,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+24(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2
@@ -3966,8 +5316,6 @@ pass:
 	FMOVQ F2, 320(R4)
 	FMOVQ F3, 352(R4)
 	ADD $16, R8, R8
-
-groups:
 	CMP $4, R9
 	BLT rest
 	MOVD (Bench_source+0)(R7), R11
@@ -4117,17 +5465,184 @@ groups:
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
 	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
 	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ F2, (Bench_read+64)(R13)
-	FMOVQ F3, (Bench_read+96)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+
+groups:
+	CMP $4, R9
+	BLT last
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -4141,9 +5656,9 @@ groups:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -4157,9 +5672,9 @@ groups:
 	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
 	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
 	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
@@ -4173,9 +5688,9 @@ groups:
 	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
 	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
 	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
-	FMOVQ (Bench_read+96)(R13), F16
+	FMOVQ 96(R14), F16
 	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
-	FMOVQ (Bench_read+96)(R13), F16
+	FMOVQ 96(R14), F16
 	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
@@ -4557,22 +6072,472 @@ groups:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -32(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -32(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -32(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
+	FMOVQ F3, -32(R11)
 	ADD $128, R2, R2
 	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
 	JMP groups
+
+last:
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
+	FMOVQ 0(R14), F16
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
+	FMOVQ 0(R14), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ 32(R14), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ 32(R14), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ 64(R14), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ 64(R14), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ 96(R14), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ 96(R14), F16
+	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dca2 // fmul v2.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70ddaa // fmul v10.2d, v13.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+16)(R1), F8
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4ee7d467 // fsub v7.2d, v3.2d, v7.2d
+	WORD $0x4eefd56f // fsub v15.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e1 // fadd v1.2d, v7.2d, v0.2d
+	WORD $0x4e68d5e9 // fadd v9.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc67 // fmul v7.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6f // fmul v15.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc20 // fmul v0.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd28 // fmul v8.2d, v9.2d, v16.2d
+	WORD $0x4ee7d487 // fsub v7.2d, v4.2d, v7.2d
+	WORD $0x4eefd58f // fsub v15.2d, v12.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e2 // fadd v2.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ea // fadd v10.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc87 // fmul v7.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8f // fmul v15.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc40 // fmul v0.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd48 // fmul v8.2d, v10.2d, v16.2d
+	WORD $0x4ee7d4a7 // fsub v7.2d, v5.2d, v7.2d
+	WORD $0x4eefd5af // fsub v15.2d, v13.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e3 // fadd v3.2d, v7.2d, v0.2d
+	WORD $0x4e68d5eb // fadd v11.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca7 // fmul v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc60 // fmul v0.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd68 // fmul v8.2d, v11.2d, v16.2d
+	WORD $0x4ee7d4c7 // fsub v7.2d, v6.2d, v7.2d
+	WORD $0x4eefd5cf // fsub v15.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e4 // fadd v4.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ec // fadd v12.2d, v15.2d, v8.2d
+	FMOVQ F5, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_V2+16)(R1)
+	FMOVQ F6, (Bank_V1+0)(R1)
+	FMOVQ F14, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+64)(R1)
+	FMOVQ F11, (Bank_Node+80)(R1)
+	FMOVQ F4, (Bank_Node+0)(R1)
+	FMOVQ F12, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F6
+	FMOVQ (Bank_Node+144)(R1), F14
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d4e5 // fsub v5.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d5ed // fsub v13.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d405 // fsub v5.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d50d // fsub v13.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	WORD $0x4ee4d406 // fsub v6.2d, v0.2d, v4.2d
+	WORD $0x4eecd50e // fsub v14.2d, v8.2d, v12.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c6 // fadd v6.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ce // fadd v14.2d, v14.2d, v15.2d
+	WORD $0x4ee3d425 // fsub v5.2d, v1.2d, v3.2d
+	WORD $0x4eebd52d // fsub v13.2d, v9.2d, v11.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d4c6 // fadd v6.2d, v6.2d, v0.2d
+	WORD $0x4e68d5ce // fadd v14.2d, v14.2d, v8.2d
+	WORD $0x4ee4d445 // fsub v5.2d, v2.2d, v4.2d
+	WORD $0x4eecd54d // fsub v13.2d, v10.2d, v12.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F9, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F6
+	FMOVQ (Bank_Node+272)(R1), F14
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d465 // fsub v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d56d // fsub v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d485 // fsub v5.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d58d // fsub v13.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	WORD $0x4ee2d486 // fsub v6.2d, v4.2d, v2.2d
+	WORD $0x4eead58e // fsub v14.2d, v12.2d, v10.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d4c6 // fadd v6.2d, v6.2d, v3.2d
+	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
+	WORD $0x4ee1d4e5 // fsub v5.2d, v7.2d, v1.2d
+	WORD $0x4ee9d5ed // fsub v13.2d, v15.2d, v9.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d4c6 // fadd v6.2d, v6.2d, v4.2d
+	WORD $0x4e6cd5ce // fadd v14.2d, v14.2d, v12.2d
+	WORD $0x4ee2d405 // fsub v5.2d, v0.2d, v2.2d
+	WORD $0x4eead50d // fsub v13.2d, v8.2d, v10.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	FMOVQ F7, (Bank_Node+320)(R1)
+	FMOVQ F15, (Bank_Node+336)(R1)
+	FMOVQ F0, (Bank_Node+256)(R1)
+	FMOVQ F8, (Bank_Node+272)(R1)
+	FMOVQ F3, (Bank_Node+448)(R1)
+	FMOVQ F11, (Bank_Node+464)(R1)
+	FMOVQ F4, (Bank_Node+384)(R1)
+	FMOVQ F12, (Bank_Node+400)(R1)
+	WORD $0x0e616825 // fcvtn v5.2s, v1.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e61692d // fcvtn v13.2s, v9.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616845 // fcvtn v5.2s, v2.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61694d // fcvtn v13.2s, v10.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
+	WORD $0x0e616865 // fcvtn v5.2s, v3.2d
+	FMOVD F5, (Bench_filtered+64)(R13)
+	WORD $0x0e61696d // fcvtn v13.2s, v11.2d
+	FMOVD F13, (Bench_filtered+72)(R13)
+	WORD $0x0e616885 // fcvtn v5.2s, v4.2d
+	FMOVD F5, (Bench_filtered+96)(R13)
+	WORD $0x0e61698d // fcvtn v13.2s, v12.2d
+	FMOVD F13, (Bench_filtered+104)(R13)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bench_filtered+96)(R13), F3
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, -16(R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, -16(R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, -16(R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 rest:
 	CMP $0, R9
@@ -4650,14 +6615,15 @@ rest:
 	FMOVQ 384(R4), F4
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F0, 0(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -4815,16 +6781,18 @@ rest:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 two:
@@ -4923,15 +6891,16 @@ two:
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -4945,9 +6914,9 @@ two:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -5181,16 +7150,18 @@ two:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 three:
@@ -5315,16 +7286,17 @@ three:
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -5338,9 +7310,9 @@ three:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -5354,9 +7326,9 @@ three:
 	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
 	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
 	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
@@ -5664,16 +7636,18 @@ three:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 done:
 	ADD $16, R12, R12
@@ -5695,6 +7669,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+24(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2
@@ -5777,8 +7753,6 @@ pass:
 	FMOVQ F2, 320(R4)
 	FMOVQ F3, 352(R4)
 	ADD $16, R8, R8
-
-groups:
 	CMP $4, R9
 	BLT rest
 	MOVD (Bench_source+0)(R7), R11
@@ -5928,17 +7902,184 @@ groups:
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
 	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
 	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ F2, (Bench_read+64)(R13)
-	FMOVQ F3, (Bench_read+96)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+
+groups:
+	CMP $4, R9
+	BLT last
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -5952,9 +8093,9 @@ groups:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -5968,9 +8109,9 @@ groups:
 	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
 	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
 	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
@@ -5984,9 +8125,9 @@ groups:
 	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
 	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
 	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
-	FMOVQ (Bench_read+96)(R13), F16
+	FMOVQ 96(R14), F16
 	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
-	FMOVQ (Bench_read+96)(R13), F16
+	FMOVQ 96(R14), F16
 	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
@@ -6448,22 +8589,552 @@ groups:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -32(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -32(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -32(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
+	FMOVQ F3, -32(R11)
 	ADD $128, R2, R2
 	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
 	JMP groups
+
+last:
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ (Bank_V1+0)(R1), F0
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F1
+	FMOVQ (Bank_V2+16)(R1), F9
+	FMOVQ 0(R14), F16
+	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
+	FMOVQ 0(R14), F16
+	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd2a // fmul v10.2d, v9.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
+	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
+	FMOVQ 32(R14), F16
+	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
+	FMOVQ 32(R14), F16
+	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
+	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
+	FMOVQ 64(R14), F16
+	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
+	FMOVQ 64(R14), F16
+	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4a5 // fsub v5.2d, v5.2d, v2.2d
+	WORD $0x4eead5ad // fsub v13.2d, v13.2d, v10.2d
+	FMOVQ 96(R14), F16
+	WORD $0x0e617a06 // fcvtl v6.2d, v16.2s
+	FMOVQ 96(R14), F16
+	WORD $0x4e617a0e // fcvtl2 v14.2d, v16.4s
+	FMOVQ (Bank_C2+0)(R1), F16
+	WORD $0x6e70dc82 // fmul v2.2d, v4.2d, v16.2d
+	FMOVQ (Bank_C2+16)(R1), F16
+	WORD $0x6e70dd8a // fmul v10.2d, v12.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_C1+0)(R1), F16
+	WORD $0x6e70dca2 // fmul v2.2d, v5.2d, v16.2d
+	FMOVQ (Bank_C1+16)(R1), F16
+	WORD $0x6e70ddaa // fmul v10.2d, v13.2d, v16.2d
+	WORD $0x4ee2d4c6 // fsub v6.2d, v6.2d, v2.2d
+	WORD $0x4eead5ce // fsub v14.2d, v14.2d, v10.2d
+	FMOVQ (Bank_V1+0)(R1), F7
+	FMOVQ (Bank_V1+16)(R1), F15
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F0
+	FMOVQ (Bank_Node+16)(R1), F8
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc00 // fmul v0.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd08 // fmul v8.2d, v8.2d, v16.2d
+	WORD $0x4ee7d467 // fsub v7.2d, v3.2d, v7.2d
+	WORD $0x4eefd56f // fsub v15.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e1 // fadd v1.2d, v7.2d, v0.2d
+	WORD $0x4e68d5e9 // fadd v9.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc67 // fmul v7.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd6f // fmul v15.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc20 // fmul v0.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd28 // fmul v8.2d, v9.2d, v16.2d
+	WORD $0x4ee7d487 // fsub v7.2d, v4.2d, v7.2d
+	WORD $0x4eefd58f // fsub v15.2d, v12.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e2 // fadd v2.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ea // fadd v10.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dc87 // fmul v7.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70dd8f // fmul v15.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc40 // fmul v0.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd48 // fmul v8.2d, v10.2d, v16.2d
+	WORD $0x4ee7d4a7 // fsub v7.2d, v5.2d, v7.2d
+	WORD $0x4eefd5af // fsub v15.2d, v13.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e3 // fadd v3.2d, v7.2d, v0.2d
+	WORD $0x4e68d5eb // fadd v11.2d, v15.2d, v8.2d
+	FMOVQ (Bank_Zero+0)(R1), F16
+	WORD $0x6e70dca7 // fmul v7.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Zero+16)(R1), F16
+	WORD $0x6e70ddaf // fmul v15.2d, v13.2d, v16.2d
+	FMOVQ (Bank_Pole+0)(R1), F16
+	WORD $0x6e70dc60 // fmul v0.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Pole+16)(R1), F16
+	WORD $0x6e70dd68 // fmul v8.2d, v11.2d, v16.2d
+	WORD $0x4ee7d4c7 // fsub v7.2d, v6.2d, v7.2d
+	WORD $0x4eefd5cf // fsub v15.2d, v14.2d, v15.2d
+	FMOVQ (Bank_Gain+0)(R1), F16
+	WORD $0x6e70dce7 // fmul v7.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Gain+16)(R1), F16
+	WORD $0x6e70ddef // fmul v15.2d, v15.2d, v16.2d
+	WORD $0x4e60d4e4 // fadd v4.2d, v7.2d, v0.2d
+	WORD $0x4e68d5ec // fadd v12.2d, v15.2d, v8.2d
+	FMOVQ F5, (Bank_V2+0)(R1)
+	FMOVQ F13, (Bank_V2+16)(R1)
+	FMOVQ F6, (Bank_V1+0)(R1)
+	FMOVQ F14, (Bank_V1+16)(R1)
+	FMOVQ (Bank_Node+0)(R1), F6
+	FMOVQ (Bank_Node+16)(R1), F14
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+64)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+80)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+0)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+16)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+0)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+16)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+64)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+80)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+64)(R1)
+	FMOVQ F11, (Bank_Node+80)(R1)
+	FMOVQ F4, (Bank_Node+0)(R1)
+	FMOVQ F12, (Bank_Node+16)(R1)
+	FMOVQ (Bank_Node+128)(R1), F6
+	FMOVQ (Bank_Node+144)(R1), F14
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+192)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+208)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4ef0d4e5 // fsub v5.2d, v7.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4ef0d5ed // fsub v13.2d, v15.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+128)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+144)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4ef0d405 // fsub v5.2d, v0.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4ef0d50d // fsub v13.2d, v8.2d, v16.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	WORD $0x4ee4d406 // fsub v6.2d, v0.2d, v4.2d
+	WORD $0x4eecd50e // fsub v14.2d, v8.2d, v12.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e67d4c6 // fadd v6.2d, v6.2d, v7.2d
+	WORD $0x4e6fd5ce // fadd v14.2d, v14.2d, v15.2d
+	WORD $0x4ee3d425 // fsub v5.2d, v1.2d, v3.2d
+	WORD $0x4eebd52d // fsub v13.2d, v9.2d, v11.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+256)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+272)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e60d4c6 // fadd v6.2d, v6.2d, v0.2d
+	WORD $0x4e68d5ce // fadd v14.2d, v14.2d, v8.2d
+	WORD $0x4ee4d445 // fsub v5.2d, v2.2d, v4.2d
+	WORD $0x4eecd54d // fsub v13.2d, v10.2d, v12.2d
+	FMOVQ (Bank_Section+320)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+336)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	FMOVQ F1, (Bank_Node+192)(R1)
+	FMOVQ F9, (Bank_Node+208)(R1)
+	FMOVQ F2, (Bank_Node+128)(R1)
+	FMOVQ F10, (Bank_Node+144)(R1)
+	FMOVQ (Bank_Node+256)(R1), F6
+	FMOVQ (Bank_Node+272)(R1), F14
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+320)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+336)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4ef0d465 // fsub v5.2d, v3.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4ef0d56d // fsub v13.2d, v11.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+256)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+272)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4ef0d485 // fsub v5.2d, v4.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4ef0d58d // fsub v13.2d, v12.2d, v16.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	WORD $0x4ee2d486 // fsub v6.2d, v4.2d, v2.2d
+	WORD $0x4eead58e // fsub v14.2d, v12.2d, v10.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e63d4c6 // fadd v6.2d, v6.2d, v3.2d
+	WORD $0x4e6bd5ce // fadd v14.2d, v14.2d, v11.2d
+	WORD $0x4ee1d4e5 // fsub v5.2d, v7.2d, v1.2d
+	WORD $0x4ee9d5ed // fsub v13.2d, v15.2d, v9.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a3 // fadd v3.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ab // fadd v11.2d, v13.2d, v14.2d
+	WORD $0x4ee3d4e6 // fsub v6.2d, v7.2d, v3.2d
+	WORD $0x4eebd5ee // fsub v14.2d, v15.2d, v11.2d
+	FMOVQ (Bank_Section+512)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+528)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e64d4c6 // fadd v6.2d, v6.2d, v4.2d
+	WORD $0x4e6cd5ce // fadd v14.2d, v14.2d, v12.2d
+	WORD $0x4ee2d405 // fsub v5.2d, v0.2d, v2.2d
+	WORD $0x4eead50d // fsub v13.2d, v8.2d, v10.2d
+	FMOVQ (Bank_Section+576)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+592)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a4 // fadd v4.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5ac // fadd v12.2d, v13.2d, v14.2d
+	FMOVQ F7, (Bank_Node+320)(R1)
+	FMOVQ F15, (Bank_Node+336)(R1)
+	FMOVQ F0, (Bank_Node+256)(R1)
+	FMOVQ F8, (Bank_Node+272)(R1)
+	FMOVQ (Bank_Node+384)(R1), F6
+	FMOVQ (Bank_Node+400)(R1), F14
+	FMOVQ (Bank_Node+512)(R1), F16
+	WORD $0x4ef0d4c6 // fsub v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+528)(R1), F16
+	WORD $0x4ef0d5ce // fsub v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+448)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+464)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+576)(R1), F16
+	WORD $0x4ef0d425 // fsub v5.2d, v1.2d, v16.2d
+	FMOVQ (Bank_Node+592)(R1), F16
+	WORD $0x4ef0d52d // fsub v13.2d, v9.2d, v16.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a7 // fadd v7.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5af // fadd v15.2d, v13.2d, v14.2d
+	WORD $0x4ee7d426 // fsub v6.2d, v1.2d, v7.2d
+	WORD $0x4eefd52e // fsub v14.2d, v9.2d, v15.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+384)(R1), F16
+	WORD $0x4e70d4c6 // fadd v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Node+400)(R1), F16
+	WORD $0x4e70d5ce // fadd v14.2d, v14.2d, v16.2d
+	FMOVQ (Bank_Node+512)(R1), F16
+	WORD $0x4ef0d445 // fsub v5.2d, v2.2d, v16.2d
+	FMOVQ (Bank_Node+528)(R1), F16
+	WORD $0x4ef0d54d // fsub v13.2d, v10.2d, v16.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a0 // fadd v0.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a8 // fadd v8.2d, v13.2d, v14.2d
+	WORD $0x4ee0d446 // fsub v6.2d, v2.2d, v0.2d
+	WORD $0x4ee8d54e // fsub v14.2d, v10.2d, v8.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e61d4c6 // fadd v6.2d, v6.2d, v1.2d
+	WORD $0x4e69d5ce // fadd v14.2d, v14.2d, v9.2d
+	WORD $0x4ee7d465 // fsub v5.2d, v3.2d, v7.2d
+	WORD $0x4eefd56d // fsub v13.2d, v11.2d, v15.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a1 // fadd v1.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5a9 // fadd v9.2d, v13.2d, v14.2d
+	WORD $0x4ee1d466 // fsub v6.2d, v3.2d, v1.2d
+	WORD $0x4ee9d56e // fsub v14.2d, v11.2d, v9.2d
+	FMOVQ (Bank_Section+768)(R1), F16
+	WORD $0x6e70dcc6 // fmul v6.2d, v6.2d, v16.2d
+	FMOVQ (Bank_Section+784)(R1), F16
+	WORD $0x6e70ddce // fmul v14.2d, v14.2d, v16.2d
+	WORD $0x4e62d4c6 // fadd v6.2d, v6.2d, v2.2d
+	WORD $0x4e6ad5ce // fadd v14.2d, v14.2d, v10.2d
+	WORD $0x4ee0d485 // fsub v5.2d, v4.2d, v0.2d
+	WORD $0x4ee8d58d // fsub v13.2d, v12.2d, v8.2d
+	FMOVQ (Bank_Section+832)(R1), F16
+	WORD $0x6e70dca5 // fmul v5.2d, v5.2d, v16.2d
+	FMOVQ (Bank_Section+848)(R1), F16
+	WORD $0x6e70ddad // fmul v13.2d, v13.2d, v16.2d
+	WORD $0x4e66d4a2 // fadd v2.2d, v5.2d, v6.2d
+	WORD $0x4e6ed5aa // fadd v10.2d, v13.2d, v14.2d
+	FMOVQ F3, (Bank_Node+448)(R1)
+	FMOVQ F11, (Bank_Node+464)(R1)
+	FMOVQ F4, (Bank_Node+384)(R1)
+	FMOVQ F12, (Bank_Node+400)(R1)
+	FMOVQ F1, (Bank_Node+576)(R1)
+	FMOVQ F9, (Bank_Node+592)(R1)
+	FMOVQ F2, (Bank_Node+512)(R1)
+	FMOVQ F10, (Bank_Node+528)(R1)
+	WORD $0x0e6168e5 // fcvtn v5.2s, v7.2d
+	FMOVD F5, (Bench_filtered+0)(R13)
+	WORD $0x0e6169ed // fcvtn v13.2s, v15.2d
+	FMOVD F13, (Bench_filtered+8)(R13)
+	WORD $0x0e616805 // fcvtn v5.2s, v0.2d
+	FMOVD F5, (Bench_filtered+32)(R13)
+	WORD $0x0e61690d // fcvtn v13.2s, v8.2d
+	FMOVD F13, (Bench_filtered+40)(R13)
+	WORD $0x0e616825 // fcvtn v5.2s, v1.2d
+	FMOVD F5, (Bench_filtered+64)(R13)
+	WORD $0x0e61692d // fcvtn v13.2s, v9.2d
+	FMOVD F13, (Bench_filtered+72)(R13)
+	WORD $0x0e616845 // fcvtn v5.2s, v2.2d
+	FMOVD F5, (Bench_filtered+96)(R13)
+	WORD $0x0e61694d // fcvtn v13.2s, v10.2d
+	FMOVD F13, (Bench_filtered+104)(R13)
+	FMOVQ (Bench_filtered+0)(R13), F0
+	FMOVQ (Bench_filtered+32)(R13), F1
+	FMOVQ (Bench_filtered+64)(R13), F2
+	FMOVQ (Bench_filtered+96)(R13), F3
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, -16(R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, -16(R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, -16(R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 rest:
 	CMP $0, R9
@@ -6541,14 +9212,15 @@ rest:
 	FMOVQ 384(R4), F4
 	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
-	FMOVQ F0, (Bench_read+0)(R13)
+	FMOVQ F0, 0(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -6736,16 +9408,18 @@ rest:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 two:
@@ -6844,15 +9518,16 @@ two:
 	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
 	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -6866,9 +9541,9 @@ two:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -7150,16 +9825,18 @@ two:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 three:
@@ -7284,16 +9961,17 @@ three:
 	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
 	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
 	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
-	FMOVQ F0, (Bench_read+0)(R13)
-	FMOVQ F1, (Bench_read+32)(R13)
-	FMOVQ F2, (Bench_read+64)(R13)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	ADD $16, R8, R8
 	FMOVQ (Bank_V1+0)(R1), F0
 	FMOVQ (Bank_V1+16)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F1
 	FMOVQ (Bank_V2+16)(R1), F9
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x0e617a03 // fcvtl v3.2d, v16.2s
-	FMOVQ (Bench_read+0)(R13), F16
+	FMOVQ 0(R14), F16
 	WORD $0x4e617a0b // fcvtl2 v11.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc22 // fmul v2.2d, v1.2d, v16.2d
@@ -7307,9 +9985,9 @@ three:
 	WORD $0x6e70dd0a // fmul v10.2d, v8.2d, v16.2d
 	WORD $0x4ee2d463 // fsub v3.2d, v3.2d, v2.2d
 	WORD $0x4eead56b // fsub v11.2d, v11.2d, v10.2d
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x0e617a04 // fcvtl v4.2d, v16.2s
-	FMOVQ (Bench_read+32)(R13), F16
+	FMOVQ 32(R14), F16
 	WORD $0x4e617a0c // fcvtl2 v12.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc02 // fmul v2.2d, v0.2d, v16.2d
@@ -7323,9 +10001,9 @@ three:
 	WORD $0x6e70dd6a // fmul v10.2d, v11.2d, v16.2d
 	WORD $0x4ee2d484 // fsub v4.2d, v4.2d, v2.2d
 	WORD $0x4eead58c // fsub v12.2d, v12.2d, v10.2d
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x0e617a05 // fcvtl v5.2d, v16.2s
-	FMOVQ (Bench_read+64)(R13), F16
+	FMOVQ 64(R14), F16
 	WORD $0x4e617a0d // fcvtl2 v13.2d, v16.4s
 	FMOVQ (Bank_C2+0)(R1), F16
 	WORD $0x6e70dc62 // fmul v2.2d, v3.2d, v16.2d
@@ -7697,16 +10375,18 @@ three:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 done:
 	ADD $16, R12, R12
@@ -7728,6 +10408,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+24(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2
@@ -7810,8 +10492,6 @@ pass:
 	FMOVQ F2, 320(R4)
 	FMOVQ F3, 352(R4)
 	ADD $16, R8, R8
-
-groups:
 	CMP $4, R9
 	BLT rest
 	MOVD (Bench_source+0)(R7), R11
@@ -7972,6 +10652,192 @@ groups:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc63 // fmul v3.4s, v3.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+
+groups:
+	CMP $4, R9
+	BLT last
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Level+0)(R0), F8
+	FMOVQ (Bank_DLevel+0)(R0), F9
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc00 // fmul v0.4s, v0.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc21 // fmul v1.4s, v1.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc42 // fmul v2.4s, v2.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc63 // fmul v3.4s, v3.4s, v8.4s
+	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
+	FMOVQ 96(R14), F3
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
@@ -8092,22 +10958,160 @@ groups:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -32(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -32(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -32(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
+	FMOVQ F3, -32(R11)
 	ADD $128, R2, R2
 	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
 	JMP groups
+
+last:
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
+	FMOVQ 96(R14), F3
+	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
+	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
+	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
+	WORD $0x0e617867 // fcvtl v7.2d, v3.2s
+	FMOVQ (Bank_V1+0)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F9
+	FMOVQ (Bank_C1+0)(R1), F10
+	FMOVQ (Bank_C2+0)(R1), F11
+	FMOVQ (Bank_DC1+0)(R1), F12
+	FMOVQ (Bank_DC2+0)(R1), F13
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	FMOVQ F7, (Bank_V1+0)(R1)
+	FMOVQ F6, (Bank_V2+0)(R1)
+	FMOVQ F10, (Bank_C1+0)(R1)
+	FMOVQ F11, (Bank_C2+0)(R1)
+	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
+	VMOV V15.D[0], V0.D[0]
+	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
+	VMOV V15.D[0], V1.D[0]
+	WORD $0x0e6168cf // fcvtn v15.2s, v6.2d
+	VMOV V15.D[0], V2.D[0]
+	WORD $0x0e6168ef // fcvtn v15.2s, v7.2d
+	VMOV V15.D[0], V3.D[0]
+	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
+	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
+	WORD $0x4e617846 // fcvtl2 v6.2d, v2.4s
+	WORD $0x4e617867 // fcvtl2 v7.2d, v3.4s
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+16)(R1), F9
+	FMOVQ (Bank_C1+16)(R1), F10
+	FMOVQ (Bank_C2+16)(R1), F11
+	FMOVQ (Bank_DC1+16)(R1), F12
+	FMOVQ (Bank_DC2+16)(R1), F13
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	FMOVQ F7, (Bank_V1+16)(R1)
+	FMOVQ F6, (Bank_V2+16)(R1)
+	FMOVQ F10, (Bank_C1+16)(R1)
+	FMOVQ F11, (Bank_C2+16)(R1)
+	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
+	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
+	WORD $0x4e6168c2 // fcvtn2 v2.4s, v6.2d
+	WORD $0x4e6168e3 // fcvtn2 v3.4s, v7.2d
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, -16(R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, -16(R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, -16(R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 rest:
 	CMP $0, R9
@@ -8190,6 +11194,9 @@ rest:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc00 // fmul v0.4s, v0.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	FMOVQ (Bank_V1+0)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F9
@@ -8244,16 +11251,18 @@ rest:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 two:
@@ -8359,6 +11368,11 @@ two:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc21 // fmul v1.4s, v1.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	FMOVQ (Bank_V1+0)(R1), F8
@@ -8435,16 +11449,18 @@ two:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 three:
@@ -8578,6 +11594,13 @@ three:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc42 // fmul v2.4s, v2.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
@@ -8676,16 +11699,18 @@ three:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 done:
 	ADD $16, R12, R12
@@ -8707,6 +11732,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+24(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2
@@ -8789,8 +11816,6 @@ pass:
 	FMOVQ F2, 320(R4)
 	FMOVQ F3, 352(R4)
 	ADD $16, R8, R8
-
-groups:
 	CMP $4, R9
 	BLT rest
 	MOVD (Bench_source+0)(R7), R11
@@ -9136,6 +12161,377 @@ groups:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc63 // fmul v3.4s, v3.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+
+groups:
+	CMP $4, R9
+	BLT last
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Offset+0)(R0), F0
+	FMOVQ (Bank_DOffset+0)(R0), F1
+	FMOVQ (Bank_D2Offset+0)(R0), F2
+	FMOVQ (Bank_D3Offset+0)(R0), F3
+	FMOVQ F0, (Bench_offsets+0)(R13)
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x4e22d421 // fadd v1.4s, v1.4s, v2.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	FMOVQ F0, (Bench_offsets+32)(R13)
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x4e22d421 // fadd v1.4s, v1.4s, v2.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	FMOVQ F0, (Bench_offsets+64)(R13)
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x4e22d421 // fadd v1.4s, v1.4s, v2.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	FMOVQ F0, (Bench_offsets+96)(R13)
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x4e22d421 // fadd v1.4s, v1.4s, v2.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	FMOVQ F0, (Bank_Offset+0)(R0)
+	FMOVQ F1, (Bank_DOffset+0)(R0)
+	FMOVQ F2, (Bank_D2Offset+0)(R0)
+	FMOVQ (Bank_Curve+160)(R0), F8
+	FMOVQ 128(R4), F4
+	FMOVQ 160(R4), F5
+	FMOVQ 192(R4), F6
+	FMOVQ 224(R4), F7
+	WORD $0x6e28dc80 // fmul v0.4s, v4.4s, v8.4s
+	WORD $0x6e28dca1 // fmul v1.4s, v5.4s, v8.4s
+	WORD $0x6e28dcc2 // fmul v2.4s, v6.4s, v8.4s
+	WORD $0x6e28dce3 // fmul v3.4s, v7.4s, v8.4s
+	FMOVQ (Bank_Curve+128)(R0), F8
+	FMOVQ 256(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Curve+96)(R0), F8
+	FMOVQ 288(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Curve+64)(R0), F8
+	FMOVQ 320(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Curve+32)(R0), F8
+	FMOVQ 352(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Curve+0)(R0), F8
+	FMOVQ 384(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bench_offsets+0)(R13), F16
+	WORD $0x6e30dc00 // fmul v0.4s, v0.4s, v16.4s
+	FMOVQ (Bench_offsets+32)(R13), F16
+	WORD $0x6e30dc21 // fmul v1.4s, v1.4s, v16.4s
+	FMOVQ (Bench_offsets+64)(R13), F16
+	WORD $0x6e30dc42 // fmul v2.4s, v2.4s, v16.4s
+	FMOVQ (Bench_offsets+96)(R13), F16
+	WORD $0x6e30dc63 // fmul v3.4s, v3.4s, v16.4s
+	FMOVQ (Bank_Slope+224)(R0), F8
+	FMOVQ 96(R4), F4
+	FMOVQ 128(R4), F5
+	FMOVQ 160(R4), F6
+	FMOVQ 192(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+192)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+160)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+128)(R0), F8
+	FMOVQ 288(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+96)(R0), F8
+	FMOVQ 320(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+64)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+32)(R0), F8
+	FMOVQ 384(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+0)(R0), F8
+	FMOVQ 416(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bench_offsets+0)(R13), F16
+	WORD $0x6e30dc00 // fmul v0.4s, v0.4s, v16.4s
+	FMOVQ (Bench_offsets+32)(R13), F16
+	WORD $0x6e30dc21 // fmul v1.4s, v1.4s, v16.4s
+	FMOVQ (Bench_offsets+64)(R13), F16
+	WORD $0x6e30dc42 // fmul v2.4s, v2.4s, v16.4s
+	FMOVQ (Bench_offsets+96)(R13), F16
+	WORD $0x6e30dc63 // fmul v3.4s, v3.4s, v16.4s
+	WORD $0x4e3fd400 // fadd v0.4s, v0.4s, v31.4s
+	WORD $0x4e3fd421 // fadd v1.4s, v1.4s, v31.4s
+	WORD $0x4e3fd442 // fadd v2.4s, v2.4s, v31.4s
+	WORD $0x4e3fd463 // fadd v3.4s, v3.4s, v31.4s
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Level+0)(R0), F8
+	FMOVQ (Bank_DLevel+0)(R0), F9
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc00 // fmul v0.4s, v0.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc21 // fmul v1.4s, v1.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc42 // fmul v2.4s, v2.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc63 // fmul v3.4s, v3.4s, v8.4s
+	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
+	FMOVQ 96(R14), F3
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
@@ -9256,22 +12652,160 @@ groups:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -32(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -32(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -32(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
+	FMOVQ F3, -32(R11)
 	ADD $128, R2, R2
 	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
 	JMP groups
+
+last:
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
+	FMOVQ 96(R14), F3
+	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
+	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
+	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
+	WORD $0x0e617867 // fcvtl v7.2d, v3.2s
+	FMOVQ (Bank_V1+0)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F9
+	FMOVQ (Bank_C1+0)(R1), F10
+	FMOVQ (Bank_C2+0)(R1), F11
+	FMOVQ (Bank_DC1+0)(R1), F12
+	FMOVQ (Bank_DC2+0)(R1), F13
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	FMOVQ F7, (Bank_V1+0)(R1)
+	FMOVQ F6, (Bank_V2+0)(R1)
+	FMOVQ F10, (Bank_C1+0)(R1)
+	FMOVQ F11, (Bank_C2+0)(R1)
+	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
+	VMOV V15.D[0], V0.D[0]
+	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
+	VMOV V15.D[0], V1.D[0]
+	WORD $0x0e6168cf // fcvtn v15.2s, v6.2d
+	VMOV V15.D[0], V2.D[0]
+	WORD $0x0e6168ef // fcvtn v15.2s, v7.2d
+	VMOV V15.D[0], V3.D[0]
+	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
+	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
+	WORD $0x4e617846 // fcvtl2 v6.2d, v2.4s
+	WORD $0x4e617867 // fcvtl2 v7.2d, v3.4s
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+16)(R1), F9
+	FMOVQ (Bank_C1+16)(R1), F10
+	FMOVQ (Bank_C2+16)(R1), F11
+	FMOVQ (Bank_DC1+16)(R1), F12
+	FMOVQ (Bank_DC2+16)(R1), F13
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	FMOVQ F7, (Bank_V1+16)(R1)
+	FMOVQ F6, (Bank_V2+16)(R1)
+	FMOVQ F10, (Bank_C1+16)(R1)
+	FMOVQ F11, (Bank_C2+16)(R1)
+	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
+	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
+	WORD $0x4e6168c2 // fcvtn2 v2.4s, v6.2d
+	WORD $0x4e6168e3 // fcvtn2 v3.4s, v7.2d
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, -16(R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, -16(R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, -16(R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 rest:
 	CMP $0, R9
@@ -9425,6 +12959,9 @@ rest:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc00 // fmul v0.4s, v0.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	FMOVQ (Bank_V1+0)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F9
@@ -9479,16 +13016,18 @@ rest:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 two:
@@ -9703,6 +13242,11 @@ two:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc21 // fmul v1.4s, v1.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	FMOVQ (Bank_V1+0)(R1), F8
@@ -9779,16 +13323,18 @@ two:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 three:
@@ -10069,6 +13615,13 @@ three:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc42 // fmul v2.4s, v2.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
@@ -10167,16 +13720,18 @@ three:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 done:
 	ADD $16, R12, R12
@@ -10198,6 +13753,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+24(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2
@@ -10280,8 +13837,6 @@ pass:
 	FMOVQ F2, 320(R4)
 	FMOVQ F3, 352(R4)
 	ADD $16, R8, R8
-
-groups:
 	CMP $4, R9
 	BLT rest
 	MOVD (Bench_source+0)(R7), R11
@@ -10442,6 +13997,192 @@ groups:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc63 // fmul v3.4s, v3.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+
+groups:
+	CMP $4, R9
+	BLT last
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e3fd540 // fadd v0.4s, v10.4s, v31.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e3fd561 // fadd v1.4s, v11.4s, v31.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e3fd542 // fadd v2.4s, v10.4s, v31.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e3fd563 // fadd v3.4s, v11.4s, v31.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Level+0)(R0), F8
+	FMOVQ (Bank_DLevel+0)(R0), F9
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc00 // fmul v0.4s, v0.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc21 // fmul v1.4s, v1.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc42 // fmul v2.4s, v2.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc63 // fmul v3.4s, v3.4s, v8.4s
+	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
+	FMOVQ 96(R14), F3
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
@@ -10812,22 +14553,410 @@ sections2:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -32(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -32(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -32(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
+	FMOVQ F3, -32(R11)
 	ADD $128, R2, R2
 	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
 	JMP groups
+
+last:
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
+	FMOVQ 96(R14), F3
+	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
+	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
+	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
+	WORD $0x0e617867 // fcvtl v7.2d, v3.2s
+	FMOVQ (Bank_V1+0)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F9
+	FMOVQ (Bank_C1+0)(R1), F10
+	FMOVQ (Bank_C2+0)(R1), F11
+	FMOVQ (Bank_DC1+0)(R1), F12
+	FMOVQ (Bank_DC2+0)(R1), F13
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	FMOVQ F7, (Bank_V1+0)(R1)
+	FMOVQ F6, (Bank_V2+0)(R1)
+	FMOVQ F10, (Bank_C1+0)(R1)
+	FMOVQ F11, (Bank_C2+0)(R1)
+	FMOVQ (Bank_Gain+0)(R1), F9
+	FMOVQ (Bank_Zero+0)(R1), F10
+	FMOVQ (Bank_Pole+0)(R1), F11
+	FMOVQ (Bank_Node+0)(R1), F12
+	FMOVQ (Bank_DGain+0)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+0)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+0)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V4.B16, V8.B16
+	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V4.B16
+	FMOVQ (Bank_DGain+0)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+0)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+0)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V5.B16, V8.B16
+	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V5.B16
+	FMOVQ (Bank_DGain+0)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+0)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+0)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V6.B16, V8.B16
+	WORD $0x4eeed4cf // fsub v15.2d, v6.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V6.B16
+	FMOVQ (Bank_DGain+0)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+0)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+0)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V7.B16, V8.B16
+	WORD $0x4eeed4ef // fsub v15.2d, v7.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V7.B16
+	FMOVQ F9, (Bank_Gain+0)(R1)
+	FMOVQ F10, (Bank_Zero+0)(R1)
+	FMOVQ F11, (Bank_Pole+0)(R1)
+	MOVD $(Bank_Section+0)(R1), R5
+	MOVD $(Bank_Node+0)(R1), R6
+	MOVD b+0(FP), R11
+	MOVD Bank_Sections(R11), R10
+
+sections3:
+	FMOVQ (Section_A1+0)(R5), F8
+	FMOVQ (Section_A2+0)(R5), F9
+	FMOVQ (Node_X+0)(R6), F10
+	FMOVQ (Node_X1+0)(R6), F11
+	FMOVQ (Node_X+128)(R6), F12
+	FMOVQ (Node_X1+128)(R6), F13
+	FMOVQ (Section_DA1+0)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+0)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
+	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+0)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+0)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
+	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+0)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+0)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+0)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+0)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e65d5ef // fadd v15.2d, v15.2d, v5.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	FMOVQ F8, (Section_A1+0)(R5)
+	FMOVQ F9, (Section_A2+0)(R5)
+	FMOVQ F7, (Node_X+0)(R6)
+	FMOVQ F6, (Node_X1+0)(R6)
+	VMOV V5.B16, V7.B16
+	VMOV V4.B16, V6.B16
+	VMOV V10.B16, V5.B16
+	VMOV V11.B16, V4.B16
+	ADD $256, R5, R5
+	ADD $128, R6, R6
+	SUB $1, R10, R10
+	CBNZ R10, sections3
+	FMOVQ F7, (Node_X+0)(R6)
+	FMOVQ F6, (Node_X1+0)(R6)
+	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
+	VMOV V15.D[0], V0.D[0]
+	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
+	VMOV V15.D[0], V1.D[0]
+	WORD $0x0e6168cf // fcvtn v15.2s, v6.2d
+	VMOV V15.D[0], V2.D[0]
+	WORD $0x0e6168ef // fcvtn v15.2s, v7.2d
+	VMOV V15.D[0], V3.D[0]
+	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
+	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
+	WORD $0x4e617846 // fcvtl2 v6.2d, v2.4s
+	WORD $0x4e617867 // fcvtl2 v7.2d, v3.4s
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+16)(R1), F9
+	FMOVQ (Bank_C1+16)(R1), F10
+	FMOVQ (Bank_C2+16)(R1), F11
+	FMOVQ (Bank_DC1+16)(R1), F12
+	FMOVQ (Bank_DC2+16)(R1), F13
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	FMOVQ F7, (Bank_V1+16)(R1)
+	FMOVQ F6, (Bank_V2+16)(R1)
+	FMOVQ F10, (Bank_C1+16)(R1)
+	FMOVQ F11, (Bank_C2+16)(R1)
+	FMOVQ (Bank_Gain+16)(R1), F9
+	FMOVQ (Bank_Zero+16)(R1), F10
+	FMOVQ (Bank_Pole+16)(R1), F11
+	FMOVQ (Bank_Node+16)(R1), F12
+	FMOVQ (Bank_DGain+16)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+16)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V4.B16, V8.B16
+	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V4.B16
+	FMOVQ (Bank_DGain+16)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+16)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V5.B16, V8.B16
+	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V5.B16
+	FMOVQ (Bank_DGain+16)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+16)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V6.B16, V8.B16
+	WORD $0x4eeed4cf // fsub v15.2d, v6.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V6.B16
+	FMOVQ (Bank_DGain+16)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+16)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V7.B16, V8.B16
+	WORD $0x4eeed4ef // fsub v15.2d, v7.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V7.B16
+	FMOVQ F9, (Bank_Gain+16)(R1)
+	FMOVQ F10, (Bank_Zero+16)(R1)
+	FMOVQ F11, (Bank_Pole+16)(R1)
+	MOVD $(Bank_Section+0)(R1), R5
+	MOVD $(Bank_Node+0)(R1), R6
+	MOVD b+0(FP), R11
+	MOVD Bank_Sections(R11), R10
+
+sections4:
+	FMOVQ (Section_A1+16)(R5), F8
+	FMOVQ (Section_A2+16)(R5), F9
+	FMOVQ (Node_X+16)(R6), F10
+	FMOVQ (Node_X1+16)(R6), F11
+	FMOVQ (Node_X+144)(R6), F12
+	FMOVQ (Node_X1+144)(R6), F13
+	FMOVQ (Section_DA1+16)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+16)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
+	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+16)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+16)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
+	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+16)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+16)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+16)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+16)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e65d5ef // fadd v15.2d, v15.2d, v5.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	FMOVQ F8, (Section_A1+16)(R5)
+	FMOVQ F9, (Section_A2+16)(R5)
+	FMOVQ F7, (Node_X+16)(R6)
+	FMOVQ F6, (Node_X1+16)(R6)
+	VMOV V5.B16, V7.B16
+	VMOV V4.B16, V6.B16
+	VMOV V10.B16, V5.B16
+	VMOV V11.B16, V4.B16
+	ADD $256, R5, R5
+	ADD $128, R6, R6
+	SUB $1, R10, R10
+	CBNZ R10, sections4
+	FMOVQ F7, (Node_X+16)(R6)
+	FMOVQ F6, (Node_X1+16)(R6)
+	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
+	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
+	WORD $0x4e6168c2 // fcvtn2 v2.4s, v6.2d
+	WORD $0x4e6168e3 // fcvtn2 v3.4s, v7.2d
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, -16(R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, -16(R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, -16(R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 rest:
 	CMP $0, R9
@@ -10910,6 +15039,9 @@ rest:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc00 // fmul v0.4s, v0.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	FMOVQ (Bank_V1+0)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F9
@@ -10952,7 +15084,7 @@ rest:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections3:
+sections5:
 	FMOVQ (Section_A1+0)(R5), F8
 	FMOVQ (Section_A2+0)(R5), F9
 	FMOVQ (Node_X+0)(R6), F10
@@ -10977,7 +15109,7 @@ sections3:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections3
+	CBNZ R10, sections5
 	FMOVQ F4, (Node_X+0)(R6)
 	FMOVQ F12, (Node_X1+0)(R6)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
@@ -11024,7 +15156,7 @@ sections3:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections4:
+sections6:
 	FMOVQ (Section_A1+16)(R5), F8
 	FMOVQ (Section_A2+16)(R5), F9
 	FMOVQ (Node_X+16)(R6), F10
@@ -11049,7 +15181,7 @@ sections4:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections4
+	CBNZ R10, sections6
 	FMOVQ F4, (Node_X+16)(R6)
 	FMOVQ F12, (Node_X1+16)(R6)
 	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
@@ -11070,16 +15202,18 @@ sections4:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 two:
@@ -11185,6 +15319,11 @@ two:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc21 // fmul v1.4s, v1.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	FMOVQ (Bank_V1+0)(R1), F8
@@ -11247,7 +15386,7 @@ two:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections5:
+sections7:
 	FMOVQ (Section_A1+0)(R5), F8
 	FMOVQ (Section_A2+0)(R5), F9
 	FMOVQ (Node_X+0)(R6), F10
@@ -11283,7 +15422,7 @@ sections5:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections5
+	CBNZ R10, sections7
 	FMOVQ F5, (Node_X+0)(R6)
 	FMOVQ F4, (Node_X1+0)(R6)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
@@ -11352,7 +15491,7 @@ sections5:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections6:
+sections8:
 	FMOVQ (Section_A1+16)(R5), F8
 	FMOVQ (Section_A2+16)(R5), F9
 	FMOVQ (Node_X+16)(R6), F10
@@ -11388,7 +15527,7 @@ sections6:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections6
+	CBNZ R10, sections8
 	FMOVQ F5, (Node_X+16)(R6)
 	FMOVQ F4, (Node_X1+16)(R6)
 	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
@@ -11415,16 +15554,18 @@ sections6:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 three:
@@ -11558,6 +15699,13 @@ three:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc42 // fmul v2.4s, v2.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
@@ -11640,7 +15788,7 @@ three:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections7:
+sections9:
 	FMOVQ (Section_A1+0)(R5), F8
 	FMOVQ (Section_A2+0)(R5), F9
 	FMOVQ (Node_X+0)(R6), F10
@@ -11687,7 +15835,7 @@ sections7:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections7
+	CBNZ R10, sections9
 	FMOVQ F6, (Node_X+0)(R6)
 	FMOVQ F5, (Node_X1+0)(R6)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
@@ -11778,7 +15926,7 @@ sections7:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections8:
+sections10:
 	FMOVQ (Section_A1+16)(R5), F8
 	FMOVQ (Section_A2+16)(R5), F9
 	FMOVQ (Node_X+16)(R6), F10
@@ -11825,7 +15973,7 @@ sections8:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections8
+	CBNZ R10, sections10
 	FMOVQ F6, (Node_X+16)(R6)
 	FMOVQ F5, (Node_X1+16)(R6)
 	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
@@ -11858,16 +16006,18 @@ sections8:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 done:
 	ADD $16, R12, R12
@@ -11889,6 +16039,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+24(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2
@@ -11971,8 +16123,6 @@ pass:
 	FMOVQ F2, 320(R4)
 	FMOVQ F3, 352(R4)
 	ADD $16, R8, R8
-
-groups:
 	CMP $4, R9
 	BLT rest
 	MOVD (Bench_source+0)(R7), R11
@@ -12318,6 +16468,377 @@ groups:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc63 // fmul v3.4s, v3.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+
+groups:
+	CMP $4, R9
+	BLT last
+	MOVD (Bench_source+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F0
+	MOVD (Bench_source+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F1
+	MOVD (Bench_source+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F2
+	MOVD (Bench_source+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ (R11), F3
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	FMOVQ F0, 384(R4)
+	FMOVQ F1, 416(R4)
+	FMOVQ F2, 448(R4)
+	FMOVQ F3, 480(R4)
+	FMOVQ (Bank_Offset+0)(R0), F0
+	FMOVQ (Bank_DOffset+0)(R0), F1
+	FMOVQ (Bank_D2Offset+0)(R0), F2
+	FMOVQ (Bank_D3Offset+0)(R0), F3
+	FMOVQ F0, (Bench_offsets+0)(R13)
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x4e22d421 // fadd v1.4s, v1.4s, v2.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	FMOVQ F0, (Bench_offsets+32)(R13)
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x4e22d421 // fadd v1.4s, v1.4s, v2.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	FMOVQ F0, (Bench_offsets+64)(R13)
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x4e22d421 // fadd v1.4s, v1.4s, v2.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	FMOVQ F0, (Bench_offsets+96)(R13)
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x4e22d421 // fadd v1.4s, v1.4s, v2.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	FMOVQ F0, (Bank_Offset+0)(R0)
+	FMOVQ F1, (Bank_DOffset+0)(R0)
+	FMOVQ F2, (Bank_D2Offset+0)(R0)
+	FMOVQ (Bank_Curve+160)(R0), F8
+	FMOVQ 128(R4), F4
+	FMOVQ 160(R4), F5
+	FMOVQ 192(R4), F6
+	FMOVQ 224(R4), F7
+	WORD $0x6e28dc80 // fmul v0.4s, v4.4s, v8.4s
+	WORD $0x6e28dca1 // fmul v1.4s, v5.4s, v8.4s
+	WORD $0x6e28dcc2 // fmul v2.4s, v6.4s, v8.4s
+	WORD $0x6e28dce3 // fmul v3.4s, v7.4s, v8.4s
+	FMOVQ (Bank_Curve+128)(R0), F8
+	FMOVQ 256(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Curve+96)(R0), F8
+	FMOVQ 288(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Curve+64)(R0), F8
+	FMOVQ 320(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Curve+32)(R0), F8
+	FMOVQ 352(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Curve+0)(R0), F8
+	FMOVQ 384(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bench_offsets+0)(R13), F16
+	WORD $0x6e30dc00 // fmul v0.4s, v0.4s, v16.4s
+	FMOVQ (Bench_offsets+32)(R13), F16
+	WORD $0x6e30dc21 // fmul v1.4s, v1.4s, v16.4s
+	FMOVQ (Bench_offsets+64)(R13), F16
+	WORD $0x6e30dc42 // fmul v2.4s, v2.4s, v16.4s
+	FMOVQ (Bench_offsets+96)(R13), F16
+	WORD $0x6e30dc63 // fmul v3.4s, v3.4s, v16.4s
+	FMOVQ (Bank_Slope+224)(R0), F8
+	FMOVQ 96(R4), F4
+	FMOVQ 128(R4), F5
+	FMOVQ 160(R4), F6
+	FMOVQ 192(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+192)(R0), F8
+	FMOVQ 224(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+160)(R0), F8
+	FMOVQ 256(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+128)(R0), F8
+	FMOVQ 288(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+96)(R0), F8
+	FMOVQ 320(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+64)(R0), F8
+	FMOVQ 352(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+32)(R0), F8
+	FMOVQ 384(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Slope+0)(R0), F8
+	FMOVQ 416(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bench_offsets+0)(R13), F16
+	WORD $0x6e30dc00 // fmul v0.4s, v0.4s, v16.4s
+	FMOVQ (Bench_offsets+32)(R13), F16
+	WORD $0x6e30dc21 // fmul v1.4s, v1.4s, v16.4s
+	FMOVQ (Bench_offsets+64)(R13), F16
+	WORD $0x6e30dc42 // fmul v2.4s, v2.4s, v16.4s
+	FMOVQ (Bench_offsets+96)(R13), F16
+	WORD $0x6e30dc63 // fmul v3.4s, v3.4s, v16.4s
+	WORD $0x4e3fd400 // fadd v0.4s, v0.4s, v31.4s
+	WORD $0x4e3fd421 // fadd v1.4s, v1.4s, v31.4s
+	WORD $0x4e3fd442 // fadd v2.4s, v2.4s, v31.4s
+	WORD $0x4e3fd463 // fadd v3.4s, v3.4s, v31.4s
+	FMOVQ (Bank_Tap+352)(R0), F8
+	FMOVQ 32(R4), F4
+	FMOVQ 64(R4), F5
+	FMOVQ 96(R4), F6
+	FMOVQ 128(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+320)(R0), F8
+	FMOVQ 160(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+288)(R0), F8
+	FMOVQ 192(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+256)(R0), F8
+	FMOVQ 224(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+224)(R0), F8
+	FMOVQ 256(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+192)(R0), F8
+	FMOVQ 288(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+160)(R0), F8
+	FMOVQ 320(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+128)(R0), F8
+	FMOVQ 352(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+96)(R0), F8
+	FMOVQ 384(R4), F7
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+64)(R0), F8
+	FMOVQ 416(R4), F4
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+32)(R0), F8
+	FMOVQ 448(R4), F5
+	WORD $0x6e28dcca // fmul v10.4s, v6.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dceb // fmul v11.4s, v7.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dc8a // fmul v10.4s, v4.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dcab // fmul v11.4s, v5.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Tap+0)(R0), F8
+	FMOVQ 480(R4), F6
+	WORD $0x6e28dcea // fmul v10.4s, v7.4s, v8.4s
+	WORD $0x4e2ad400 // fadd v0.4s, v0.4s, v10.4s
+	WORD $0x6e28dc8b // fmul v11.4s, v4.4s, v8.4s
+	WORD $0x4e2bd421 // fadd v1.4s, v1.4s, v11.4s
+	WORD $0x6e28dcaa // fmul v10.4s, v5.4s, v8.4s
+	WORD $0x4e2ad442 // fadd v2.4s, v2.4s, v10.4s
+	WORD $0x6e28dccb // fmul v11.4s, v6.4s, v8.4s
+	WORD $0x4e2bd463 // fadd v3.4s, v3.4s, v11.4s
+	FMOVQ (Bank_Level+0)(R0), F8
+	FMOVQ (Bank_DLevel+0)(R0), F9
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc00 // fmul v0.4s, v0.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc21 // fmul v1.4s, v1.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc42 // fmul v2.4s, v2.4s, v8.4s
+	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
+	WORD $0x6e28dc63 // fmul v3.4s, v3.4s, v8.4s
+	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	FMOVQ F3, 96(R14)
+	ADD $16, R8, R8
+	ADD $128, R4, R4
+	SUB $4, R9, R9
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
+	FMOVQ 96(R14), F3
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
@@ -12688,22 +17209,410 @@ sections2:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -32(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -32(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -32(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
-	ADD $16, R8, R8
+	FMOVQ F3, -32(R11)
 	ADD $128, R2, R2
 	ADD $128, R3, R3
-	ADD $128, R4, R4
-	SUB $4, R9, R9
 	JMP groups
+
+last:
+	MOVD R14, R11
+	MOVD R15, R14
+	MOVD R11, R15
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
+	FMOVQ 96(R14), F3
+	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
+	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
+	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
+	WORD $0x0e617867 // fcvtl v7.2d, v3.2s
+	FMOVQ (Bank_V1+0)(R1), F8
+	FMOVQ (Bank_V2+0)(R1), F9
+	FMOVQ (Bank_C1+0)(R1), F10
+	FMOVQ (Bank_C2+0)(R1), F11
+	FMOVQ (Bank_DC1+0)(R1), F12
+	FMOVQ (Bank_DC2+0)(R1), F13
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	FMOVQ F7, (Bank_V1+0)(R1)
+	FMOVQ F6, (Bank_V2+0)(R1)
+	FMOVQ F10, (Bank_C1+0)(R1)
+	FMOVQ F11, (Bank_C2+0)(R1)
+	FMOVQ (Bank_Gain+0)(R1), F9
+	FMOVQ (Bank_Zero+0)(R1), F10
+	FMOVQ (Bank_Pole+0)(R1), F11
+	FMOVQ (Bank_Node+0)(R1), F12
+	FMOVQ (Bank_DGain+0)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+0)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+0)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V4.B16, V8.B16
+	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V4.B16
+	FMOVQ (Bank_DGain+0)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+0)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+0)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V5.B16, V8.B16
+	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V5.B16
+	FMOVQ (Bank_DGain+0)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+0)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+0)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V6.B16, V8.B16
+	WORD $0x4eeed4cf // fsub v15.2d, v6.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V6.B16
+	FMOVQ (Bank_DGain+0)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+0)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+0)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V7.B16, V8.B16
+	WORD $0x4eeed4ef // fsub v15.2d, v7.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V7.B16
+	FMOVQ F9, (Bank_Gain+0)(R1)
+	FMOVQ F10, (Bank_Zero+0)(R1)
+	FMOVQ F11, (Bank_Pole+0)(R1)
+	MOVD $(Bank_Section+0)(R1), R5
+	MOVD $(Bank_Node+0)(R1), R6
+	MOVD b+0(FP), R11
+	MOVD Bank_Sections(R11), R10
+
+sections3:
+	FMOVQ (Section_A1+0)(R5), F8
+	FMOVQ (Section_A2+0)(R5), F9
+	FMOVQ (Node_X+0)(R6), F10
+	FMOVQ (Node_X1+0)(R6), F11
+	FMOVQ (Node_X+128)(R6), F12
+	FMOVQ (Node_X1+128)(R6), F13
+	FMOVQ (Section_DA1+0)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+0)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
+	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+0)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+0)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
+	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+0)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+0)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+0)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+0)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e65d5ef // fadd v15.2d, v15.2d, v5.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	FMOVQ F8, (Section_A1+0)(R5)
+	FMOVQ F9, (Section_A2+0)(R5)
+	FMOVQ F7, (Node_X+0)(R6)
+	FMOVQ F6, (Node_X1+0)(R6)
+	VMOV V5.B16, V7.B16
+	VMOV V4.B16, V6.B16
+	VMOV V10.B16, V5.B16
+	VMOV V11.B16, V4.B16
+	ADD $256, R5, R5
+	ADD $128, R6, R6
+	SUB $1, R10, R10
+	CBNZ R10, sections3
+	FMOVQ F7, (Node_X+0)(R6)
+	FMOVQ F6, (Node_X1+0)(R6)
+	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
+	VMOV V15.D[0], V0.D[0]
+	WORD $0x0e6168af // fcvtn v15.2s, v5.2d
+	VMOV V15.D[0], V1.D[0]
+	WORD $0x0e6168cf // fcvtn v15.2s, v6.2d
+	VMOV V15.D[0], V2.D[0]
+	WORD $0x0e6168ef // fcvtn v15.2s, v7.2d
+	VMOV V15.D[0], V3.D[0]
+	WORD $0x4e617804 // fcvtl2 v4.2d, v0.4s
+	WORD $0x4e617825 // fcvtl2 v5.2d, v1.4s
+	WORD $0x4e617846 // fcvtl2 v6.2d, v2.4s
+	WORD $0x4e617867 // fcvtl2 v7.2d, v3.4s
+	FMOVQ (Bank_V1+16)(R1), F8
+	FMOVQ (Bank_V2+16)(R1), F9
+	FMOVQ (Bank_C1+16)(R1), F10
+	FMOVQ (Bank_C2+16)(R1), F11
+	FMOVQ (Bank_DC1+16)(R1), F12
+	FMOVQ (Bank_DC2+16)(R1), F13
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd2e // fmul v14.2d, v9.2d, v11.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	WORD $0x4eeed484 // fsub v4.2d, v4.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdd0e // fmul v14.2d, v8.2d, v11.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x6e6adc8e // fmul v14.2d, v4.2d, v10.2d
+	WORD $0x4eeed4a5 // fsub v5.2d, v5.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdc8e // fmul v14.2d, v4.2d, v11.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x6e6adcae // fmul v14.2d, v5.2d, v10.2d
+	WORD $0x4eeed4c6 // fsub v6.2d, v6.2d, v14.2d
+	WORD $0x4e6cd54a // fadd v10.2d, v10.2d, v12.2d
+	WORD $0x4e6dd56b // fadd v11.2d, v11.2d, v13.2d
+	WORD $0x6e6bdcae // fmul v14.2d, v5.2d, v11.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	WORD $0x6e6adcce // fmul v14.2d, v6.2d, v10.2d
+	WORD $0x4eeed4e7 // fsub v7.2d, v7.2d, v14.2d
+	FMOVQ F7, (Bank_V1+16)(R1)
+	FMOVQ F6, (Bank_V2+16)(R1)
+	FMOVQ F10, (Bank_C1+16)(R1)
+	FMOVQ F11, (Bank_C2+16)(R1)
+	FMOVQ (Bank_Gain+16)(R1), F9
+	FMOVQ (Bank_Zero+16)(R1), F10
+	FMOVQ (Bank_Pole+16)(R1), F11
+	FMOVQ (Bank_Node+16)(R1), F12
+	FMOVQ (Bank_DGain+16)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+16)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V4.B16, V8.B16
+	WORD $0x4eeed48f // fsub v15.2d, v4.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V4.B16
+	FMOVQ (Bank_DGain+16)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+16)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V5.B16, V8.B16
+	WORD $0x4eeed4af // fsub v15.2d, v5.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V5.B16
+	FMOVQ (Bank_DGain+16)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+16)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V6.B16, V8.B16
+	WORD $0x4eeed4cf // fsub v15.2d, v6.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V6.B16
+	FMOVQ (Bank_DGain+16)(R1), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	FMOVQ (Bank_DZero+16)(R1), F16
+	WORD $0x4e70d54a // fadd v10.2d, v10.2d, v16.2d
+	FMOVQ (Bank_DPole+16)(R1), F16
+	WORD $0x4e70d56b // fadd v11.2d, v11.2d, v16.2d
+	WORD $0x6e6add0e // fmul v14.2d, v8.2d, v10.2d
+	VMOV V7.B16, V8.B16
+	WORD $0x4eeed4ef // fsub v15.2d, v7.2d, v14.2d
+	WORD $0x6e69ddef // fmul v15.2d, v15.2d, v9.2d
+	WORD $0x6e6bdd8e // fmul v14.2d, v12.2d, v11.2d
+	WORD $0x4e6ed5ec // fadd v12.2d, v15.2d, v14.2d
+	VMOV V12.B16, V7.B16
+	FMOVQ F9, (Bank_Gain+16)(R1)
+	FMOVQ F10, (Bank_Zero+16)(R1)
+	FMOVQ F11, (Bank_Pole+16)(R1)
+	MOVD $(Bank_Section+0)(R1), R5
+	MOVD $(Bank_Node+0)(R1), R6
+	MOVD b+0(FP), R11
+	MOVD Bank_Sections(R11), R10
+
+sections4:
+	FMOVQ (Section_A1+16)(R5), F8
+	FMOVQ (Section_A2+16)(R5), F9
+	FMOVQ (Node_X+16)(R6), F10
+	FMOVQ (Node_X1+16)(R6), F11
+	FMOVQ (Node_X+144)(R6), F12
+	FMOVQ (Node_X1+144)(R6), F13
+	FMOVQ (Section_DA1+16)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+16)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eedd48e // fsub v14.2d, v4.2d, v13.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eecd54f // fsub v15.2d, v10.2d, v12.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6bd5ef // fadd v15.2d, v15.2d, v11.2d
+	WORD $0x4e6fd5cb // fadd v11.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+16)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+16)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eecd4ae // fsub v14.2d, v5.2d, v12.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eebd48f // fsub v15.2d, v4.2d, v11.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e6ad5ef // fadd v15.2d, v15.2d, v10.2d
+	WORD $0x4e6fd5ca // fadd v10.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+16)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+16)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eebd4ce // fsub v14.2d, v6.2d, v11.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4eead4af // fsub v15.2d, v5.2d, v10.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e64d5ef // fadd v15.2d, v15.2d, v4.2d
+	WORD $0x4e6fd5c4 // fadd v4.2d, v14.2d, v15.2d
+	FMOVQ (Section_DA1+16)(R5), F16
+	WORD $0x4e70d508 // fadd v8.2d, v8.2d, v16.2d
+	FMOVQ (Section_DA2+16)(R5), F16
+	WORD $0x4e70d529 // fadd v9.2d, v9.2d, v16.2d
+	WORD $0x4eead4ee // fsub v14.2d, v7.2d, v10.2d
+	WORD $0x6e69ddce // fmul v14.2d, v14.2d, v9.2d
+	WORD $0x4ee4d4cf // fsub v15.2d, v6.2d, v4.2d
+	WORD $0x6e68ddef // fmul v15.2d, v15.2d, v8.2d
+	WORD $0x4e65d5ef // fadd v15.2d, v15.2d, v5.2d
+	WORD $0x4e6fd5c5 // fadd v5.2d, v14.2d, v15.2d
+	FMOVQ F8, (Section_A1+16)(R5)
+	FMOVQ F9, (Section_A2+16)(R5)
+	FMOVQ F7, (Node_X+16)(R6)
+	FMOVQ F6, (Node_X1+16)(R6)
+	VMOV V5.B16, V7.B16
+	VMOV V4.B16, V6.B16
+	VMOV V10.B16, V5.B16
+	VMOV V11.B16, V4.B16
+	ADD $256, R5, R5
+	ADD $128, R6, R6
+	SUB $1, R10, R10
+	CBNZ R10, sections4
+	FMOVQ F7, (Node_X+16)(R6)
+	FMOVQ F6, (Node_X1+16)(R6)
+	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
+	WORD $0x4e6168a1 // fcvtn2 v1.4s, v5.2d
+	WORD $0x4e6168c2 // fcvtn2 v2.4s, v6.2d
+	WORD $0x4e6168e3 // fcvtn2 v3.4s, v7.2d
+	FMOVQ (Bank_Power+0)(R0), F4
+	FMOVQ 0(R3), F16
+	WORD $0x4e30d400 // fadd v0.4s, v0.4s, v16.4s
+	FMOVQ F0, 0(R2)
+	WORD $0x6e20dc05 // fmul v5.4s, v0.4s, v0.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 32(R3), F16
+	WORD $0x4e30d421 // fadd v1.4s, v1.4s, v16.4s
+	FMOVQ F1, 32(R2)
+	WORD $0x6e21dc25 // fmul v5.4s, v1.4s, v1.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 64(R3), F16
+	WORD $0x4e30d442 // fadd v2.4s, v2.4s, v16.4s
+	FMOVQ F2, 64(R2)
+	WORD $0x6e22dc45 // fmul v5.4s, v2.4s, v2.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ 96(R3), F16
+	WORD $0x4e30d463 // fadd v3.4s, v3.4s, v16.4s
+	FMOVQ F3, 96(R2)
+	WORD $0x6e23dc65 // fmul v5.4s, v3.4s, v3.4s
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	FMOVQ F4, (Bank_Power+0)(R0)
+	VZIP1 V1.S4, V0.S4, V4.S4
+	VZIP2 V1.S4, V0.S4, V5.S4
+	VZIP1 V3.S4, V2.S4, V6.S4
+	VZIP2 V3.S4, V2.S4, V7.S4
+	VZIP1 V6.D2, V4.D2, V0.D2
+	VZIP2 V6.D2, V4.D2, V1.D2
+	VZIP1 V7.D2, V5.D2, V2.D2
+	VZIP2 V7.D2, V5.D2, V3.D2
+	MOVD (Bench_target+0)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F0, -16(R11)
+	MOVD (Bench_target+8)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F1, -16(R11)
+	MOVD (Bench_target+16)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F2, -16(R11)
+	MOVD (Bench_target+24)(R7), R11
+	ADD R8, R11, R11
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 rest:
 	CMP $0, R9
@@ -12857,6 +17766,9 @@ rest:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc00 // fmul v0.4s, v0.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	FMOVQ (Bank_V1+0)(R1), F8
 	FMOVQ (Bank_V2+0)(R1), F9
@@ -12899,7 +17811,7 @@ rest:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections3:
+sections5:
 	FMOVQ (Section_A1+0)(R5), F8
 	FMOVQ (Section_A2+0)(R5), F9
 	FMOVQ (Node_X+0)(R6), F10
@@ -12924,7 +17836,7 @@ sections3:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections3
+	CBNZ R10, sections5
 	FMOVQ F4, (Node_X+0)(R6)
 	FMOVQ F12, (Node_X1+0)(R6)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
@@ -12971,7 +17883,7 @@ sections3:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections4:
+sections6:
 	FMOVQ (Section_A1+16)(R5), F8
 	FMOVQ (Section_A2+16)(R5), F9
 	FMOVQ (Node_X+16)(R6), F10
@@ -12996,7 +17908,7 @@ sections4:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections4
+	CBNZ R10, sections6
 	FMOVQ F4, (Node_X+16)(R6)
 	FMOVQ F12, (Node_X1+16)(R6)
 	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
@@ -13017,16 +17929,18 @@ sections4:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 two:
@@ -13241,6 +18155,11 @@ two:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc21 // fmul v1.4s, v1.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	FMOVQ (Bank_V1+0)(R1), F8
@@ -13303,7 +18222,7 @@ two:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections5:
+sections7:
 	FMOVQ (Section_A1+0)(R5), F8
 	FMOVQ (Section_A2+0)(R5), F9
 	FMOVQ (Node_X+0)(R6), F10
@@ -13339,7 +18258,7 @@ sections5:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections5
+	CBNZ R10, sections7
 	FMOVQ F5, (Node_X+0)(R6)
 	FMOVQ F4, (Node_X1+0)(R6)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
@@ -13408,7 +18327,7 @@ sections5:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections6:
+sections8:
 	FMOVQ (Section_A1+16)(R5), F8
 	FMOVQ (Section_A2+16)(R5), F9
 	FMOVQ (Node_X+16)(R6), F10
@@ -13444,7 +18363,7 @@ sections6:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections6
+	CBNZ R10, sections8
 	FMOVQ F5, (Node_X+16)(R6)
 	FMOVQ F4, (Node_X1+16)(R6)
 	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
@@ -13471,16 +18390,18 @@ sections6:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 	JMP done
 
 three:
@@ -13761,6 +18682,13 @@ three:
 	WORD $0x4e29d508 // fadd v8.4s, v8.4s, v9.4s
 	WORD $0x6e28dc42 // fmul v2.4s, v2.4s, v8.4s
 	FMOVQ F8, (Bank_Level+0)(R0)
+	FMOVQ F0, 0(R14)
+	FMOVQ F1, 32(R14)
+	FMOVQ F2, 64(R14)
+	ADD $16, R8, R8
+	FMOVQ 0(R14), F0
+	FMOVQ 32(R14), F1
+	FMOVQ 64(R14), F2
 	WORD $0x0e617804 // fcvtl v4.2d, v0.2s
 	WORD $0x0e617825 // fcvtl v5.2d, v1.2s
 	WORD $0x0e617846 // fcvtl v6.2d, v2.2s
@@ -13843,7 +18771,7 @@ three:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections7:
+sections9:
 	FMOVQ (Section_A1+0)(R5), F8
 	FMOVQ (Section_A2+0)(R5), F9
 	FMOVQ (Node_X+0)(R6), F10
@@ -13890,7 +18818,7 @@ sections7:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections7
+	CBNZ R10, sections9
 	FMOVQ F6, (Node_X+0)(R6)
 	FMOVQ F5, (Node_X1+0)(R6)
 	WORD $0x0e61688f // fcvtn v15.2s, v4.2d
@@ -13981,7 +18909,7 @@ sections7:
 	MOVD b+0(FP), R11
 	MOVD Bank_Sections(R11), R10
 
-sections8:
+sections10:
 	FMOVQ (Section_A1+16)(R5), F8
 	FMOVQ (Section_A2+16)(R5), F9
 	FMOVQ (Node_X+16)(R6), F10
@@ -14028,7 +18956,7 @@ sections8:
 	ADD $256, R5, R5
 	ADD $128, R6, R6
 	SUB $1, R10, R10
-	CBNZ R10, sections8
+	CBNZ R10, sections10
 	FMOVQ F6, (Node_X+16)(R6)
 	FMOVQ F5, (Node_X1+16)(R6)
 	WORD $0x4e616880 // fcvtn2 v0.4s, v4.2d
@@ -14061,16 +18989,18 @@ sections8:
 	VZIP2 V7.D2, V5.D2, V3.D2
 	MOVD (Bench_target+0)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F0, (R11)
+	FMOVQ F0, -16(R11)
 	MOVD (Bench_target+8)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F1, (R11)
+	FMOVQ F1, -16(R11)
 	MOVD (Bench_target+16)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F2, (R11)
+	FMOVQ F2, -16(R11)
 	MOVD (Bench_target+24)(R7), R11
 	ADD R8, R11, R11
-	FMOVQ F3, (R11)
+	FMOVQ F3, -16(R11)
+	ADD $128, R2, R2
+	ADD $128, R3, R3
 
 done:
 	ADD $16, R12, R12
@@ -14090,6 +19020,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD $0, R8
 	MOVD (Bench_row+0)(R7), R11
 	ADD R8, R11, R11
@@ -14283,6 +19215,8 @@ pass:
 	ADD R12<<1, R11, R7
 	ADD R12, R11, R13
 	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
 	MOVD from+16(FP), R11
 	ADD $Bank_Out, R0, R2
 	ADD R11<<5, R2, R2

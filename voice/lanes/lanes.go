@@ -17,9 +17,9 @@ const (
 	MaxSections = 4
 
 	// Shortest is the least distance (samples) from the sample that is
-	// computed back to the newest that its read needs: four frames are read
+	// computed back to the newest that its read needs: eight frames are read
 	// before the first of them is written.
-	Shortest = 4
+	Shortest = 8
 
 	// History is how many samples before the oldest that a read needs must
 	// exist in the line: they are loaded, and not used.
@@ -115,9 +115,10 @@ type Bench struct {
 	Line []float32
 	Rows *Rows
 
-	window                  [Frames + Taps + 4]floats
-	offsets, read, filtered [4]floats
-	source, target, row     [Width]uintptr
+	window              [Frames + Taps + 4]floats
+	offsets, filtered   [4]floats
+	read                [8]floats // two groups of sums
+	source, target, row [Width]uintptr
 }
 
 // Force is what drives each lane in each frame of a control step.

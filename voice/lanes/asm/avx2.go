@@ -3,14 +3,15 @@ package main
 // avx2 prints for amd64 with AVX2: eight lanes in one pass.
 //
 //	BX bank, SI Bench, R8 out or mix, R9 force, R10 window, R11 section, R12 node,
-//	R13 sections left, CX frames left, DX bytes gone in the lines, AX scratch
+//	R13 sections left, R14 sums, R15 the other sums, CX frames left, DX bytes gone
+//	in the lines, AX and DI scratch
 type avx2 struct{ *printer }
 
 func (avx2) goarch() string { return "amd64" }
 func (avx2) width() int     { return 32 }
 
 var avx2Pointers = registers{
-	bank: "BX", bankD: "BX", outs: "R8", mix: "SI", benchF: "SI", force: "R9", win: "R10", sect: "R11", node: "R12",
+	bank: "BX", bankD: "BX", outs: "R8", mix: "SI", benchF: "SI", sums: "R14", force: "R9", win: "R10", sect: "R11", node: "R12",
 }
 
 func (a avx2) begin(name string) {
@@ -23,6 +24,8 @@ func (a avx2) begin(name string) {
 	a.put("SHLQ $5, R8")
 	a.put("LEAQ Bank_Out(BX)(R8*1), R8")
 	a.put("LEAQ Bench_window(SI), R10")
+	a.put("LEAQ Bench_read(SI), R14")
+	a.put("LEAQ (Bench_read+%d)(SI), R15", 4*floats)
 }
 
 func (a avx2) beginMix(name string) {
@@ -140,13 +143,15 @@ func (a avx2) loadQuad(d, scratch [4]reg, table string) {
 	a.transpose(d, scratch)
 }
 
-func (a avx2) storeQuad(s, scratch [4]reg) {
+func (a avx2) swap() { a.put("XCHGQ R14, R15") }
+
+func (a avx2) storeQuad(s, scratch [4]reg, behind int) {
 	a.transpose(s, scratch)
 	for i, s := range s {
 		a.put("MOVQ (Bench_target+%d)(SI), AX", 8*i)
 		a.put("MOVQ (Bench_target+%d)(SI), DI", 8*(i+4))
-		a.put("VMOVUPS X%d, (AX)(DX*1)", s)
-		a.put("VEXTRACTF128 $1, Y%d, (DI)(DX*1)", s)
+		a.put("VMOVUPS X%d, %d(AX)(DX*1)", s, -16*behind)
+		a.put("VEXTRACTF128 $1, Y%d, %d(DI)(DX*1)", s, -16*behind)
 	}
 }
 

@@ -72,6 +72,9 @@ func (k *kernel) name() string {
 
 // write prints the kernel: the history of the read, whole groups of four
 // frames, and what is left of a group.
+//
+// The groups overlap: one is read before the one before it goes through the filters
+// and into the lines, so that neither waits for the other.
 func (k *kernel) write() {
 	k.begin(k.name())
 	k.rewind(3)
@@ -82,15 +85,16 @@ func (k *kernel) write() {
 		}
 		k.advance(4)
 	}
-	k.label("groups")
 	k.jumpIfLess("rest", 4)
-	k.group(4)
-	k.advance(4)
-	for _, p := range []pointer{outs, force, win} {
-		k.move(p, 4*floats)
-	}
-	k.count(4)
+	k.readAhead()
+	k.label("groups")
+	k.jumpIfLess("last", 4)
+	k.readAhead()
+	k.finish(4, 1)
 	k.jump("groups")
+	k.label("last")
+	k.swap()
+	k.finish(4, 0)
 	k.label("rest")
 	k.jumpIfEqual("done", 0)
 	k.jumpIfEqual("two", 2)
@@ -109,24 +113,43 @@ func (k *kernel) remainder(n int) {
 	k.jump("done")
 }
 
-// group computes n frames, one to four. The lines are read before any of them
-// is written.
+// readAhead reads the next group, and makes it the last that was read.
+func (k *kernel) readAhead() {
+	k.read(4)
+	k.advance(4)
+	k.move(win, 4*floats)
+	k.count(4)
+	k.swap()
+}
+
+// group computes one to three frames, the last.
 func (k *kernel) group(n int) {
 	k.read(n)
-	switch {
-	case k.unrolled > 0:
-		k.filterUnrolled(n)
-	case k.moving || k.stiff:
+	k.advance(4)
+	k.finish(n, 0)
+}
+
+// finish takes n frames that were read, with some groups read since, through the
+// filters and into the lines.
+func (k *kernel) finish(n, since int) {
+	if k.unrolled == 0 && (k.moving || k.stiff) {
+		for f := range n {
+			k.load(reg(f), mem{base: sums, off: f * floats})
+		}
 		k.filter(n, low)
 		k.filter(n, high)
-	default:
+	} else if k.stiff {
+		k.filterUnrolled(n)
+	} else {
 		k.loseBoth(n)
 	}
 	k.sound(n)
-	k.storeQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7})
+	k.storeQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7}, 1+since)
+	k.move(outs, 4*floats)
+	k.move(force, 4*floats)
 }
 
-// read loads the lines' next samples and reads the lines into registers 0 to n-1.
+// read loads the lines' next samples, reads the lines, and writes down the sums.
 func (k *kernel) read(n int) {
 	k.loadQuad([4]reg{0, 1, 2, 3}, [4]reg{4, 5, 6, 7}, "source")
 	for i := range n {
@@ -147,6 +170,9 @@ func (k *kernel) read(n int) {
 	}
 	if k.moving {
 		k.level(n)
+	}
+	for f := range n {
+		k.store(mem{base: sums, off: f * floats}, reg(f))
 	}
 }
 
@@ -277,8 +303,9 @@ func (k *kernel) loseBoth(n int) {
 	sides := [...]side{low: {12, 13, 14}, high: {0, 1, 2}}
 	x := func(f int, h half) reg { return reg(4 + 4*int(h) + f) }
 	for f := range n {
-		k.widen(x(f, low), reg(f), low)
-		k.widen(x(f, high), reg(f), high)
+		for h := range sides {
+			k.widenM(x(f, half(h)), mem{base: sums, off: f * floats}, half(h))
+		}
 	}
 	for h := range sides {
 		k.load(sides[h].last, k.double("V1", half(h)))
@@ -399,13 +426,10 @@ func (k *kernel) sections(x []reg, h half) {
 	}
 }
 
-// filterUnrolled takes n frames, in registers 0 to n-1, through all filters of still stiff
+// filterUnrolled takes n frames through all filters of still stiff
 // strings, both halves of the lanes side by side: what one waits for, the other
 // uses. A result takes a register that has become free, so nothing is moved.
 func (k *kernel) filterUnrolled(n int) {
-	for f := range n {
-		k.store(mem{benchF, "Bench_read", f * floats}, reg(f))
-	}
 	var ways [2][]func()
 	for h := range ways {
 		s := side{kernel: k, h: half(h)}
@@ -481,7 +505,7 @@ func (s *side) lose(n int) (x []reg) {
 	now, before := last, older
 	for f := range n {
 		y, now1, before1 := s.take(), now, before
-		s.do(func() { s.widenM(y, mem{benchF, "Bench_read", f * floats}, s.h) })
+		s.do(func() { s.widenM(y, mem{base: sums, off: f * floats}, s.h) })
 		s.do(func() { s.mulDm(t, before1, s.double("C2", s.h)) })
 		s.do(func() { s.subD(y, y, t) })
 		s.do(func() { s.mulDm(t, now1, s.double("C1", s.h)) })

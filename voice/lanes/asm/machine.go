@@ -29,6 +29,7 @@ const (
 	mix                   // the frame in Mix.Left
 	force                 // the frame in the Force
 	benchF                // the Bench
+	sums                  // of a group that is being read, or was last, in Bench.read
 	win                   // the group's first frame in Bench.window
 	sect                  // the Section
 	node                  // the Node before it
@@ -96,7 +97,8 @@ type machine interface {
 	join(d reg, m mem) // what storeHalf stored
 	mulFm(d, a reg, m mem)
 	loadQuad(d, scratch [4]reg, table string) // of Bench: where each lane's are
-	storeQuad(s, scratch [4]reg)              // destroys s
+	storeQuad(s, scratch [4]reg, behind int)  // groups in the lines; destroys s
+	swap()                                    // the two groups of sums
 }
 
 // printer is what machines share.

@@ -7,7 +7,7 @@ import "fmt"
 //
 //	R0 bank, R1 Bank for doubles, R2 out, R3 force, R4 window, R5 section,
 //	R6 node, R7 Bench for the lines, R13 Bench for floats or mix, R8 bytes gone in the lines, R9 frames left,
-//	R10 sections left, R11 scratch, R12 bytes from lane 0 to the pass's first,
+//	R14 sums, R15 the other sums, R10 sections left, R11 scratch, R12 bytes from lane 0 to the pass's first,
 //	V16 scratch, V31 the bias
 type neon struct{ *printer }
 
@@ -20,7 +20,7 @@ func (neon) goarch() string { return "arm64" }
 func (neon) width() int     { return 16 }
 
 var neonPointers = registers{
-	bank: "R0", bankD: "R1", outs: "R2", mix: "R13", benchF: "R13", force: "R3", win: "R4", sect: "R5", node: "R6",
+	bank: "R0", bankD: "R1", outs: "R2", mix: "R13", benchF: "R13", sums: "R14", force: "R3", win: "R4", sect: "R5", node: "R6",
 }
 
 // begin takes the arguments anew in each pass. A float takes four bytes, a
@@ -49,6 +49,8 @@ func (n neon) beginPass() {
 	n.put("ADD R12<<1, R11, R7")
 	n.put("ADD R12, R11, R13")
 	n.put("ADD $Bench_window, R13, R4")
+	n.put("ADD $Bench_read, R13, R14")
+	n.put("ADD $(Bench_read+%d), R13, R15", 4*floats)
 }
 
 func (n neon) beginTurn(name string) {
@@ -195,11 +197,17 @@ func (n neon) loadQuad(d, scratch [4]reg, table string) {
 	n.transpose(d, scratch)
 }
 
-func (n neon) storeQuad(s, scratch [4]reg) {
+func (n neon) swap() {
+	n.put("MOVD R14, R11")
+	n.put("MOVD R15, R14")
+	n.put("MOVD R11, R15")
+}
+
+func (n neon) storeQuad(s, scratch [4]reg, behind int) {
 	n.transpose(s, scratch)
 	for i, s := range s {
 		n.line("target", i)
-		n.put("FMOVQ F%d, (R11)", s)
+		n.put("FMOVQ F%d, %d(R11)", s, -16*behind)
 	}
 }
 
