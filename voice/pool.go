@@ -100,13 +100,29 @@ func (p *Pool) clock() int64 { return p.steps*Grid + int64(p.now) }
 // Advance renders all voices up to a frame of the present step, and mixes them.
 func (p *Pool) Advance(until int) {
 	for i := range p.banks[:p.top] {
+		p.banks[i].catchUp(p, until)
+	}
+	p.mixBanks(p.mixed, until)
+	p.now, p.mixed = until, until
+}
+
+// mixBanks adds the banks in use to the mix, in their order, two at a time.
+func (p *Pool) mixBanks(from, until int) {
+	var first *lanes.Bank
+	for i := range p.banks[:p.top] {
 		b := &p.banks[i]
-		b.catchUp(p, until)
-		if b.used > 0 {
-			p.kernel.Mix(&b.Bank, &p.mix, p.mixed, until)
+		switch {
+		case b.used == 0:
+		case first == nil:
+			first = &b.Bank
+		default:
+			p.kernel.Mix(&p.mix, from, until, first, &b.Bank)
+			first = nil
 		}
 	}
-	p.now, p.mixed = until, until
+	if first != nil {
+		p.kernel.Mix(&p.mix, from, until, first, nil)
+	}
 }
 
 // Arrive tells, without rendering, that a frame of the present step has been reached.
@@ -122,9 +138,9 @@ func (p *Pool) Again(from int) {
 	for i := range p.banks[:p.top] {
 		if b := &p.banks[i]; b.used > 0 {
 			b.Rewind(p.mixed - from)
-			p.kernel.Mix(&b.Bank, &p.mix, from, p.mixed)
 		}
 	}
+	p.mixBanks(from, p.mixed)
 }
 
 // place deals a loop a lane among its like.

@@ -43,7 +43,10 @@ func glidingStiff(b *Bank, w *Bench, force *floats, from, frames int)
 func turnRows(b *Bank, w *Bench)
 
 //go:noescape
-func mix(b *Bank, w *Mix, from, frames int)
+func mixOne(b *Bank, w *Mix, from, frames int)
+
+//go:noescape
+func mixTwo(b *Bank, w *Mix, from, frames int, c *Bank)
 
 // vector is the kernel of a vector unit.
 func vector(name string) Kernel {
@@ -52,7 +55,7 @@ func vector(name string) Kernel {
 		name:  name,
 		plain: kinds{onLines(stillPlain), onLines(movingPlain), onLines(glidingPlain)},
 		turn:  turn,
-		mix:   mix,
+		mix:   mixBanks,
 	}
 	for i, still := range []kernel{stillStiff1, stillStiff2, stillStiff3, stillStiff4} {
 		k.stiff[i+1] = kinds{onLines(still), moving, gliding}
@@ -96,4 +99,13 @@ func turn(b *Bank, w *Bench) {
 	}
 	turnRows(b, w)
 	runtime.KeepAlive(w.Rows)
+}
+
+// mixBanks mixes two banks, of which the second may be nil.
+func mixBanks(m *Mix, from, frames int, b, c *Bank) {
+	if c == nil {
+		mixOne(b, m, from, frames)
+	} else {
+		mixTwo(b, m, from, frames, c)
+	}
 }

@@ -19203,8 +19203,8 @@ pass:
 	BNE pass
 	RET
 
-// func mix(b *Bank, w *Mix, from, frames int)
-TEXT ·mix(SB), NOSPLIT, $0-32
+// func mixOne(b *Bank, w *Mix, from, frames int)
+TEXT ·mixOne(SB), NOSPLIT, $0-32
 	MOVD $0, R12
 
 pass:
@@ -19223,57 +19223,57 @@ pass:
 	ADD R11<<5, R13, R13
 	MOVD frames+24(FP), R9
 	FMOVQ (Bank_Left+0)(R0), F0
-	FMOVQ (Bank_DLeft+0)(R0), F2
-	FMOVQ (Bank_Right+0)(R0), F1
+	FMOVQ (Bank_DLeft+0)(R0), F1
+	FMOVQ (Bank_Right+0)(R0), F2
 	FMOVQ (Bank_DRight+0)(R0), F3
 
 fours:
 	CMP $4, R9
 	BLT rest
-	FMOVQ 0(R2), F4
-	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
-	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
-	FMOVQ (Mix_Left+0)(R13), F16
-	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
-	FMOVQ F5, (Mix_Left+0)(R13)
-	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
-	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
-	FMOVQ (Mix_Right+0)(R13), F16
-	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
-	FMOVQ F6, (Mix_Right+0)(R13)
-	FMOVQ 32(R2), F4
-	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
-	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
-	FMOVQ (Mix_Left+32)(R13), F16
-	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
-	FMOVQ F5, (Mix_Left+32)(R13)
-	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
-	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
-	FMOVQ (Mix_Right+32)(R13), F16
-	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
-	FMOVQ F6, (Mix_Right+32)(R13)
-	FMOVQ 64(R2), F4
-	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
-	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
-	FMOVQ (Mix_Left+64)(R13), F16
-	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
-	FMOVQ F5, (Mix_Left+64)(R13)
-	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
-	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
-	FMOVQ (Mix_Right+64)(R13), F16
-	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
-	FMOVQ F6, (Mix_Right+64)(R13)
-	FMOVQ 96(R2), F4
-	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
-	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
-	FMOVQ (Mix_Left+96)(R13), F16
-	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
-	FMOVQ F5, (Mix_Left+96)(R13)
-	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
-	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
-	FMOVQ (Mix_Right+96)(R13), F16
-	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
-	FMOVQ F6, (Mix_Right+96)(R13)
+	FMOVQ (Mix_Left+0)(R13), F9
+	FMOVQ (Mix_Right+0)(R13), F10
+	FMOVQ 0(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+0)(R13)
+	FMOVQ F10, (Mix_Right+0)(R13)
+	FMOVQ (Mix_Left+32)(R13), F9
+	FMOVQ (Mix_Right+32)(R13), F10
+	FMOVQ 32(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+32)(R13)
+	FMOVQ F10, (Mix_Right+32)(R13)
+	FMOVQ (Mix_Left+64)(R13), F9
+	FMOVQ (Mix_Right+64)(R13), F10
+	FMOVQ 64(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+64)(R13)
+	FMOVQ F10, (Mix_Right+64)(R13)
+	FMOVQ (Mix_Left+96)(R13), F9
+	FMOVQ (Mix_Right+96)(R13), F10
+	FMOVQ 96(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+96)(R13)
+	FMOVQ F10, (Mix_Right+96)(R13)
 	ADD $128, R2, R2
 	ADD $128, R13, R13
 	SUB $4, R9, R9
@@ -19282,17 +19282,17 @@ fours:
 rest:
 	CMP $0, R9
 	BEQ done
-	FMOVQ 0(R2), F4
-	WORD $0x4e22d400 // fadd v0.4s, v0.4s, v2.4s
-	WORD $0x6e20dc85 // fmul v5.4s, v4.4s, v0.4s
-	FMOVQ (Mix_Left+0)(R13), F16
-	WORD $0x4e30d4a5 // fadd v5.4s, v5.4s, v16.4s
-	FMOVQ F5, (Mix_Left+0)(R13)
-	WORD $0x4e23d421 // fadd v1.4s, v1.4s, v3.4s
-	WORD $0x6e21dc86 // fmul v6.4s, v4.4s, v1.4s
-	FMOVQ (Mix_Right+0)(R13), F16
-	WORD $0x4e30d4c6 // fadd v6.4s, v6.4s, v16.4s
-	FMOVQ F6, (Mix_Right+0)(R13)
+	FMOVQ (Mix_Left+0)(R13), F9
+	FMOVQ (Mix_Right+0)(R13), F10
+	FMOVQ 0(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+0)(R13)
+	FMOVQ F10, (Mix_Right+0)(R13)
 	ADD $32, R2, R2
 	ADD $32, R13, R13
 	SUB $1, R9, R9
@@ -19300,7 +19300,157 @@ rest:
 
 done:
 	FMOVQ F0, (Bank_Left+0)(R0)
-	FMOVQ F1, (Bank_Right+0)(R0)
+	FMOVQ F2, (Bank_Right+0)(R0)
+	ADD $16, R12, R12
+	CMP $32, R12
+	BNE pass
+	RET
+
+// func mixTwo(b *Bank, w *Mix, from, frames int, c *Bank)
+TEXT ·mixTwo(SB), NOSPLIT, $0-40
+	MOVD $0, R12
+
+pass:
+	MOVD b+0(FP), R11
+	ADD R12, R11, R0
+	ADD R12<<1, R11, R1
+	MOVD w+8(FP), R11
+	ADD R12<<1, R11, R7
+	ADD R12, R11, R13
+	ADD $Bench_window, R13, R4
+	ADD $Bench_read, R13, R14
+	ADD $(Bench_read+128), R13, R15
+	MOVD from+16(FP), R11
+	ADD $Bank_Out, R0, R2
+	ADD R11<<5, R2, R2
+	ADD R11<<5, R13, R13
+	MOVD frames+24(FP), R9
+	MOVD c+32(FP), R3
+	ADD R12, R3, R3
+	ADD $Bank_Out, R3, R4
+	ADD R11<<5, R4, R4
+	FMOVQ (Bank_Left+0)(R0), F0
+	FMOVQ (Bank_DLeft+0)(R0), F1
+	FMOVQ (Bank_Right+0)(R0), F2
+	FMOVQ (Bank_DRight+0)(R0), F3
+	FMOVQ (Bank_Left+0)(R3), F4
+	FMOVQ (Bank_DLeft+0)(R3), F5
+	FMOVQ (Bank_Right+0)(R3), F6
+	FMOVQ (Bank_DRight+0)(R3), F7
+
+fours:
+	CMP $4, R9
+	BLT rest
+	FMOVQ (Mix_Left+0)(R13), F9
+	FMOVQ (Mix_Right+0)(R13), F10
+	FMOVQ 0(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ 0(R4), F8
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	WORD $0x6e24dd0b // fmul v11.4s, v8.4s, v4.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e27d4c6 // fadd v6.4s, v6.4s, v7.4s
+	WORD $0x6e26dd0c // fmul v12.4s, v8.4s, v6.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+0)(R13)
+	FMOVQ F10, (Mix_Right+0)(R13)
+	FMOVQ (Mix_Left+32)(R13), F9
+	FMOVQ (Mix_Right+32)(R13), F10
+	FMOVQ 32(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ 32(R4), F8
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	WORD $0x6e24dd0b // fmul v11.4s, v8.4s, v4.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e27d4c6 // fadd v6.4s, v6.4s, v7.4s
+	WORD $0x6e26dd0c // fmul v12.4s, v8.4s, v6.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+32)(R13)
+	FMOVQ F10, (Mix_Right+32)(R13)
+	FMOVQ (Mix_Left+64)(R13), F9
+	FMOVQ (Mix_Right+64)(R13), F10
+	FMOVQ 64(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ 64(R4), F8
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	WORD $0x6e24dd0b // fmul v11.4s, v8.4s, v4.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e27d4c6 // fadd v6.4s, v6.4s, v7.4s
+	WORD $0x6e26dd0c // fmul v12.4s, v8.4s, v6.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+64)(R13)
+	FMOVQ F10, (Mix_Right+64)(R13)
+	FMOVQ (Mix_Left+96)(R13), F9
+	FMOVQ (Mix_Right+96)(R13), F10
+	FMOVQ 96(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ 96(R4), F8
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	WORD $0x6e24dd0b // fmul v11.4s, v8.4s, v4.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e27d4c6 // fadd v6.4s, v6.4s, v7.4s
+	WORD $0x6e26dd0c // fmul v12.4s, v8.4s, v6.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+96)(R13)
+	FMOVQ F10, (Mix_Right+96)(R13)
+	ADD $128, R2, R2
+	ADD $128, R4, R4
+	ADD $128, R13, R13
+	SUB $4, R9, R9
+	JMP fours
+
+rest:
+	CMP $0, R9
+	BEQ done
+	FMOVQ (Mix_Left+0)(R13), F9
+	FMOVQ (Mix_Right+0)(R13), F10
+	FMOVQ 0(R2), F8
+	WORD $0x4e21d400 // fadd v0.4s, v0.4s, v1.4s
+	WORD $0x6e20dd0b // fmul v11.4s, v8.4s, v0.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e23d442 // fadd v2.4s, v2.4s, v3.4s
+	WORD $0x6e22dd0c // fmul v12.4s, v8.4s, v2.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ 0(R4), F8
+	WORD $0x4e25d484 // fadd v4.4s, v4.4s, v5.4s
+	WORD $0x6e24dd0b // fmul v11.4s, v8.4s, v4.4s
+	WORD $0x4e2bd529 // fadd v9.4s, v9.4s, v11.4s
+	WORD $0x4e27d4c6 // fadd v6.4s, v6.4s, v7.4s
+	WORD $0x6e26dd0c // fmul v12.4s, v8.4s, v6.4s
+	WORD $0x4e2cd54a // fadd v10.4s, v10.4s, v12.4s
+	FMOVQ F9, (Mix_Left+0)(R13)
+	FMOVQ F10, (Mix_Right+0)(R13)
+	ADD $32, R2, R2
+	ADD $32, R4, R4
+	ADD $32, R13, R13
+	SUB $1, R9, R9
+	JMP rest
+
+done:
+	FMOVQ F0, (Bank_Left+0)(R0)
+	FMOVQ F2, (Bank_Right+0)(R0)
+	FMOVQ F4, (Bank_Left+0)(R3)
+	FMOVQ F6, (Bank_Right+0)(R3)
 	ADD $16, R12, R12
 	CMP $32, R12
 	BNE pass

@@ -139,7 +139,7 @@ type Kernel struct {
 	plain kinds
 	stiff [MaxSections + 1]kinds  // by the number of sections
 	turn  func(b *Bank, w *Bench) // begins a block of a glide
-	mix   func(b *Bank, m *Mix, from, frames int)
+	mix   func(m *Mix, from, frames int, b, c *Bank)
 }
 
 // kinds is by Motion.
@@ -152,14 +152,14 @@ type run func(b *Bank, w *Bench, force *Force, ahead, from, frames int)
 // String names the processor that the kernel is for.
 func (k Kernel) String() string { return k.name }
 
-// Mix adds frames from to until of a control step to m. In each frame, the gains
-// first move on.
-func (k Kernel) Mix(b *Bank, m *Mix, from, until int) {
+// Mix adds frames from to until of a control step of b, and of c, which may be nil, to m. In each
+// frame, the gains first move on.
+func (k Kernel) Mix(m *Mix, from, until int, b, c *Bank) {
 	if from < 0 || until > Frames {
 		panic("lanes: frames outside the control step")
 	}
 	if from < until {
-		k.mix(b, m, from, until-from)
+		k.mix(m, from, until-from, b, c)
 	}
 }
 

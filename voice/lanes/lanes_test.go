@@ -74,7 +74,7 @@ func play(k Kernel, seed uint64, sections int, motion Motion, cut func() int) (*
 			for l := range b.At {
 				b.At[l] += int64(until - from)
 			}
-			k.Mix(b, m, from, until)
+			k.Mix(m, from, until, b, nil)
 			from = until
 		}
 	}
@@ -166,5 +166,28 @@ func TestBitsAreTheSameEverywhere(t *testing.T) {
 	}
 	if got := h.Sum64(); got != want {
 		t.Errorf("%#x, want %#x", got, uint64(want))
+	}
+}
+
+// TestTwoBanksMixAsOneAfterTheOther compares bits.
+func TestTwoBanksMixAsOneAfterTheOther(t *testing.T) {
+	for _, k := range []Kernel{Best(), Portable()} {
+		for seed := range uint64(5) {
+			b, _, _ := scene(seed, 0)
+			c, _, _ := scene(seed+100, 0)
+			for f := range b.Out {
+				for l := range b.Out[f] {
+					b.Out[f][l], c.Out[f][l] = b.Tap[f%Taps][l], c.Tap[(f+l)%Taps][l]
+				}
+			}
+			b2, c2 := *b, *c
+			one, two := &Mix{}, &Mix{}
+			k.Mix(one, 3, 30, b, nil)
+			k.Mix(one, 3, 30, c, nil)
+			k.Mix(two, 3, 30, &b2, &c2)
+			if *one != *two || *b != b2 || *c != c2 {
+				t.Errorf("%v, seed %d: they differ", k, seed)
+			}
+		}
 	}
 }

@@ -20,7 +20,15 @@ func forSections(still, moving, gliding run) (all [MaxSections + 1]kinds) {
 	return all
 }
 
-func mixLanes(b *Bank, m *Mix, from, frames int) {
+// mixLanes mixes two banks, of which the second may be nil.
+func mixLanes(m *Mix, from, frames int, b, c *Bank) {
+	b.mixInto(m, from, frames)
+	if c != nil {
+		c.mixInto(m, from, frames)
+	}
+}
+
+func (b *Bank) mixInto(m *Mix, from, frames int) {
 	for f := from; f < from+frames; f++ {
 		left, right, out := &m.Left[f], &m.Right[f], &b.Out[f]
 		for l, y := range out {

@@ -11,7 +11,7 @@ func (avx2) goarch() string { return "amd64" }
 func (avx2) width() int     { return 32 }
 
 var avx2Pointers = registers{
-	bank: "BX", bankD: "BX", outs: "R8", mix: "SI", benchF: "SI", sums: "R14", force: "R9", win: "R10", sect: "R11", node: "R12",
+	bank: "BX", bankD: "BX", outs: "R8", bank2: "R9", outs2: "R10", mix: "SI", benchF: "SI", sums: "R14", force: "R9", win: "R10", sect: "R11", node: "R12",
 }
 
 func (a avx2) begin(name string) {
@@ -28,15 +28,23 @@ func (a avx2) begin(name string) {
 	a.put("LEAQ (Bench_read+%d)(SI), R15", 4*floats)
 }
 
-func (a avx2) beginMix(name string) {
-	a.function(name, "b *Bank, w *Mix, from, frames int", 32)
+func (a avx2) beginMix(name string, banks int) {
+	if banks == 1 {
+		a.function(name, "b *Bank, w *Mix, from, frames int", 32)
+	} else {
+		a.function(name, "b *Bank, w *Mix, from, frames int, c *Bank", 40)
+		a.put("MOVQ c+32(FP), R9")
+	}
 	a.put("MOVQ b+0(FP), BX")
 	a.put("MOVQ w+8(FP), SI")
-	a.put("MOVQ from+16(FP), R8")
+	a.put("MOVQ from+16(FP), AX")
 	a.put("MOVQ frames+24(FP), CX")
-	a.put("SHLQ $5, R8")
-	a.put("ADDQ R8, SI")
-	a.put("LEAQ Bank_Out(BX)(R8*1), R8")
+	a.put("SHLQ $5, AX")
+	a.put("ADDQ AX, SI")
+	a.put("LEAQ Bank_Out(BX)(AX*1), R8")
+	if banks > 1 {
+		a.put("LEAQ Bank_Out(R9)(AX*1), R10")
+	}
 }
 
 func (a avx2) beginTurn(name string) {

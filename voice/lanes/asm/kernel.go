@@ -21,7 +21,8 @@ func generate(m machine) string {
 		(&kernel{machine: m, stiff: stiff, moving: true, gliding: true}).write()
 	}
 	(&kernel{machine: m}).writeTurn()
-	(&kernel{machine: m}).writeMix()
+	(&kernel{machine: m}).writeMix("mixOne", mixed{bank, outs})
+	(&kernel{machine: m}).writeMix("mixTwo", mixed{bank, outs}, mixed{bank2, outs2})
 	return m.text().String()
 }
 
@@ -624,27 +625,40 @@ func (k *kernel) writeTurn() {
 	k.end()
 }
 
-// writeMix prints the mix of a bank.
-func (k *kernel) writeMix() {
-	const y, part = 4, 5
+// writeMix prints the mix of one bank, or of two, one after the other in each frame.
+func (k *kernel) writeMix(name string, banks ...mixed) {
+	const first, y, part = 0, 8, 9
 	names := [...]string{"Left", "Right"}
-	k.beginMix("mix")
-	for i, name := range names {
-		k.load(reg(i), mem{bank, "Bank_" + name, 0})
-		k.load(reg(2+i), mem{bank, "Bank_D" + name, 0})
+	// gain and step are a bank's registers for a side of the mix.
+	gain := func(b, i int) reg { return reg(first + 4*b + 2*i) }
+	step := func(b, i int) reg { return gain(b, i) + 1 }
+	k.beginMix(name, len(banks))
+	for b, m := range banks {
+		for i, name := range names {
+			k.load(gain(b, i), mem{m.bank, "Bank_" + name, 0})
+			k.load(step(b, i), mem{m.bank, "Bank_D" + name, 0})
+		}
 	}
 	frames := func(n int) {
 		for f := range n {
-			k.load(y, mem{base: outs, off: f * floats})
 			for i, name := range names {
-				gain, part, at := reg(i), reg(part+i), mem{mix, "Mix_" + name, f * floats}
-				k.addF(gain, gain, reg(2+i))
-				k.mulF(part, y, gain)
-				k.addFm(part, part, at)
-				k.store(at, part)
+				k.load(reg(part+i), mem{mix, "Mix_" + name, f * floats})
+			}
+			for b, m := range banks {
+				k.load(y, mem{base: m.outs, off: f * floats})
+				for i := range names {
+					k.addF(gain(b, i), gain(b, i), step(b, i))
+					k.mulF(reg(part+2+i), y, gain(b, i))
+					k.addF(reg(part+i), reg(part+i), reg(part+2+i))
+				}
+			}
+			for i, name := range names {
+				k.store(mem{mix, "Mix_" + name, f * floats}, reg(part+i))
 			}
 		}
-		k.move(outs, n*floats)
+		for _, m := range banks {
+			k.move(m.outs, n*floats)
+		}
 		k.move(mix, n*floats)
 		k.count(n)
 	}
@@ -657,8 +671,13 @@ func (k *kernel) writeMix() {
 	frames(1)
 	k.jump("rest")
 	k.label("done")
-	for i, name := range names {
-		k.store(mem{bank, "Bank_" + name, 0}, reg(i))
+	for b, m := range banks {
+		for i, name := range names {
+			k.store(mem{m.bank, "Bank_" + name, 0}, gain(b, i))
+		}
 	}
 	k.end()
 }
+
+// mixed is the pointers of a bank that is mixed.
+type mixed struct{ bank, outs pointer }

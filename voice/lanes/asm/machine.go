@@ -26,6 +26,8 @@ const (
 	bank   pointer = iota // the Bank, for floats
 	bankD                 // the Bank, for doubles
 	outs                  // the frame in Bank.Out
+	bank2                 // a second Bank that is mixed
+	outs2                 // the frame in its Out
 	mix                   // the frame in Mix.Left
 	force                 // the frame in the Force
 	benchF                // the Bench
@@ -60,7 +62,7 @@ type machine interface {
 	width() int // bytes of a vector
 
 	begin(name string) // takes the arguments and begins a pass
-	beginMix(name string)
+	beginMix(name string, banks int)
 	beginTurn(name string)
 	end() // ends the pass and returns
 	text() *strings.Builder

@@ -20,7 +20,7 @@ func (neon) goarch() string { return "arm64" }
 func (neon) width() int     { return 16 }
 
 var neonPointers = registers{
-	bank: "R0", bankD: "R1", outs: "R2", mix: "R13", benchF: "R13", sums: "R14", force: "R3", win: "R4", sect: "R5", node: "R6",
+	bank: "R0", bankD: "R1", outs: "R2", bank2: "R3", outs2: "R4", mix: "R13", benchF: "R13", sums: "R14", force: "R3", win: "R4", sect: "R5", node: "R6",
 }
 
 // begin takes the arguments anew in each pass. A float takes four bytes, a
@@ -58,14 +58,24 @@ func (n neon) beginTurn(name string) {
 	n.beginPass()
 }
 
-func (n neon) beginMix(name string) {
-	n.function(name, "b *Bank, w *Mix, from, frames int", 32)
+func (n neon) beginMix(name string, banks int) {
+	if banks == 1 {
+		n.function(name, "b *Bank, w *Mix, from, frames int", 32)
+	} else {
+		n.function(name, "b *Bank, w *Mix, from, frames int, c *Bank", 40)
+	}
 	n.beginPass()
 	n.put("MOVD from+16(FP), R11")
 	n.put("ADD $Bank_Out, R0, R2")
 	n.put("ADD R11<<5, R2, R2")
 	n.put("ADD R11<<5, R13, R13")
 	n.put("MOVD frames+24(FP), R9")
+	if banks > 1 {
+		n.put("MOVD c+32(FP), R3")
+		n.put("ADD R12, R3, R3")
+		n.put("ADD $Bank_Out, R3, R4")
+		n.put("ADD R11<<5, R4, R4")
+	}
 }
 
 func (n neon) end() {
