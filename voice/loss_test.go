@@ -5,13 +5,20 @@ import (
 	"math"
 	"math/cmplx"
 	"math/rand/v2"
+	"sync"
 	"testing"
+
+	"tautwire/voice/lanes"
 )
 
-// tuned puts a string of a mode on a voice of its own.
-func tuned(m *mode, ip *interpolator, f0 float64) *loop {
-	maker := &Maker{rate: m.rate, ip: ip, rows: newRows(ip), smooth: newSmoothing(m.rate, 1), smoothLong: newSmoothing(m.rate, longSteps), smoothLongest: newSmoothing(m.rate, longestSteps)}
-	v := newVoice(maker, 1<<17)
+// sharedRows are the rows of all strings that tuned makes.
+var sharedRows = sync.OnceValue(func() *lanes.Rows { return newRows(newInterpolator()) })
+
+// tuned puts a string of a mode on a voice of its own, with room to be bent by some octaves.
+func tuned(m *mode, ip *interpolator, f0, octaves float64) *loop {
+	maker := &Maker{rate: m.rate, ip: ip, rows: sharedRows()}
+	maker.smooth, maker.smoothLong, maker.smoothLongest = newSmoothing(m.rate, 1), newSmoothing(m.rate, longSteps), newSmoothing(m.rate, longestSteps)
+	v := newVoice(maker, linesFor(f0*math.Exp2(-octaves)/1.2, m.rate)+1024)
 	v.Fit(&Design{maker: maker, pitch: f0, modes: [2]*mode{m}, strings: []strand{{mix: 1}}})
 	return &v.loops[0]
 }
@@ -52,7 +59,7 @@ func TestPartialsKeepTheLaw(t *testing.T) {
 					for key := 21; key <= 108; key += step {
 						f0 := hz(key)
 						law := newLaw(decay, brightness)
-						l := tuned(newMode(law, law, f0, bound.b, rate), ip, f0)
+						l := tuned(newMode(law, law, f0, bound.b, rate), ip, f0, 0)
 						partialsOf(l, law, f0, bound.b, 8000, func(hz, t60, want float64) {
 							e := math.Abs(t60/want - 1)
 							band, limit := 0, bound.low
@@ -83,7 +90,7 @@ func TestNeighboursAreEven(t *testing.T) {
 				for key := 40; key <= 76; key++ {
 					f0 := hz(key)
 					near := math.Round(3000/f0) * f0
-					l := tuned(newMode(law, law, f0, 0, rate), ip, f0)
+					l := tuned(newMode(law, law, f0, 0, rate), ip, f0, 0)
 					gain, trip := l.response(2 * math.Pi * near / rate)
 					if 60*trip/rate/law.t60(near, f0) > 2 {
 						last = 0
@@ -133,7 +140,7 @@ func TestLoopStaysBelowOne(t *testing.T) {
 						law := newLaw(decay, brightness)
 						m := newMode(law, newLaw(min(decay, muted), max(0, brightness-duller)), f0, b, rate)
 						what := fmt.Sprintf("rate %g, key %d, decay %g, brightness %g, B %g", rate, key, decay, brightness, b)
-						l := tuned(m, ip, f0)
+						l := tuned(m, ip, f0, 0)
 						check(what, l)
 						g := &l.glide
 						for range 2 {
@@ -163,7 +170,7 @@ func TestLoopStaysBelowOneOnTheWay(t *testing.T) {
 		f0 := hz(r.IntN(128))
 		law := newLaw(0.05*math.Pow(2400, r.Float64()), r.Float64())
 		m := newMode(law, newLaw(muted, 0), f0, float64(r.IntN(2))*1e-3*r.Float64(), rate)
-		l := tuned(m, ip, f0)
+		l := tuned(m, ip, f0, 4)
 		l.glide.aim = l.hold(f0 * math.Exp2(8*r.Float64()-4))
 		l.wake()
 		l.glide.palmAim = r.Float64()
