@@ -14,7 +14,7 @@ RACE_FLAGS := -race -short -gcflags=github.com/gordonklaus/portaudio=-d=checkptr
 FUZZTIME ?= 10s
 GO ?= go
 
-.PHONY: help run build test race bench fuzz stage
+.PHONY: help run build test race bench fuzz stage arm64
 
 help:
 	@echo 'make run    install what is missing, build, and play (the demo where there is no sound device)'
@@ -22,6 +22,7 @@ help:
 	@echo 'make test   install what is missing, then vet, all tests, and the tests under the race detector'
 	@echo 'make stage  the virtual stage: a keyboard and an audio interface in a virtual machine'
 	@echo 'make race   only the tests under the race detector'
+	@echo 'make arm64  build ./tautwire-arm64 for a small board, and run the tests of strings and engine on it, emulated'
 	@echo 'make bench  benchmarks'
 	@echo 'make fuzz   every fuzz target for FUZZTIME=$(FUZZTIME)'
 
@@ -63,3 +64,15 @@ fuzz:
 
 stage:
 	@.ci/stage/run
+
+# The strings and the engine are Go alone, so that their tests need no libraries.
+ARM64 := GOARCH=arm64 $(if $(filter aarch64,$(shell uname -m)),,CC=aarch64-linux-gnu-gcc \
+	PKG_CONFIG_LIBDIR=/usr/lib/aarch64-linux-gnu/pkgconfig:/usr/share/pkgconfig)
+ON_ARM64 := $(if $(filter aarch64,$(shell uname -m)),,-exec qemu-aarch64)
+
+arm64:
+	@.ci/needs arm64
+	$(ARM64) CGO_ENABLED=1 $(GO) build -o tautwire-arm64 ./cmd/tautwire
+	$(if $(ON_ARM64),qemu-aarch64) ./tautwire-arm64 --version
+	GOARCH=arm64 CGO_ENABLED=0 $(GO) vet ./voice/... ./engine
+	GOARCH=arm64 CGO_ENABLED=0 $(GO) test $(ON_ARM64) -short -timeout 20m ./voice/lanes/... ./voice ./engine
