@@ -73,6 +73,34 @@ func TestPartialsKeepTheLaw(t *testing.T) {
 	}
 }
 
+// TestBentPartialsKeepTheLaw: between the pitches that have been fitted, too.
+func TestBentPartialsKeepTheLaw(t *testing.T) {
+	const rate, low, upper = 48000, 0.03, 0.10 // relative error below 3 kHz, from there to 8 kHz
+	ip := newInterpolator()
+	r := rand.New(rand.NewPCG(3, 3))
+	for _, decay := range []float64{0.3, 1, 5, 30} {
+		for _, brightness := range []float64{0, 0.25, 0.5, 0.75, 1} {
+			law := newLaw(decay, brightness)
+			for key := 21; key <= 108; key += 5 {
+				m := newMode(law, law, hz(key), 0, rate)
+				for _, octaves := range []float64{0.05, 0.3, 1, 3.5} {
+					f0 := min(4000, max(20, hz(key)*math.Exp2(octaves*(2*r.Float64()-1))))
+					partialsOf(tuned(m, ip, f0), law, f0, 0, 8000, func(hz, t60, want float64) {
+						limit := low
+						if hz > 3000 {
+							limit = upper
+						}
+						// the fundamental keeps the decay of the key
+						if e := math.Abs(t60/want - 1); e > limit && hz > 1.5*f0 {
+							t.Errorf("decay %g, brightness %g, key %d bent to %.1f Hz: T60 %.4f s at %.0f Hz, the law says %.4f s", decay, brightness, key, f0, t60, hz, want)
+						}
+					})
+				}
+			}
+		}
+	}
+}
+
 func TestNeighboursAreEven(t *testing.T) {
 	ip := newInterpolator()
 	for _, rate := range rates {
