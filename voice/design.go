@@ -5,12 +5,15 @@ import "math"
 // Maker compiles strings for one sample rate. It holds the tables that all
 // strings of the rate share and may be used from several goroutines.
 type Maker struct {
-	rate float64
-	ip   *interpolator
+	rate   float64
+	ip     *interpolator
+	curves *curves
 }
 
 // NewMaker prepares to make strings for a sample rate in Hz.
-func NewMaker(rate float64) *Maker { return &Maker{rate: rate, ip: newInterpolator()} }
+func NewMaker(rate float64) *Maker {
+	return &Maker{rate: rate, ip: newInterpolator(), curves: newCurves()}
+}
 
 // Rate is the sample rate in Hz.
 func (m *Maker) Rate() float64 { return m.rate }
@@ -64,7 +67,7 @@ func (m *Maker) Design(spec Spec) *Design {
 		d.modes[1] = m.mode(spec, spec.Decay*ratio)
 	}
 	d.strings = strands(spec)
-	d.shape = newShape(spec.Excitation, d.pitch)
+	d.shape = newShape(spec.Excitation, d.pitch, m.curves)
 	d.calibrate()
 	return d
 }

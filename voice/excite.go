@@ -15,7 +15,8 @@ type shape struct {
 	kind     Kind
 	position float64 // part of the string's length
 	length   float64 // s until the source has nothing more to give
-	width    float64 // s: standard deviation of a plucked corner, or a hammer's contact
+	width    float64 // s: standard deviation of a plucked corner, or half a hammer's contact
+	curve    *curve  // of a pluck or a strike
 	open     float64 // Hz: the low-pass of the hardest stroke; 0 is none
 	touch    float64
 	cycle    []float32 // one period of a tone, with its first sample again at the end
@@ -23,20 +24,25 @@ type shape struct {
 	sample   []float32
 	rate     float64   // Hz of the sample
 	gain     float64   // makes the hardest stroke fullLevel loud
-	variants []variant // of a long burst of noise
+	variants []variant // of noise
 }
 
 // newShape compiles an excitation for a fundamental f0 (Hz).
-func newShape(x Excitation, f0 float64) shape {
+func newShape(x Excitation, f0 float64, all *curves) shape {
 	s := shape{kind: x.Kind, position: min(max(x.Position, 0), 0.5), touch: x.Touch, gain: 1}
 	period := 1 / f0
 	switch x.Kind {
 	case Pluck:
 		s.width = least(0.0009*math.Pow(0.018, x.Hardness), 0.12*period)
-		s.length = 10 * s.width
+		s.length = cornerWidths * s.width
+		s.curve = &all.corner
+		if s.position == 0 {
+			s.curve = &all.bump // no point to displace: the corner alone
+		}
 	case Strike:
 		s.width = least(0.005*math.Pow(0.05, x.Hardness), 0.9*period)
 		s.length = 2 * s.width
+		s.curve = &all.push
 	case Tone:
 		s.length = orPeriod(x.Length, period)
 		s.pitch = f0 * max(x.Ratio, 0.01)
@@ -94,6 +100,48 @@ func newCycle(w Wave, pitch float64) []float32 {
 	return out
 }
 
+// curve is a force from its begin to its end, evenly divided; afterwards it stays as it
+// ends. Read between its points in straight lines, it is true to 1e-6.
+type curve [2048 + 1]float32
+
+func (c *curve) at(place float64) float64 {
+	if place < 0 {
+		return 0
+	}
+	i := int(place)
+	if i >= len(c)-1 {
+		return float64(c[len(c)-1])
+	}
+	a, b := float64(c[i]), float64(c[i+1])
+	return a + float64((place-float64(i))*(b-a))
+}
+
+// curves are the forces that have one form for all strings.
+type curves struct {
+	corner curve // a step as a finger of Gaussian width leaves it: what is left when the static force on a displaced string is let go
+	bump   curve // its derivative
+	push   curve // a hammer's
+}
+
+// cornerBegin and cornerWidths are where a Gaussian corner begins and how long it is, in
+// standard deviations.
+const cornerBegin, cornerWidths = -5, 11
+
+func newCurves() *curves {
+	c := &curves{}
+	const last = len(c.corner) - 1
+	for i := range c.corner {
+		part := float64(i) / float64(last)
+		x := cornerBegin + cornerWidths*part
+		c.corner[i] = float32(0.5 * math.Erfc(-x/math.Sqrt2))
+		c.bump[i] = float32(math.Exp(-0.5 * x * x))
+		c.push[i] = float32(0.5 - 0.5*math.Cos(2*math.Pi*part))
+	}
+	// in the end exactly nothing is left of a force and its echo
+	c.corner[last], c.bump[last], c.push[last] = 1, 0, 0
+	return c
+}
+
 // stroke is one excitation under way on one loop: the source's force at the
 // point of the stroke, and its echo from the bridge a part of the period
 // later, which takes out the partials that rest there.
@@ -104,7 +152,8 @@ type stroke struct {
 	frame int
 	last  int // the frame at which it is over
 	gain  float32
-	width float64 // s, as the velocity has it
+	speed float64 // what the source moves on in a frame, in its own measure
+	spent float64 // frames after which the source has nothing more to give
 	echo  float64 // delay of the echo, samples
 	dEcho float64
 
@@ -115,15 +164,14 @@ type stroke struct {
 	y1, y2    float64
 	steady    highPass // leaves nothing of the force on the mean of what is heard
 	fading    highPass // nor on the mean that rings on in the line
+	tail      bool     // only the high-passes have something left
 }
 
 // highPass is (1 - zero/z)/(1 - pole/z), scaled to one at half the rate.
-type highPass struct{ zero, pole, x, y float64 }
+type highPass struct{ zero, pole, scale, x, y float64 }
 
-func (h *highPass) next(x float64) float64 {
-	h.y = float64(h.pole*h.y) + float64((1+h.pole)/(1+h.zero)*(x-float64(h.zero*h.x)))
-	h.x = x
-	return h.y
+func newHighPass(zero, pole float64) highPass {
+	return highPass{zero: zero, pole: pole, scale: (1 + pole) / (1 + zero)}
 }
 
 // start begins a stroke of a velocity (above 0 to 127) on a string at f0 (Hz),
@@ -132,19 +180,32 @@ func (s *stroke) start(sh *shape, ip *interpolator, f0, mean, rate, velocity flo
 	*s = stroke{shape: sh, ip: ip, rate: rate}
 	hard := min(1, max(0, velocity/127))
 	s.gain = float32(sh.gain * hard * hard) // 40 log10(v/127) dB: General MIDI 2
-	s.width = sh.width
-	if sh.kind == Strike {
-		s.width *= math.Pow(max(hard, 0.01), -0.25*sh.touch)
-	}
 	s.echo = sh.position * rate / f0
-	s.now = noiseCursor{seed: seed, length: sh.length * noiseRate}
-	s.back = s.now
+	length := sh.length
+	reach := 0.0 // frames that reading between samples takes
+	switch sh.kind {
+	case Noise:
+		s.speed = noiseRate / rate
+		s.now = noiseCursor{seed: seed, length: length * noiseRate, fall: 1 / (length * noiseRate)}
+		s.back = s.now
+		reach = taps / s.speed
+	case Sample:
+		s.speed = sh.rate / rate
+		reach = taps / s.speed
+	case Tone:
+		s.speed = 1 / rate
+	default:
+		if sh.kind == Strike && sh.touch > 0 {
+			length *= math.Pow(max(hard, 0.01), -0.25*sh.touch)
+		}
+		s.speed = float64(len(sh.curve)-1) / (length * rate)
+	}
+	s.spent = length*rate + reach
 	s.openLow(f0, hard)
 	const below = 0.2 // of the fundamental
 	pole := math.Exp(-2 * math.Pi * below * f0 / rate)
-	s.steady, s.fading = highPass{zero: 1, pole: pole}, highPass{zero: mean, pole: pole}
-	tail := 15 / (1 - pole)
-	s.last = int((sh.length+2*(s.width-sh.width))*rate + s.echo + tail + taps*s.rate/min(s.rate, noiseRate) + 1)
+	s.steady, s.fading = newHighPass(1, pole), newHighPass(mean, pole)
+	s.last = int(s.spent + s.echo + 15/(1-pole) + 1)
 }
 
 // openLow sets the low-pass that opens with the velocity: Jaffe and Smith's
@@ -180,6 +241,10 @@ func (s *stroke) openLow(f0, hard float64) {
 // follow moves the echo with the string's pitch (Hz) over the next Grid frames.
 func (s *stroke) follow(f0 float64) {
 	s.dEcho = (s.shape.position*s.rate/f0 - s.echo) / Grid
+	const nothing = 1e-9 // of the force, -180 dB
+	if !s.tail && float64(s.frame)-s.echo > s.spent && math.Abs(s.y1)+math.Abs(s.y2) < nothing {
+		s.tail = true
+	}
 }
 
 func (s *stroke) over() bool { return s.shape == nil || s.frame >= s.last }
@@ -189,72 +254,116 @@ func (s *stroke) render(e []float32) {
 	if s.over() {
 		return
 	}
-	// not beyond its end, or how the stream is cut would be heard
-	for i := range e[:min(len(e), s.last-s.frame)] {
-		e[i] += float32(s.gain * float32(s.next()))
+	e = e[:min(len(e), s.last-s.frame)] // not beyond its end, or how the stream is cut would be heard
+	if s.tail {
+		s.fade(e)
+		return
+	}
+	var room [Grid]float64
+	for len(e) > 0 {
+		x := room[:min(len(e), Grid)]
+		s.force(x)
+		s.soften(x)
+		s.center(x)
+		for i, v := range x {
+			e[i] += float32(s.gain * float32(v))
+		}
+		e = e[len(x):]
 	}
 }
 
-func (s *stroke) next() float64 {
-	t := float64(s.frame)
-	x := s.source(t, &s.now)
-	if s.shape.position > 0 {
-		x -= s.source(t-s.echo, &s.back)
+// fade is render once nothing comes in to the high-passes any more.
+func (s *stroke) fade(e []float32) {
+	pole, y, z := s.steady.pole, s.steady.y, s.fading.y
+	feed := s.fading.scale * (pole - s.fading.zero)
+	for i := range e {
+		z = float64(pole*z) + float64(feed*y)
+		y *= pole
+		e[i] += float32(s.gain * float32(z))
 	}
-	s.frame++
-	s.echo += s.dEcho
-	if s.low {
-		y := float64(s.b*x) - float64(s.c1*s.y1) - float64(s.c2*s.y2)
-		s.y2, s.y1 = s.y1, y
-		x = y
-	}
-	return s.fading.next(s.steady.next(x))
+	s.steady.y, s.fading.y = y, z
+	s.frame += len(e)
 }
 
-// source is the force t frames after the stroke; t need not be whole. What is
+// force writes the next frames of the source's force, less its echo. What is
 // read between samples starts half a read's length later, so that nothing of it is cut off.
-func (s *stroke) source(t float64, cursor *noiseCursor) float64 {
-	sec := t / s.rate
-	sh := s.shape
-	switch sh.kind {
+func (s *stroke) force(x []float64) {
+	switch s.shape.kind {
 	case Noise:
-		return cursor.at(sec*noiseRate-taps/2, s.ip)
+		for i := range x {
+			x[i] = s.now.at(float64(float64(s.frame+i)*s.speed)-taps/2, s.ip)
+		}
 	case Sample:
-		return s.recorded(sec*sh.rate - taps/2)
-	}
-	if sec < 0 {
-		return 0
-	}
-	switch sh.kind {
-	case Pluck:
-		x := (sec - 5*s.width) / s.width
-		if sh.position == 0 {
-			return math.Exp(-0.5 * x * x) // no point to displace: the corner alone
+		for i := range x {
+			x[i] = s.recorded(float64(float64(s.frame+i)*s.speed) - taps/2)
 		}
-		return corner(x)
-	case Strike:
-		if sec >= 2*s.width {
-			return 0
+	case Tone:
+		for i := range x {
+			x[i] = s.shape.tone(float64(s.frame+i) * s.speed)
 		}
-		return 0.5 - 0.5*math.Cos(math.Pi*sec/s.width)
 	default:
-		if sec >= sh.length {
-			return 0
+		for i := range x {
+			x[i] = s.shape.curve.at(float64(s.frame+i) * s.speed)
 		}
-		return (1 - sec/sh.length) * sh.wave(sec) * swell(sec/min(toneOnset, sh.length/4))
 	}
+	if s.shape.position > 0 {
+		s.subtractEcho(x)
+	}
+	s.frame += len(x)
 }
 
-// corner is a step as a finger of Gaussian width leaves it: what is left when
-// the static force on a displaced string is let go.
-func corner(x float64) float64 {
-	switch {
-	case x < -5:
-		return 0
-	case x > 6:
-		return 1
+// subtractEcho takes the source's echo from the force of the same frames.
+func (s *stroke) subtractEcho(x []float64) {
+	t, echo := float64(s.frame), s.echo
+	switch s.shape.kind {
+	case Noise:
+		for i := range x {
+			x[i] -= s.back.at(float64((t+float64(i)-echo)*s.speed)-taps/2, s.ip)
+			echo += s.dEcho
+		}
+	case Sample:
+		for i := range x {
+			x[i] -= s.recorded(float64((t+float64(i)-echo)*s.speed) - taps/2)
+			echo += s.dEcho
+		}
+	case Tone:
+		for i := range x {
+			x[i] -= s.shape.tone((t + float64(i) - echo) * s.speed)
+			echo += s.dEcho
+		}
+	default:
+		for i := range x {
+			x[i] -= s.shape.curve.at((t + float64(i) - echo) * s.speed)
+			echo += s.dEcho
+		}
 	}
-	return 0.5 * math.Erfc(-x/math.Sqrt2)
+	s.echo = echo
+}
+
+// soften passes frames through the low-pass.
+func (s *stroke) soften(x []float64) {
+	if !s.low {
+		return
+	}
+	b, c1, c2, y1, y2 := s.b, s.c1, s.c2, s.y1, s.y2
+	for i, v := range x {
+		y1, y2 = float64(b*v)-float64(c2*y2)-float64(c1*y1), y1
+		x[i] = y1
+	}
+	s.y1, s.y2 = y1, y2
+}
+
+// center passes frames through the high-passes.
+func (s *stroke) center(x []float64) {
+	a, b := s.steady, s.fading
+	for i, v := range x {
+		a.y = float64(a.pole*a.y) + float64(a.scale*(v-float64(a.zero*a.x)))
+		a.x = v
+		b.y = float64(b.pole*b.y) + float64(b.scale*(a.y-float64(b.zero*b.x)))
+		b.x = a.y
+		x[i] = b.y
+	}
+	s.steady, s.fading = a, b
 }
 
 // toneOnset is how long a tone takes to begin, s: without it, the kink would
@@ -269,27 +378,54 @@ func swell(x float64) float64 {
 	return 0.5 - 0.5*math.Cos(math.Pi*x)
 }
 
-// wave is a tone's value, a time (s) after its start.
-func (s *shape) wave(sec float64) float64 {
+// tone is a fading tone's value, a time (s) after its start.
+func (s *shape) tone(sec float64) float64 {
+	if sec < 0 || sec >= s.length {
+		return 0
+	}
 	turns := sec * s.pitch
 	p := (turns - math.Floor(turns)) * float64(len(s.cycle)-1)
 	i := min(int(p), len(s.cycle)-2)
 	a, b := float64(s.cycle[i]), float64(s.cycle[i+1])
-	return a + (p-float64(i))*(b-a)
+	v := (1 - sec/s.length) * (a + float64((p-float64(i))*(b-a)))
+	if onset := min(toneOnset, s.length/4); sec < onset {
+		v *= swell(sec / onset)
+	}
+	return v
 }
 
 // recorded is the sample at a place between its frames.
 func (s *stroke) recorded(place float64) float64 {
-	whole := int(math.Floor(place))
-	h := &s.ip.table[int((place-float64(whole))*rows)]
+	floor := math.Floor(place)
+	whole, sample := int(floor), s.shape.sample
+	if place == floor {
+		if whole < 0 || whole >= len(sample) {
+			return 0
+		}
+		return float64(sample[whole])
+	}
+	h := &s.ip.table[int((place-floor)*rows)]
+	from := whole - center
+	if from >= 0 && from+taps <= len(sample) {
+		return float64(onward(sample[from:from+taps], h))
+	}
 	sum := float32(0)
 	for i, k := range h {
-		// a delay reads back, a place reads on: the taps are mirrored
-		if j := whole + i - center; j >= 0 && j < len(s.shape.sample) {
-			sum += float32(k * s.shape.sample[j])
+		if j := from + i; j >= 0 && j < len(sample) {
+			sum += float32(k * sample[j])
 		}
 	}
 	return float64(sum)
+}
+
+// onward is the dot product of the taps with samples, both in order: a delay reads back, a
+// place reads on, and so the taps are mirrored.
+func onward(s []float32, h *[taps]float32) float32 {
+	s = s[:taps]
+	a := float32(s[0]*h[0]) + float32(s[1]*h[1]) + float32(s[2]*h[2]) + float32(s[3]*h[3])
+	b := float32(s[4]*h[4]) + float32(s[5]*h[5]) + float32(s[6]*h[6]) + float32(s[7]*h[7])
+	c := float32(s[8]*h[8]) + float32(s[9]*h[9]) + float32(s[10]*h[10]) + float32(s[11]*h[11])
+	return a + (b + c)
 }
 
 // noiseCursor reads a fading burst of white noise at places that grow, though not by
@@ -298,17 +434,20 @@ func (s *stroke) recorded(place float64) float64 {
 type noiseCursor struct {
 	seed   uint64
 	length float64 // samples
+	fall   float64 // 1/length
 	whole  int
 	filled bool
-	window [taps]float32
+	begin  int // of the window
+	recent [2*taps + 4]float32
 }
 
 // sample is sample k of the burst, which fades linearly.
 func (c *noiseCursor) sample(k int) float32 {
-	if k < 0 || float64(k) >= c.length {
+	x := float64(k)
+	if k < 0 || x >= c.length {
 		return 0
 	}
-	return white(c.seed, k) * float32(1-float64(k)/c.length)
+	return white(c.seed, k) * float32(1-float64(x*c.fall))
 }
 
 func (c *noiseCursor) at(place float64, ip *interpolator) float64 {
@@ -317,23 +456,27 @@ func (c *noiseCursor) at(place float64, ip *interpolator) float64 {
 	if place == floor {
 		return float64(c.sample(whole))
 	}
-	switch {
-	case c.filled && whole == c.whole:
-	case c.filled && whole == c.whole+1:
-		copy(c.window[:], c.window[1:])
-		c.window[taps-1] = c.sample(whole + taps - 1 - center)
-	default:
-		for i := range c.window {
-			c.window[i] = c.sample(whole + i - center)
+	if !c.filled || whole != c.whole {
+		c.move(whole)
+	}
+	return float64(onward(c.recent[c.begin:], &ip.table[int((place-floor)*rows)]))
+}
+
+// move has the window lie around a whole place, from where it lay before.
+func (c *noiseCursor) move(whole int) {
+	if c.filled && whole == c.whole+1 {
+		if c.begin++; c.begin+taps > len(c.recent) {
+			copy(c.recent[:], c.recent[c.begin:])
+			c.begin = 0
+		}
+		c.recent[c.begin+taps-1] = c.sample(whole + taps - 1 - center)
+	} else {
+		c.begin = 0
+		for i := range taps {
+			c.recent[i] = c.sample(whole + i - center)
 		}
 	}
 	c.whole, c.filled = whole, true
-	h := &ip.table[int((place-floor)*rows)]
-	sum := float32(0)
-	for i, k := range h {
-		sum += float32(k * c.window[i])
-	}
-	return float64(sum)
 }
 
 // white is sample k of a seed's noise, even over -1 to 1: the finalizer of

@@ -52,7 +52,11 @@ func (v *Voice) rehearse(velocity float64, seed uint64) {
 	for range frames {
 		sum := 0.0
 		for i, s := range d.strings {
-			sum += float64(s.mix) * trial[i].next()
+			var x [1]float64
+			trial[i].force(x[:])
+			trial[i].soften(x[:])
+			trial[i].center(x[:])
+			sum += float64(s.mix) * x[0]
 		}
 		peak = max(peak, math.Abs(sum))
 	}
