@@ -96,7 +96,7 @@ func BenchmarkDesign(b *testing.B) {
 	}
 }
 
-// BenchmarkStrike reports what setting a voice of two strings going costs, for each kind.
+// BenchmarkStrike reports what setting a string going costs, for each kind.
 func BenchmarkStrike(b *testing.B) {
 	m := NewMaker(48000)
 	v := m.NewVoice(8)
@@ -120,7 +120,7 @@ func BenchmarkStroke(b *testing.B) {
 	m := NewMaker(rate)
 	var e [Grid]float32
 	for name, x := range kinds() {
-		x.Position = 0.13
+		x.Position, x.SampleRate = 0.13, rate
 		sh := newShape(x, f0, m.curves)
 		var fresh stroke
 		fresh.start(&sh, m.ip, f0, 0.999, rate, 100, 7)

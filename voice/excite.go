@@ -1,6 +1,11 @@
 package voice
 
-import "math"
+import (
+	"math"
+	"sync"
+
+	"gonum.org/v1/gonum/dsp/fourier"
+)
 
 // fullLevel is the peak of a note struck with velocity 127, -12 dBFS: room for
 // a chord before a limiter has to act.
@@ -19,8 +24,10 @@ type shape struct {
 	curve    *curve  // of a pluck or a strike
 	open     float64 // Hz: the low-pass of the hardest stroke; 0 is none
 	touch    float64
-	cycle    []float32 // one period of a tone, with its first sample again at the end
-	pitch    float64   // Hz of a tone
+	cycle    *curve  // one period of a tone
+	pitch    float64 // Hz of a tone
+	fall     float64 // 1/length of a tone
+	onset    float64 // s that it takes to begin
 	sample   []float32
 	rate     float64   // Hz of the sample
 	gain     float64   // makes the hardest stroke fullLevel loud
@@ -46,7 +53,8 @@ func newShape(x Excitation, f0 float64, all *curves) shape {
 	case Tone:
 		s.length = orPeriod(x.Length, period)
 		s.pitch = f0 * max(x.Ratio, 0.01)
-		s.cycle = newCycle(x.Wave, s.pitch)
+		s.fall, s.onset = 1/s.length, min(toneOnset, s.length/4)
+		s.cycle = all.cycles.of(x.Wave, s.pitch)
 		s.open = openness(x.Hardness, f0)
 	case Sample:
 		s.sample, s.rate = x.Sample, x.SampleRate
@@ -74,43 +82,75 @@ func openness(hardness, f0 float64) float64 {
 	return max(500*math.Pow(44, hardness), 1.5*f0)
 }
 
-// newCycle is a period of a wave with no partial above 18 kHz when it sounds
+// cycles are the periods of waves, made when they are asked for. Its zero value is ready; it
+// may be used from several goroutines.
+type cycles struct {
+	mu   sync.Mutex
+	made map[cycleOf]*curve
+	fft  *fourier.FFT
+}
+
+// cycleOf is a wave cut off at a partial.
+type cycleOf struct {
+	wave    Wave
+	highest int
+}
+
+// of is a period of a wave with no partial above 18 kHz when it sounds
 // at pitch (Hz).
-func newCycle(w Wave, pitch float64) []float32 {
-	const size = 2048
-	highest := min(max(int(18000/pitch), 1), size/8)
-	out := make([]float32, size+1)
-	for i := range out {
-		phase := 2 * math.Pi * float64(i) / size
-		var v float64
-		switch w {
-		case Triangle:
-			for n, sign := 1, 1.0; n <= highest; n, sign = n+2, -sign {
-				v += sign * 8 / (math.Pi * math.Pi) * math.Sin(float64(n)*phase) / float64(n*n)
-			}
-		case Saw:
-			for n := 1; n <= highest; n++ {
-				v += 2 / math.Pi * math.Sin(float64(n)*phase) / float64(n)
-			}
-		default:
-			v = math.Sin(phase)
-		}
+func (c *cycles) of(w Wave, pitch float64) *curve {
+	key := cycleOf{w, min(max(int(18000/pitch), 1), curvePoints/8)}
+	if w == Sine {
+		key.highest = 1
+	}
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	if c.made == nil {
+		c.made, c.fft = map[cycleOf]*curve{}, fourier.NewFFT(curvePoints)
+	}
+	if done := c.made[key]; done != nil {
+		return done
+	}
+	partials := make([]complex128, curvePoints/2+1)
+	for n := 1; n <= key.highest; n++ {
+		partials[n] = complex(0, -key.wave.partial(n)/2)
+	}
+	out := &curve{}
+	for i, v := range c.fft.Sequence(nil, partials) {
 		out[i] = float32(v)
 	}
+	out[curvePoints] = out[0]
+	c.made[key] = out
 	return out
+}
+
+// partial is the amplitude of a wave's partial n, a sine.
+func (w Wave) partial(n int) float64 {
+	k := float64(n)
+	switch {
+	case w == Saw:
+		return 2 / math.Pi / k
+	case w == Triangle && n%4 == 1:
+		return 8 / (math.Pi * math.Pi) / (k * k)
+	case w == Triangle && n%4 == 3:
+		return -8 / (math.Pi * math.Pi) / (k * k)
+	}
+	return one(w == Sine && n == 1)
 }
 
 // curve is a force from its begin to its end, evenly divided; afterwards it stays as it
 // ends. Read between its points in straight lines, it is true to 1e-6.
-type curve [2048 + 1]float32
+const curvePoints = 2048
+
+type curve [curvePoints + 1]float32
 
 func (c *curve) at(place float64) float64 {
 	if place < 0 {
 		return 0
 	}
 	i := int(place)
-	if i >= len(c)-1 {
-		return float64(c[len(c)-1])
+	if i >= curvePoints {
+		return float64(c[curvePoints])
 	}
 	a, b := float64(c[i]), float64(c[i+1])
 	return a + float64((place-float64(i))*(b-a))
@@ -118,9 +158,12 @@ func (c *curve) at(place float64) float64 {
 
 // curves are the forces that have one form for all strings.
 type curves struct {
-	corner curve // a step as a finger of Gaussian width leaves it: what is left when the static force on a displaced string is let go
+	// corner is a step as a finger of Gaussian width leaves it: what is left when
+	// the static force on a displaced string is let go
+	corner curve
 	bump   curve // its derivative
 	push   curve // a hammer's
+	cycles cycles
 }
 
 // cornerBegin and cornerWidths are where a Gaussian corner begins and how long it is, in
@@ -129,7 +172,7 @@ const cornerBegin, cornerWidths = -5, 11
 
 func newCurves() *curves {
 	c := &curves{}
-	const last = len(c.corner) - 1
+	const last = curvePoints
 	for i := range c.corner {
 		part := float64(i) / float64(last)
 		x := cornerBegin + cornerWidths*part
@@ -162,16 +205,12 @@ type stroke struct {
 	low       bool
 	b, c1, c2 float64 // low-pass that opens with the velocity
 	y1, y2    float64
-	steady    highPass // leaves nothing of the force on the mean of what is heard
-	fading    highPass // nor on the mean that rings on in the line
-	tail      bool     // only the high-passes have something left
-}
 
-// highPass is (1 - zero/z)/(1 - pole/z), scaled to one at half the rate.
-type highPass struct{ zero, pole, scale, x, y float64 }
-
-func newHighPass(zero, pole float64) highPass {
-	return highPass{zero: zero, pole: pole, scale: (1 + pole) / (1 + zero)}
+	// Two high-passes (1 - zero/z)/(1 - pole/z): of the zeros one, at one, leaves nothing of the
+	// force on the mean of what is heard, and one nothing on the mean that rings on in the line.
+	pole, zero float64
+	x, u, v    float64 // the last that came in, that went on to the second, that came out
+	tail       bool    // only the high-passes have something left
 }
 
 // start begins a stroke of a velocity (above 0 to 127) on a string at f0 (Hz),
@@ -179,15 +218,15 @@ func newHighPass(zero, pole float64) highPass {
 func (s *stroke) start(sh *shape, ip *interpolator, f0, mean, rate, velocity float64, seed uint64) {
 	*s = stroke{shape: sh, ip: ip, rate: rate}
 	hard := min(1, max(0, velocity/127))
-	s.gain = float32(sh.gain * hard * hard) // 40 log10(v/127) dB: General MIDI 2
 	s.echo = sh.position * rate / f0
 	length := sh.length
 	reach := 0.0 // frames that reading between samples takes
 	switch sh.kind {
 	case Noise:
 		s.speed = noiseRate / rate
-		s.now = noiseCursor{seed: seed, length: length * noiseRate, fall: 1 / (length * noiseRate)}
-		s.back = s.now
+		for _, c := range [2]*noiseCursor{&s.now, &s.back} {
+			c.seed, c.length, c.fall = seed, length*noiseRate, 1/(length*noiseRate)
+		}
 		reach = taps / s.speed
 	case Sample:
 		s.speed = sh.rate / rate
@@ -198,13 +237,15 @@ func (s *stroke) start(sh *shape, ip *interpolator, f0, mean, rate, velocity flo
 		if sh.kind == Strike && sh.touch > 0 {
 			length *= math.Pow(max(hard, 0.01), -0.25*sh.touch)
 		}
-		s.speed = float64(len(sh.curve)-1) / (length * rate)
+		s.speed = curvePoints / (length * rate)
 	}
 	s.spent = length*rate + reach
 	s.openLow(f0, hard)
 	const below = 0.2 // of the fundamental
 	pole := math.Exp(-2 * math.Pi * below * f0 / rate)
-	s.steady, s.fading = newHighPass(1, pole), newHighPass(mean, pole)
+	s.pole, s.zero = pole, mean
+	level := (1 + pole) * (1 + pole) / (2 * (1 + mean)) // of the high-passes: one at half the rate
+	s.gain = float32(sh.gain * level * hard * hard)     // 40 log10(v/127) dB: General MIDI 2
 	s.last = int(s.spent + s.echo + 15/(1-pole) + 1)
 }
 
@@ -242,9 +283,7 @@ func (s *stroke) openLow(f0, hard float64) {
 func (s *stroke) follow(f0 float64) {
 	s.dEcho = (s.shape.position*s.rate/f0 - s.echo) / Grid
 	const nothing = 1e-9 // of the force, -180 dB
-	if !s.tail && float64(s.frame)-s.echo > s.spent && math.Abs(s.y1)+math.Abs(s.y2) < nothing {
-		s.tail = true
-	}
+	s.tail = s.tail || float64(s.frame)-s.echo > s.spent && math.Abs(s.y1)+math.Abs(s.y2) < nothing
 }
 
 func (s *stroke) over() bool { return s.shape == nil || s.frame >= s.last }
@@ -263,8 +302,7 @@ func (s *stroke) render(e []float32) {
 	for len(e) > 0 {
 		x := room[:min(len(e), Grid)]
 		s.force(x)
-		s.soften(x)
-		s.center(x)
+		s.filter(x)
 		for i, v := range x {
 			e[i] += float32(s.gain * float32(v))
 		}
@@ -274,96 +312,121 @@ func (s *stroke) render(e []float32) {
 
 // fade is render once nothing comes in to the high-passes any more.
 func (s *stroke) fade(e []float32) {
-	pole, y, z := s.steady.pole, s.steady.y, s.fading.y
-	feed := s.fading.scale * (pole - s.fading.zero)
+	pole, u, v := s.pole, s.u, s.v
+	feed := pole - s.zero
 	for i := range e {
-		z = float64(pole*z) + float64(feed*y)
-		y *= pole
-		e[i] += float32(s.gain * float32(z))
+		v = float64(pole*v) + float64(feed*u)
+		u *= pole
+		e[i] += float32(s.gain * float32(v))
 	}
-	s.steady.y, s.fading.y = y, z
+	s.u, s.v = u, v
 	s.frame += len(e)
 }
 
-// force writes the next frames of the source's force, less its echo. What is
-// read between samples starts half a read's length later, so that nothing of it is cut off.
+// force writes the next frames of the source's force, less its echo.
 func (s *stroke) force(x []float64) {
-	switch s.shape.kind {
-	case Noise:
-		for i := range x {
-			x[i] = s.now.at(float64(float64(s.frame+i)*s.speed)-taps/2, s.ip)
-		}
-	case Sample:
-		for i := range x {
-			x[i] = s.recorded(float64(float64(s.frame+i)*s.speed) - taps/2)
-		}
-	case Tone:
-		for i := range x {
-			x[i] = s.shape.tone(float64(s.frame+i) * s.speed)
-		}
-	default:
-		for i := range x {
-			x[i] = s.shape.curve.at(float64(s.frame+i) * s.speed)
-		}
-	}
+	s.source(x, 0, 0, &s.now)
 	if s.shape.position > 0 {
-		s.subtractEcho(x)
+		var room [Grid]float64
+		back := room[:len(x)]
+		s.echo = s.source(back, s.echo, s.dEcho, &s.back)
+		for i := range x {
+			x[i] -= back[i]
+		}
 	}
 	s.frame += len(x)
 }
 
-// subtractEcho takes the source's echo from the force of the same frames.
-func (s *stroke) subtractEcho(x []float64) {
-	t, echo := float64(s.frame), s.echo
-	switch s.shape.kind {
+// source writes the next frames of the force as it was some frames ago, a delay that
+// grows by drift with each; it returns the delay after them. What is
+// read between samples starts half a read's length later, so that nothing of it is cut off.
+func (s *stroke) source(x []float64, delay, drift float64, cursor *noiseCursor) float64 {
+	sh := s.shape
+	burst := sh.kind == Noise || sh.kind == Sample
+	if burst && s.speed == 1 && drift == 0 {
+		s.inStep(x, delay, cursor)
+		return delay
+	}
+	// one loop for each, or asking for the kind would cost as much as the source
+	at, speed := float64(s.frame), s.speed
+	switch sh.kind {
 	case Noise:
 		for i := range x {
-			x[i] -= s.back.at(float64((t+float64(i)-echo)*s.speed)-taps/2, s.ip)
-			echo += s.dEcho
+			x[i] = cursor.at(float64((at-delay)*speed)-taps/2, s.ip)
+			at, delay = at+1, delay+drift
 		}
 	case Sample:
 		for i := range x {
-			x[i] -= s.recorded(float64((t+float64(i)-echo)*s.speed) - taps/2)
-			echo += s.dEcho
+			x[i] = sh.recorded(float64((at-delay)*speed)-taps/2, s.ip)
+			at, delay = at+1, delay+drift
 		}
 	case Tone:
 		for i := range x {
-			x[i] -= s.shape.tone((t + float64(i) - echo) * s.speed)
-			echo += s.dEcho
+			x[i] = sh.tone((at - delay) * speed)
+			at, delay = at+1, delay+drift
 		}
 	default:
 		for i := range x {
-			x[i] -= s.shape.curve.at((t + float64(i) - echo) * s.speed)
-			echo += s.dEcho
+			x[i] = sh.curve.at((at - delay) * speed)
+			at, delay = at+1, delay+drift
 		}
 	}
-	s.echo = echo
+	return delay
 }
 
-// soften passes frames through the low-pass.
-func (s *stroke) soften(x []float64) {
-	if !s.low {
+// inStep is source for samples that are as far apart as the frames.
+func (s *stroke) inStep(x []float64, delay float64, cursor *noiseCursor) {
+	floor := math.Floor(-delay)
+	part := -delay - floor
+	from := s.frame + int(floor) - taps/2
+	if part > 0 {
+		from -= center
+	}
+	var near []float32 // those that the read needs
+	switch count := len(x) + taps - 1; {
+	case s.shape.kind == Noise:
+		near = cursor.window(from, count)
+	case from >= 0 && from+count <= len(s.shape.sample):
+		near = s.shape.sample[from : from+count]
+	default:
+		var room [Grid + taps - 1]float32
+		near = room[:count]
+		for i := range near {
+			if j := from + i; j >= 0 && j < len(s.shape.sample) {
+				near[i] = s.shape.sample[j]
+			}
+		}
+	}
+	if part == 0 {
+		for i := range x {
+			x[i] = float64(near[i])
+		}
 		return
 	}
-	b, c1, c2, y1, y2 := s.b, s.c1, s.c2, s.y1, s.y2
-	for i, v := range x {
-		y1, y2 = float64(b*v)-float64(c2*y2)-float64(c1*y1), y1
-		x[i] = y1
+	h := s.ip.table[int(part*rows)]
+	for i := range x {
+		x[i] = float64(onward(near[i:i+taps], &h))
 	}
-	s.y1, s.y2 = y1, y2
 }
 
-// center passes frames through the high-passes.
-func (s *stroke) center(x []float64) {
-	a, b := s.steady, s.fading
-	for i, v := range x {
-		a.y = float64(a.pole*a.y) + float64(a.scale*(v-float64(a.zero*a.x)))
-		a.x = v
-		b.y = float64(b.pole*b.y) + float64(b.scale*(a.y-float64(b.zero*b.x)))
-		b.x = a.y
-		x[i] = b.y
+// filter passes frames through the low-pass and the high-passes.
+func (s *stroke) filter(f []float64) {
+	b, c1, c2, y1, y2 := s.b, s.c1, s.c2, s.y1, s.y2
+	pole, zero, x, u, v := s.pole, s.zero, s.x, s.u, s.v
+	low := s.low
+	for i, in := range f {
+		if low {
+			in = float64(b*in) - float64(c2*y2) - float64(c1*y1)
+			y1, y2 = in, y1
+		}
+		was := u
+		u = float64(pole*u) + (in - x)
+		x = in
+		v = float64(pole*v) + (u - float64(zero*was))
+		f[i] = v
 	}
-	s.steady, s.fading = a, b
+	s.y1, s.y2 = y1, y2
+	s.x, s.u, s.v = x, u, v
 }
 
 // toneOnset is how long a tone takes to begin, s: without it, the kink would
@@ -383,36 +446,29 @@ func (s *shape) tone(sec float64) float64 {
 	if sec < 0 || sec >= s.length {
 		return 0
 	}
-	turns := sec * s.pitch
-	p := (turns - math.Floor(turns)) * float64(len(s.cycle)-1)
-	i := min(int(p), len(s.cycle)-2)
-	a, b := float64(s.cycle[i]), float64(s.cycle[i+1])
-	v := (1 - sec/s.length) * (a + float64((p-float64(i))*(b-a)))
-	if onset := min(toneOnset, s.length/4); sec < onset {
-		v *= swell(sec / onset)
+	p := sec * s.pitch * curvePoints
+	i := int(p)
+	k := i % curvePoints
+	a, b := float64(s.cycle[k]), float64(s.cycle[k+1])
+	v := (1 - float64(sec*s.fall)) * (a + float64((p-float64(i))*(b-a)))
+	if sec < s.onset {
+		v *= swell(sec / s.onset)
 	}
 	return v
 }
 
 // recorded is the sample at a place between its frames.
-func (s *stroke) recorded(place float64) float64 {
+func (s *shape) recorded(place float64, ip *interpolator) float64 {
 	floor := math.Floor(place)
-	whole, sample := int(floor), s.shape.sample
-	if place == floor {
-		if whole < 0 || whole >= len(sample) {
-			return 0
-		}
-		return float64(sample[whole])
-	}
-	h := &s.ip.table[int((place-floor)*rows)]
-	from := whole - center
-	if from >= 0 && from+taps <= len(sample) {
-		return float64(onward(sample[from:from+taps], h))
+	from := int(floor) - center
+	h := &ip.table[int((place-floor)*rows)]
+	if from >= 0 && from+taps <= len(s.sample) {
+		return float64(onward(s.sample[from:from+taps], h))
 	}
 	sum := float32(0)
 	for i, k := range h {
-		if j := from + i; j >= 0 && j < len(sample) {
-			sum += float32(k * sample[j])
+		if j := from + i; j >= 0 && j < len(s.sample) {
+			sum += float32(k * s.sample[j])
 		}
 	}
 	return float64(sum)
@@ -435,10 +491,9 @@ type noiseCursor struct {
 	seed   uint64
 	length float64 // samples
 	fall   float64 // 1/length
-	whole  int
-	filled bool
-	begin  int // of the window
-	recent [2*taps + 4]float32
+	// recent holds count samples, from number first on
+	recent       [Grid + 2*taps]float32
+	first, count int
 }
 
 // sample is sample k of the burst, which fades linearly.
@@ -450,33 +505,28 @@ func (c *noiseCursor) sample(k int) float32 {
 	return white(c.seed, k) * float32(1-float64(x*c.fall))
 }
 
+// at reads between the samples.
 func (c *noiseCursor) at(place float64, ip *interpolator) float64 {
 	floor := math.Floor(place)
-	whole := int(floor)
-	if place == floor {
-		return float64(c.sample(whole))
-	}
-	if !c.filled || whole != c.whole {
-		c.move(whole)
-	}
-	return float64(onward(c.recent[c.begin:], &ip.table[int((place-floor)*rows)]))
+	near := c.window(int(floor)-center, taps)
+	return float64(onward(near, &ip.table[int((place-floor)*rows)]))
 }
 
-// move has the window lie around a whole place, from where it lay before.
-func (c *noiseCursor) move(whole int) {
-	if c.filled && whole == c.whole+1 {
-		if c.begin++; c.begin+taps > len(c.recent) {
-			copy(c.recent[:], c.recent[c.begin:])
-			c.begin = 0
-		}
-		c.recent[c.begin+taps-1] = c.sample(whole + taps - 1 - center)
-	} else {
-		c.begin = 0
-		for i := range taps {
-			c.recent[i] = c.sample(whole + i - center)
-		}
+// window gives n samples, at most Grid + taps, from number from on. Those that it gave last are not
+// made again.
+func (c *noiseCursor) window(from, n int) []float32 {
+	at := from - c.first
+	switch {
+	case at < 0 || at > c.count:
+		c.first, c.count, at = from, 0, 0
+	case at+n > len(c.recent):
+		c.first, c.count, at = from, copy(c.recent[:], c.recent[at:c.count]), 0
 	}
-	c.whole, c.filled = whole, true
+	for k := c.count; k < at+n; k++ {
+		c.recent[k] = c.sample(c.first + k)
+	}
+	c.count = max(c.count, at+n)
+	return c.recent[at : at+n]
 }
 
 // white is sample k of a seed's noise, even over -1 to 1: the finalizer of

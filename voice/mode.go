@@ -275,6 +275,12 @@ func (t twoPole) lowest() float64 {
 	return math.Sqrt(max(0, least))
 }
 
+// meanKeeps is what the line's mean value keeps of itself in a frame, at a pitch that is a
+// part of the rate.
+func (c *coefficients) meanKeeps(pitch float64) float64 {
+	return math.Pow(c.gain*real(c.loss.response(1)), pitch)
+}
+
 // rest is the response at z of the loss filter and the first n sections.
 func (c *coefficients) rest(z complex128, n int) complex128 {
 	out := c.loss.response(z)

@@ -64,8 +64,7 @@ func (v *Voice) Fit(d *Design) {
 			v.strokes[i][j] = stroke{}
 		}
 	}
-	const hear = 0.02 // s
-	v.leak = min(1, Grid/(v.maker.rate*max(hear, 2/d.pitch)))
+	v.leak = leak(d.pitch, v.maker.rate)
 	v.fresh, v.phase, v.energy, v.power, v.fading, v.fade = true, 0, 0, 0, false, 1
 	v.cents, v.strain, v.palm, v.dark = 0, 0, 0, 0
 }
@@ -95,18 +94,12 @@ func (v *Voice) Strike(d *Design, velocity float64, seed uint64) {
 			s.gain *= float32(gain)
 		}
 	}
-	if d.shape.kind == Noise && len(d.shape.variants) == 0 {
-		v.rehearse(velocity, seed)
-	}
 }
 
-// latest is the stroke of loop i that began last.
-func (v *Voice) latest(i int) *stroke {
-	a, b := &v.strokes[i][0], &v.strokes[i][1]
-	if a.shape == nil || (b.shape != nil && b.frame < a.frame) {
-		return b
-	}
-	return a
+// leak is the part of a voice's energy that a control step takes, at a pitch (Hz).
+func leak(pitch, rate float64) float64 {
+	const hear = 0.02 // s
+	return min(1, Grid/(rate*max(hear, 2/pitch)))
 }
 
 // Tune moves the strings to a pitch, cents from the design's own. A sounding
