@@ -206,12 +206,13 @@ func (d *dispersionFit) slopes(s []section, tamed *[maxSections]bool, j *[fitPar
 // run improves sections for at most steps steps.
 func (d *dispersionFit) run(start []section) []section {
 	const steps = 40
+	widest := math.Log(100 / d.t0) // a section beyond does nothing at any frequency
 	n := 2 * len(start)
 	var room, other [maxSections]section
 	var tamed, tamedNext [maxSections]bool
 	at := func(u *[unknowns]float64, s []section, tamed *[maxSections]bool) {
 		for i := range s {
-			free := section{math.Exp(u[2*i]), math.Exp(u[2*i+1])}
+			free := section{math.Exp(min(u[2*i], widest)), math.Exp(min(u[2*i+1], 2*widest))}
 			s[i] = tame(free, d.t0)
 			tamed[i] = s[i] != free
 		}

@@ -50,7 +50,7 @@ type place struct {
 }
 
 // axisSteps is how many places an octave of an axis has.
-const axisSteps = 8
+const axisSteps = 6
 
 // newAxis begins an axis at lowest (Hz).
 func newAxis(lowest, rate float64) axis {
@@ -108,7 +108,7 @@ func (q *lossFit) prepare(l law, f0 float64, a *axis, from int, trip func(p *pla
 	q.own = nepers(f0, trip(&q.first))
 
 	top := min(9000, 0.45*q.rate)
-	const enough = 2.5 // octaves for each place of the axis that one step takes
+	const enough = 3 // octaves for each place of the axis that one step takes
 	skip := max(1, int(math.Log2(top/f0)/enough+0.5))
 	const gone = 0.4 // 3.5 dB a trip: gone at once
 	q.points = 0
@@ -171,7 +171,12 @@ func (q *lossFit) poles(s shelf) (t twoPole, worst float64) {
 	}
 	p1, p2, worst := even(at[:q.points], bounds[:])
 	p1, p2 = lift(p0, x0, p1, p2, least)
-	return factor(p0-p1*x0-p2*x0*x0, p1, p2), worst
+	t = factor(p0-p1*x0-p2*x0*x0, p1, p2)
+	for !t.stable() { // of what is gone within a trip, rounding may leave a pole at one
+		const inward = 1 - 1e-5
+		t = twoPole{t.c1 * inward, t.c2 * inward * inward}
+	}
+	return t, worst
 }
 
 // lossBounds is at how many places the parabola is held above its least value.

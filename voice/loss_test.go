@@ -177,6 +177,28 @@ func TestLoopStaysBelowOne(t *testing.T) {
 	}
 }
 
+// TestFitsAreStable looks at each filter of the tables, also where a trip takes all.
+func TestFitsAreStable(t *testing.T) {
+	for _, rate := range append([]float64{8000, 192000}, rates...) {
+		for key := range 128 {
+			for _, decay := range []float64{0.005, 0.05, 120} {
+				for _, brightness := range []float64{0, 1} {
+					for _, b := range []float64{0, 2e-3} {
+						m := newMode(newLaw(decay, brightness), newLaw(min(decay, muted), max(0, brightness-duller)), hz(key), b, rate)
+						for _, table := range []lossTable{m.open, m.dull} {
+							for i, l := range table.at {
+								if !l.stable() {
+									t.Errorf("rate %g, key %d, decay %g, brightness %g, B %g: filter %d of %d is %v", rate, key, decay, brightness, b, i, len(table.at), l)
+								}
+							}
+						}
+					}
+				}
+			}
+		}
+	}
+}
+
 // TestLoopStaysBelowOneOnTheWay sweeps the gain while a string glides between two
 // pitches, when taps and filters are those of neither.
 func TestLoopStaysBelowOneOnTheWay(t *testing.T) {

@@ -27,7 +27,7 @@ type lossTable struct {
 const (
 	// openStep and dullStep are the distance between two loss filters, in steps of the axis.
 	openStep = 2
-	dullStep = 4
+	dullStep = 6
 	// bendReach is how far (octaves) from its key a string has loss filters of
 	// its own: what a pitch wheel can do. Beyond, the last one serves.
 	bendReach = 4

@@ -75,5 +75,6 @@ func (q *lossFit) shelf(corner float64) shelf {
 	if den == 0 {
 		return shelf{corner: corner} // nothing to serve, yet it goes on with its neighbours
 	}
-	return shelf{drop: 1 - math.Exp(-max(0, num/den)), corner: corner}
+	const deepest = 7 // nepers, 60 dB: with more, nothing is left within a trip
+	return shelf{drop: 1 - math.Exp(-min(deepest, max(0, num/den))), corner: corner}
 }
