@@ -58,13 +58,13 @@ func (m *Maker) Design(spec Spec) *Design {
 	if spec.Release <= 0 {
 		d.release = 0
 	}
-	d.modes[0] = m.mode(spec, spec.Decay)
+	d.modes[0] = m.mode(spec, spec.Decay, &mode{})
 	if spec.SecondMix > 0 {
 		ratio := spec.SecondDecay
 		if ratio == 0 {
 			ratio = 1
 		}
-		d.modes[1] = m.mode(spec, spec.Decay*ratio)
+		d.modes[1] = m.mode(spec, spec.Decay*ratio, d.modes[0])
 	}
 	d.strings = strands(spec)
 	d.shape = newShape(spec.Excitation, d.pitch, m.curves)
@@ -72,11 +72,12 @@ func (m *Maker) Design(spec Spec) *Design {
 	return d
 }
 
-// mode compiles one polarization of a spec, with a decay (s) of its own.
-func (m *Maker) mode(spec Spec, decay float64) *mode {
+// mode compiles one polarization of a spec, with a decay (s) of its own, beside another that is
+// compiled already, or empty.
+func (m *Maker) mode(spec Spec, decay float64, like *mode) *mode {
 	open := newLaw(decay, spec.Brightness)
 	dull := newLaw(min(decay, muted), max(0, spec.Brightness-duller))
-	return newMode(open, dull, spec.Frequency, spec.Inharmonicity, m.rate)
+	return newModeLike(like, open, dull, spec.Frequency, spec.Inharmonicity, m.rate)
 }
 
 // strands lays out the loops of a spec, both planes of each string of the course.

@@ -53,33 +53,46 @@ func StiffPartial(n int, f1, b float64) float64 {
 // fitDispersion fits allpass sections that put the first partials of a string
 // of fundamental f0 (Hz) and stiffness b where StiffPartial has them, as many as 16 below
 // 10 kHz. lossLag is the loss filter's phase lag (radians) at w. It takes as few sections as
-// reach a tenth of a cent, or those that come nearest.
+// come near enough, or those that come nearest. like is none, or the sections of
+// a string that differs in nothing but its losses.
 //
 // The method: Levenberg and Marquardt on the phase condition at the partials;
 // after Rauhala and Välimäki, "Tunable Dispersion Filter Design for Piano
 // Synthesis", IEEE Signal Processing Letters 13(5), 2006, and Abel and Smith, "Robust Design of
 // Very High-Order Allpass Dispersion Filters", DAFx 2006, whose sections all
 // follow one curve; here each is free.
-func fitDispersion(f0, b, rate float64, lossLag func(w float64) float64) []section {
+func fitDispersion(f0, b, rate float64, lossLag func(w float64) float64, like []section) []section {
 	var fit dispersionFit
 	if b <= 0 || !fit.prepare(f0, b, rate, lossLag) {
 		return nil
 	}
-	const enough, spare = 0.1, 3 // cents; samples of the period that the sections must leave
 	best, bestWorst := []section(nil), fit.worst(nil)
+	try := func(start []section) {
+		const spare = 3 // samples of the period that the sections must leave
+		s := fit.run(start)
+		if fit.delay(s) < taps/2+spare {
+			return
+		}
+		if w := fit.worst(s); w < bestWorst {
+			best, bestWorst = s, w
+		}
+	}
+	if len(like) > 0 {
+		if try(like); best != nil {
+			return best
+		}
+	}
 	for k := 1; k <= maxSections && bestWorst > enough; k++ {
-		for _, start := range [2][]section{scaled(seeds[k], b), fit.neutral(k)} {
-			s := fit.run(start)
-			if fit.delay(s) < taps/2+spare {
-				continue
-			}
-			if w := fit.worst(s); w < bestWorst {
-				best, bestWorst = s, w
-			}
+		try(scaled(seeds[k], b))
+		if bestWorst > enough && fit.partials < fitPartials {
+			try(fit.neutral(k))
 		}
 	}
 	return best
 }
+
+// enough is how near (cents) to its place every partial is to be.
+const enough = 0.1
 
 func scaled(s []section, b float64) []section {
 	out := make([]section, len(s))
@@ -259,7 +272,7 @@ func (d *dispersionFit) run(start []section) []section {
 			}
 			damping *= 4
 		}
-		if !improved || cost < 1e-4 {
+		if !improved || cost < enough*enough/4 {
 			break
 		}
 	}

@@ -40,6 +40,12 @@ const topPitch = 0.4
 // newMode compiles a string of fundamental f0 (Hz) and stiffness b, with the
 // laws of the open string and of the muted one.
 func newMode(open, dull law, f0, b, rate float64) *mode {
+	return newModeLike(&mode{}, open, dull, f0, b, rate)
+}
+
+// newModeLike is newMode beside one that is compiled already and differs in nothing but
+// its laws: it need not look far.
+func newModeLike(like *mode, open, dull law, f0, b, rate float64) *mode {
 	const bottom = 1.0 // Hz
 	m := &mode{rate: rate, law: open, dullDecay: dull.decay, lowest: bottom}
 	f0 = min(f0, topPitch*rate)
@@ -51,8 +57,11 @@ func newMode(open, dull law, f0, b, rate float64) *mode {
 	var q lossFit
 	hard := q.alone(open, f0, &a, below*axisSteps)
 	if b > 0 {
-		m.sections = fitDispersion(f0, b, rate, hard.lag)
-		m.placeShelf(&q, open, f0, &a, below*axisSteps, hard)
+		m.sections = fitDispersion(f0, b, rate, hard.lag, like.sections)
+		m.shelfCorner = like.shelfCorner
+		if len(like.sections) == 0 {
+			m.placeShelf(&q, open, f0, &a, below*axisSteps, hard)
+		}
 	}
 	soft := q.alone(dull, f0, &a, below*axisSteps)
 	m.open = m.tabulate(&q, open, f0, hard, &a, below, openStep)
