@@ -9,9 +9,12 @@ import (
 // the fewer samples a period has. So a design is played when it is made: once, or with noise
 // as several bursts, each with a gain of its own, of which every stroke takes one.
 
-// variants is how many bursts of noise a design knows, few those of a burst
-// that is so long that the string has to be played along.
-const variants, few = 8, 4
+const (
+	// fewest and most are how many bursts of noise a design knows.
+	fewest, most = 3, 8
+	// effort is how long (s) all of them may be together, of all strings.
+	effort = 0.25
+)
 
 // variant is a burst of noise's seed with the logarithms of the gains that give it its
 // peak, at some velocities.
@@ -50,7 +53,7 @@ func (d *Design) calibrate() {
 			return
 		}
 	}
-	r := newRehearsal(d, tense)
+	r := newRehearsal(d, 1, tense)
 	peak := r.play(hardest, seed)[0]
 	if peak == 0 {
 		d.shape.gain = 0 // an empty sample: a string that nothing moves
@@ -67,15 +70,12 @@ func (d *Design) calibrate() {
 
 // vary makes bursts of noise and finds their gains.
 func (d *Design) vary() {
-	r := newRehearsal(d, false)
-	velocities, count := variantVelocities[:], variants
+	velocities := variantVelocities[:]
 	if d.shape.touch == 0 {
 		velocities = velocities[len(velocities)-1:] // all others are alike
 	}
-	if r.rings {
-		count = few
-	}
-	d.shape.variants = make([]variant, count)
+	r := newRehearsal(d, len(velocities), false)
+	d.shape.variants = make([]variant, min(max(int(effort/(r.lasts*float64(len(r.parts)))), fewest), most))
 	for i := range d.shape.variants {
 		v := &d.shape.variants[i]
 		v.seed = mix64(uint64(i) + 1)
@@ -90,6 +90,7 @@ func (d *Design) vary() {
 type rehearsal struct {
 	d      *Design
 	rate   float64 // Hz
+	lasts  float64 // s: the force
 	parts  []strand
 	rings  bool // the force lasts until it meets its own return, and so the strings sound along
 	joined bool // the parts go the same way for as long as the force lasts
@@ -100,29 +101,31 @@ type rehearsal struct {
 	mean   [2]float64
 }
 
-// newRehearsal prepares for the force of a stroke and, where it meets its own return or is asked for, what
-// the string does meanwhile and for some periods more.
-func newRehearsal(d *Design, along bool) *rehearsal {
+// newRehearsal prepares to play strokes of up to count velocities for as long as their force lasts. Where it
+// meets its own return, the string goes along; where that is asked for, for some
+// periods more.
+func newRehearsal(d *Design, count int, along bool) *rehearsal {
 	const longest = 1.0 // s
 	const alike = 0.1   // periods that parts may drift apart meanwhile
 	const fewSamples = 300
 	sh, m := &d.shape, d.maker
 	r := &rehearsal{d: d, rate: m.rate, parts: d.strings}
 	period := 1 / d.pitch
-	lasts := min(sh.length, longest) + sh.position*period
-	r.rings = lasts > period || along
+	r.lasts = min(sh.length, longest) + sh.position*period
+	many := sh.kind == Noise && r.lasts*noiseRate > fewSamples // the return of its end changes its peak little
+	r.rings = along || sh.length > 1.001*period || r.lasts > period && !many
 	low, high := 0.0, 0.0
 	for _, s := range d.strings {
 		low, high = min(low, s.cents), max(high, s.cents)
 	}
-	r.joined = !r.rings || (octaves(high-low)-1)*lasts < alike*period
+	r.joined = !r.rings || (octaves(high-low)-1)*r.lasts < alike*period
 	if r.joined && sh.kind != Noise {
 		r.parts = []strand{{mode: d.strings[0].mode, mix: 1}}
 	}
-	if sh.kind == Noise && !r.rings && lasts*noiseRate > fewSamples {
-		r.rate = noiseRate // the noise's own, which needs the least work; with few samples the peak depends on where they are
+	if many && !r.rings {
+		r.rate = noiseRate // its own, which needs the least work; with few samples the peak depends on where they are
 	}
-	frames := int(lasts*r.rate) + 3*taps
+	frames := int(r.lasts*r.rate) + 3*taps
 	if along {
 		frames = int((min(sh.length, longest) + 3*period) * r.rate)
 	}
@@ -137,7 +140,7 @@ func newRehearsal(d *Design, along bool) *rehearsal {
 			r.before = max(r.before, int(longest.delay)+2*taps)
 		}
 	}
-	for i := range r.sound {
+	for i := range count {
 		r.sound[i] = make([]float32, r.before+frames)
 	}
 	if !r.joined {
@@ -152,17 +155,17 @@ func (r *rehearsal) play(velocities []float64, seed uint64) (peaks [len(variantV
 	for _, sound := range sounds {
 		clear(sound)
 	}
-	for i, part := range r.parts {
-		if r.joined {
-			r.force(sounds, velocities, part, strandSeed(seed, i))
-			continue
-		}
-		for j, sound := range sounds {
-			clear(r.alone)
-			r.force([][]float32{r.alone}, velocities[j:j+1], part, strandSeed(seed, i))
-			r.ring(r.alone, part)
-			for k, y := range r.alone {
-				sound[k] += y
+	if r.joined {
+		r.force(sounds, velocities, r.parts, seed)
+	} else {
+		for i, part := range r.parts {
+			for j, sound := range sounds {
+				clear(r.alone)
+				r.force([][]float32{r.alone}, velocities[j:j+1], r.parts[i:i+1], strandSeed(seed, i))
+				r.ring(r.alone, part)
+				for k, y := range r.alone {
+					sound[k] += y
+				}
 			}
 		}
 	}
@@ -179,24 +182,36 @@ func (r *rehearsal) play(velocities []float64, seed uint64) (peaks [len(variantV
 	return peaks
 }
 
-// force adds the force on a strand to a sound for each velocity.
-func (r *rehearsal) force(sounds [][]float32, velocities []float64, part strand, seed uint64) {
-	var strokes [len(variantVelocities)]stroke
+// force adds the force on strands that go the same way to a sound for each velocity.
+func (r *rehearsal) force(sounds [][]float32, velocities []float64, parts []strand, seed uint64) {
+	var sources [maxLoops]stroke
+	var filters [len(variantVelocities)]stroke // one for all parts: they differ in cents alone
 	var gains [len(variantVelocities)]float32
-	f0 := r.d.pitch * octaves(part.cents)
-	for i, velocity := range velocities {
-		s, hard := &strokes[i], velocity/127
-		s.start(&r.d.shape, r.d.maker.ip, f0, r.mean[part.mode], r.rate, velocity, seed)
-		gains[i] = part.mix * s.gain / float32(hard*hard)
+	start := func(s *stroke, part strand, velocity float64, seed uint64) {
+		s.start(&r.d.shape, r.d.maker.ip, r.d.pitch*octaves(part.cents), r.mean[part.mode], r.rate, velocity, seed)
 	}
-	var room, filtered [Grid]float64
+	for i, part := range parts {
+		start(&sources[i], part, velocities[0], strandSeed(seed, i))
+	}
+	for i, velocity := range velocities {
+		start(&filters[i], parts[0], velocity, seed)
+		hard := velocity / 127
+		gains[i] = filters[i].gain / float32(hard*hard)
+	}
+	var one, sum, filtered [Grid]float64
 	for at := r.before; at < len(sounds[0]); at += Grid {
-		force := room[:min(Grid, len(sounds[0])-at)]
-		strokes[0].force(force)
+		n := min(Grid, len(sounds[0])-at)
+		clear(sum[:n])
+		for i, part := range parts {
+			sources[i].force(one[:n])
+			for k, v := range one[:n] {
+				sum[k] += float64(part.mix) * v
+			}
+		}
 		for i, sound := range sounds {
-			x := filtered[:len(force)]
-			copy(x, force)
-			strokes[i].filter(x)
+			x := filtered[:n]
+			copy(x, sum[:n])
+			filters[i].filter(x)
 			for k, v := range x {
 				sound[at+k] += gains[i] * float32(v)
 			}
@@ -260,13 +275,13 @@ func (c *coefficients) stillTaps(ip *interpolator, sections int, w float64) (h [
 // been played at the hardest velocity alone.
 func (r *rehearsal) energy() float64 {
 	leak := leak(r.d.pitch, r.rate)
-	energy, most, power := 0.0, 0.0, 0.0
+	energy, highest, power := 0.0, 0.0, 0.0
 	for i, y := range r.sound[0][r.before:] {
 		power += float64(y * y)
 		if i%Grid == Grid-1 {
 			energy += (power/Grid - energy) * leak
-			most, power = max(most, energy), 0
+			highest, power = max(highest, energy), 0
 		}
 	}
-	return most
+	return highest
 }
