@@ -75,14 +75,32 @@ func BenchmarkHeldKeys(b *testing.B) {
 	}
 }
 
-// BenchmarkCompile reports ms for all 128 keys of a plain patch.
+// BenchmarkCompile reports ms for all 128 keys: of a plain patch, of one with
+// each refinement of the string that a fit needs, and of each built-in one.
 func BenchmarkCompile(b *testing.B) {
-	for b.Loop() {
-		if _, err := Compile(stays(), testRate); err != nil {
+	full := stays()
+	z := &full.Zones[0]
+	z.Inharmonicity = constant(3e-4)
+	z.Second = config.Second{Mix: constant(0.3), Cents: constant(0.5), Decay: constant(1.5)}
+	z.Course = config.Course{Strings: constant(2), Cents: constant(3)}
+	patches := []*config.Patch{stays(), full}
+	patches[1].Path = "stiff, two planes, courses"
+	for _, name := range config.Builtins() {
+		p, err := config.LoadPatch(name)
+		if err != nil {
 			b.Fatal(err)
 		}
+		patches = append(patches, p)
 	}
-	b.ReportMetric(float64(b.Elapsed().Milliseconds())/float64(b.N), "ms/patch")
+	for _, p := range patches {
+		b.Run(p.Path, func(b *testing.B) {
+			for b.Loop() {
+				compiled(b, p, testRate)
+			}
+			b.ReportMetric(b.Elapsed().Seconds()*1e3/float64(b.N), "ms/patch")
+			b.ReportMetric(0, "ns/op")
+		})
+	}
 }
 
 // BenchmarkHush reports what silencing a body of the longest impulse response costs the callback at once.

@@ -100,14 +100,63 @@ func BenchmarkDesign(b *testing.B) {
 	}
 }
 
-// BenchmarkStrike reports what a stroke costs, a burst of noise's rehearsal included.
+// BenchmarkStrike reports what setting a string going costs, for each kind.
 func BenchmarkStrike(b *testing.B) {
 	m := NewMaker(48000)
 	v := m.NewVoice(8)
-	spec := plain(hz(40), 4, 0.5)
-	spec.Excitation = Excitation{Kind: Noise, Hardness: 0.8, Position: 0.13}
-	d := m.Design(spec)
+	for name, x := range kinds() {
+		b.Run(name, func(b *testing.B) {
+			spec := plain(hz(40), 4, 0.5)
+			x.Position = 0.13
+			spec.Excitation = x
+			d := m.Design(spec)
+			for b.Loop() {
+				v.Strike(d, 100, uint64(b.N))
+			}
+		})
+	}
+}
+
+// BenchmarkStroke reports ns per sample of the force of one stroke, for each kind: while its
+// source gives, and of the tail afterwards.
+func BenchmarkStroke(b *testing.B) {
+	const rate, f0 = 48000, 80.0
+	m := NewMaker(rate)
+	var e [Grid]float32
+	for name, x := range kinds() {
+		x.Position, x.SampleRate = 0.13, rate
+		sh := newShape(x, f0, m.curves)
+		var fresh stroke
+		fresh.start(&sh, m.ip, f0, 0.999, rate, 100, 7)
+		spent := fresh
+		for float64(spent.frame)-spent.echo < spent.spent+200 {
+			spent.follow(f0)
+			spent.render(e[:])
+		}
+		for _, part := range []struct {
+			name  string
+			begin stroke
+			last  int
+		}{{"source", fresh, int(fresh.spent)}, {"tail", spent, spent.last}} {
+			b.Run(name+"/"+part.name, func(b *testing.B) {
+				s := part.begin
+				for b.Loop() {
+					if s.frame+Grid > part.last {
+						s = part.begin
+					}
+					s.follow(f0)
+					s.render(e[:])
+				}
+				b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N)/Grid, "ns/sample")
+				b.ReportMetric(0, "ns/op")
+			})
+		}
+	}
+}
+
+// BenchmarkMaker reports what the tables of a rate take.
+func BenchmarkMaker(b *testing.B) {
 	for b.Loop() {
-		v.Strike(d, 100, uint64(b.N))
+		NewMaker(48000)
 	}
 }

@@ -11,6 +11,7 @@ import (
 type Maker struct {
 	rate                              float64
 	ip                                *interpolator
+	curves                            *curves
 	rows                              *lanes.Rows
 	smooth, smoothLong, smoothLongest *smoothing
 }
@@ -18,7 +19,10 @@ type Maker struct {
 // NewMaker prepares to make strings for a sample rate in Hz.
 func NewMaker(rate float64) *Maker {
 	ip := newInterpolator()
-	return &Maker{rate: rate, ip: ip, rows: newRows(ip), smooth: newSmoothing(rate, 1), smoothLong: newSmoothing(rate, longSteps), smoothLongest: newSmoothing(rate, longestSteps)}
+	return &Maker{
+		rate: rate, ip: ip, curves: newCurves(), rows: newRows(ip),
+		smooth: newSmoothing(rate, 1), smoothLong: newSmoothing(rate, longSteps), smoothLongest: newSmoothing(rate, longestSteps),
+	}
 }
 
 // Rate is the sample rate in Hz.
@@ -33,7 +37,7 @@ type Design struct {
 	strings []strand
 	release float64 // 1/T60 (1/s) that the damper adds
 	tension float64 // cents
-	hardest float64 // energy of the hardest stroke, at its start
+	hardest float64 // energy of the hardest stroke, at its start, where there is tension
 	shape   shape
 }
 
@@ -64,25 +68,26 @@ func (m *Maker) Design(spec Spec) *Design {
 	if spec.Release <= 0 {
 		d.release = 0
 	}
-	d.modes[0] = m.mode(spec, spec.Decay)
+	d.modes[0] = m.mode(spec, spec.Decay, &mode{})
 	if spec.SecondMix > 0 {
 		ratio := spec.SecondDecay
 		if ratio == 0 {
 			ratio = 1
 		}
-		d.modes[1] = m.mode(spec, spec.Decay*ratio)
+		d.modes[1] = m.mode(spec, spec.Decay*ratio, d.modes[0])
 	}
 	d.strings = strands(spec)
-	d.shape = newShape(spec.Excitation, d.pitch)
+	d.shape = newShape(spec.Excitation, d.pitch, m.curves)
 	d.calibrate()
 	return d
 }
 
-// mode compiles one polarization of a spec, with a decay (s) of its own.
-func (m *Maker) mode(spec Spec, decay float64) *mode {
+// mode compiles one polarization of a spec, with a decay (s) of its own, beside another that is
+// compiled already, or empty.
+func (m *Maker) mode(spec Spec, decay float64, like *mode) *mode {
 	open := newLaw(decay, spec.Brightness)
 	dull := newLaw(min(decay, muted), max(0, spec.Brightness-duller))
-	return newMode(open, dull, spec.Frequency, spec.Inharmonicity, m.rate)
+	return newModeLike(like, open, dull, spec.Frequency, spec.Inharmonicity, m.rate)
 }
 
 // strands lays out the loops of a spec, both planes of each string of the course.
@@ -103,59 +108,6 @@ func strands(spec Spec) []strand {
 		}
 	}
 	return out
-}
-
-// calibrate strikes the design on a voice of its own and sets its gain by the
-// peak. The gain of noise is set for each burst, see rehearse.
-func (d *Design) calibrate() {
-	period := 1 / d.pitch
-	slot := int(2.1*d.maker.rate*period) + 16*Grid + 2*taps // room for strings tuned lower
-	v := newVoice(d.maker, len(d.strings)*slot)
-	out := make([]float32, int(d.maker.rate*(min(d.shape.length, 1)+3*period)))
-	switch {
-	case d.shape.kind != Noise:
-		peak, energy := v.try(d, out, 127, 1)
-		if peak == 0 {
-			d.shape.gain = 0 // an empty sample: a string that nothing moves
-			return
-		}
-		d.shape.gain = fullLevel / peak
-		d.hardest = energy * d.shape.gain * d.shape.gain
-	case d.shape.length <= 1.001*period:
-		_, d.hardest = v.try(d, out, 127, 1)
-	default:
-		d.shape.variants = d.vary(v, out)
-		_, d.hardest = v.try(d, out, 127, 1)
-	}
-}
-
-// vary plays some long bursts and sets their gains.
-func (d *Design) vary(v *Voice, out []float32) []variant {
-	made := make([]variant, variants)
-	for i := range made {
-		made[i].seed = mix64(uint64(i) + 1)
-		d.shape.variants = []variant{{seed: made[i].seed, gains: [...]float64{1, 1, 1}}}
-		for j, velocity := range variantVelocities {
-			hard := velocity / 127
-			peak, _ := v.try(d, out, velocity, 0)
-			made[i].gains[j] = fullLevel * hard * hard / peak
-		}
-	}
-	return made
-}
-
-// try strikes a design on an empty voice and finds the peak and the highest energy.
-func (v *Voice) try(d *Design, out []float32, velocity float64, seed uint64) (peak, energy float64) {
-	v.Reset()
-	v.Strike(d, velocity, seed)
-	for at := 0; at < len(out); at += Grid {
-		v.Render(out[at:min(at+Grid, len(out))], nil)
-		energy = max(energy, v.Energy())
-	}
-	for _, y := range out {
-		peak = max(peak, math.Abs(float64(y)))
-	}
-	return peak, energy
 }
 
 // Single is the design reduced to one string in one plane, without tension, for

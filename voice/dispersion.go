@@ -2,8 +2,7 @@ package voice
 
 import (
 	"math"
-
-	"gonum.org/v1/gonum/mat"
+	"slices"
 )
 
 // maxSections is how many allpass sections a stiff string may have.
@@ -54,48 +53,46 @@ func StiffPartial(n int, f1, b float64) float64 {
 // fitDispersion fits allpass sections that put the first partials of a string
 // of fundamental f0 (Hz) and stiffness b where StiffPartial has them, as many as 16 below
 // 10 kHz. lossLag is the loss filter's phase lag (radians) at w. It takes as few sections as
-// reach a tenth of a cent, or those that come nearest.
+// come near enough, or those that come nearest. like is none, or the sections of
+// a string that differs in nothing but its losses.
 //
 // The method: Levenberg and Marquardt on the phase condition at the partials;
 // after Rauhala and Välimäki, "Tunable Dispersion Filter Design for Piano
 // Synthesis", IEEE Signal Processing Letters 13(5), 2006, and Abel and Smith, "Robust Design of
 // Very High-Order Allpass Dispersion Filters", DAFx 2006, whose sections all
 // follow one curve; here each is free.
-func fitDispersion(f0, b, rate float64, lossLag func(w float64) float64) []section {
-	if b <= 0 {
+func fitDispersion(f0, b, rate float64, lossLag func(w float64) float64, like []section) []section {
+	var fit dispersionFit
+	if b <= 0 || !fit.prepare(f0, b, rate, lossLag) {
 		return nil
 	}
-	var partials []float64
-	for n := 1; n <= 16; n++ {
-		f := StiffPartial(n, f0, b)
-		if n > 1 && f > min(10000, 0.45*rate) {
-			break
-		}
-		partials = append(partials, 2*math.Pi*f/rate)
-	}
-	if len(partials) < 2 {
-		return nil
-	}
-	fit := dispersionFit{b: b, w: partials, t0: math.Tan(partials[0] / 2)}
-	fit.loss = make([]float64, len(partials))
-	for i, w := range partials {
-		fit.loss[i] = lossLag(w)
-	}
-	const enough, spare = 0.1, 3 // cents; samples of the period that the sections must leave
 	best, bestWorst := []section(nil), fit.worst(nil)
+	try := func(start []section) {
+		const spare = 3 // samples of the period that the sections must leave
+		s := fit.run(start)
+		if fit.delay(s) < taps/2+spare {
+			return
+		}
+		if w := fit.worst(s); w < bestWorst {
+			best, bestWorst = s, w
+		}
+	}
+	if len(like) > 0 {
+		if try(like); best != nil {
+			return best
+		}
+	}
 	for k := 1; k <= maxSections && bestWorst > enough; k++ {
-		for _, start := range [2][]section{scaled(seeds[k], b), fit.neutral(k)} {
-			s := fit.run(start)
-			if fit.delay(s) < taps/2+spare {
-				continue
-			}
-			if w := fit.worst(s); w < bestWorst {
-				best, bestWorst = s, w
-			}
+		try(scaled(seeds[k], b))
+		if bestWorst > enough && fit.partials < fitPartials {
+			try(fit.neutral(k))
 		}
 	}
 	return best
 }
+
+// enough is how near (cents) to its place every partial is to be.
+const enough = 0.1
 
 func scaled(s []section, b float64) []section {
 	out := make([]section, len(s))
@@ -105,9 +102,37 @@ func scaled(s []section, b float64) []section {
 	return out
 }
 
+// fitPartials is how many partials the sections are fitted to.
+const fitPartials = 16
+
+// dispersionFit is the partials of a stiff string, the first at 0.
 type dispersionFit struct {
-	b, t0   float64
-	w, loss []float64 // of each partial: radians per sample, the loss filter's lag
+	t0       float64
+	partials int
+	w, v     [fitPartials]float64 // radians per sample; tan(w/2)/t0
+	loss     [fitPartials]float64 // the loss filter's lag, radians
+	turns    [fitPartials]float64 // the phase at which a partial is in its place
+	cents    [fitPartials]float64 // that a radian of phase moves it
+}
+
+// prepare tells whether there is anything to fit.
+func (d *dispersionFit) prepare(f0, b, rate float64, lossLag func(w float64) float64) bool {
+	d.t0 = math.Tan(math.Pi * f0 / rate)
+	for i := range fitPartials {
+		f := StiffPartial(i+1, f0, b)
+		if i > 0 && f > min(10000, 0.45*rate) {
+			break
+		}
+		d.w[i] = 2 * math.Pi * f / rate
+		d.v[i] = math.Tan(d.w[i]/2) / d.t0
+		d.loss[i] = lossLag(d.w[i])
+		n := float64(i + 1)
+		d.turns[i] = 2 * math.Pi * n
+		const cents = 1200 / math.Ln2
+		d.cents[i] = cents / d.turns[i] * (1 + 2*b*n*n) / (1 + b*n*n)
+		d.partials = i + 1
+	}
+	return d.partials > 1
 }
 
 // neutral starts k sections for high keys and small b: together almost a delay.
@@ -120,105 +145,174 @@ func (d *dispersionFit) neutral(k int) []section {
 	return out
 }
 
+// lag is the phase (radians) by which sections and the loss filter delay partial i.
 func (d *dispersionFit) lag(s []section, i int) float64 {
-	v := math.Tan(d.w[i]/2) / d.t0
-	sum := d.loss[i]
-	for _, x := range s {
-		sum += x.lag(v)
+	sum, v := 0.5*d.loss[i], d.v[i]
+	for ; len(s) > 1; s = s[2:] {
+		// each lags by at most half a turn, so that one arc tangent tells of two
+		a, b := complex(s[0].q-v*v, s[0].p*v), complex(s[1].q-v*v, s[1].p*v)
+		both := a * b
+		angle := math.Atan2(imag(both), real(both))
+		if angle < 0 {
+			angle += 2 * math.Pi
+		}
+		sum += angle
 	}
-	return sum
+	if len(s) > 0 {
+		sum += math.Atan2(s[0].p*v, s[0].q-v*v)
+	}
+	return 2 * sum
 }
 
 // delay is what is left to the line (samples) when the first partial is in tune.
 func (d *dispersionFit) delay(s []section) float64 {
-	return (2*math.Pi - d.lag(s, 0)) / d.w[0]
+	return (d.turns[0] - d.lag(s, 0)) / d.w[0]
 }
 
-// residual is how far partial i+1 is from its place, in cents.
-func (d *dispersionFit) residual(s []section, delay float64, i int) float64 {
-	n := float64(i + 1)
-	stretch := (1 + 2*d.b*n*n) / (1 + d.b*n*n)
-	const cents = 1200 / math.Ln2
-	return cents / (2 * math.Pi * n) * stretch * (d.lag(s, i) + delay*d.w[i] - 2*math.Pi*n)
+// residuals are how far the partials above the first are from their places, in cents. It returns the sum of their squares.
+func (d *dispersionFit) residuals(s []section, r *[fitPartials]float64) (cost float64) {
+	delay := d.delay(s)
+	for i := 1; i < d.partials; i++ {
+		r[i] = d.cents[i] * (d.lag(s, i) + delay*d.w[i] - d.turns[i])
+		cost += r[i] * r[i]
+	}
+	return cost
 }
 
-func (d *dispersionFit) worst(s []section) float64 {
-	delay, worst := d.delay(s), 0.0
-	for i := 1; i < len(d.w); i++ {
-		worst = max(worst, math.Abs(d.residual(s, delay, i)))
+func (d *dispersionFit) worst(s []section) (worst float64) {
+	var r [fitPartials]float64
+	d.residuals(s, &r)
+	for _, x := range r {
+		worst = max(worst, math.Abs(x))
 	}
 	return worst
+}
+
+// unknowns is how many numbers a fit may have to find.
+const unknowns = 2 * maxSections
+
+// slopes are the derivatives of all residuals by the logarithms of p and q of each section.
+func (d *dispersionFit) slopes(s []section, tamed *[maxSections]bool, j *[fitPartials][unknowns]float64) {
+	var first [unknowns]float64
+	for i := range d.partials {
+		v := d.v[i]
+		for k, x := range s {
+			re, im := x.q-v*v, x.p*v
+			turn := 2 / (re*re + im*im)
+			byP, byQ := turn*v*re*x.p, -turn*im*x.q
+			if tamed[k] {
+				t := x.q * d.t0 * d.t0 // p goes as 1 + q t0^2
+				byP, byQ = 0, byQ+byP*t/(1+t)
+			}
+			j[i][2*k], j[i][2*k+1] = byP, byQ
+		}
+		if i == 0 {
+			first = j[0]
+		}
+		part := d.w[i] / d.w[0]
+		for c := range 2 * len(s) {
+			j[i][c] = d.cents[i] * (j[i][c] - part*first[c])
+		}
+	}
 }
 
 // run improves sections for at most steps steps.
 func (d *dispersionFit) run(start []section) []section {
 	const steps = 40
-	rows, cols := len(d.w)-1, 2*len(start)
-	at := func(u []float64) []section {
-		s := make([]section, cols/2)
+	widest := math.Log(100 / d.t0) // a section beyond does nothing at any frequency
+	n := 2 * len(start)
+	var room, other [maxSections]section
+	var tamed, tamedNext [maxSections]bool
+	at := func(u *[unknowns]float64, s []section, tamed *[maxSections]bool) {
 		for i := range s {
-			s[i] = section{math.Exp(u[2*i]), math.Exp(u[2*i+1])}
-			s[i] = tame(s[i], d.t0)
+			free := section{math.Exp(min(u[2*i], widest)), math.Exp(min(u[2*i+1], 2*widest))}
+			s[i] = tame(free, d.t0)
+			tamed[i] = s[i] != free
 		}
-		return s
 	}
-	residuals := func(u []float64, r []float64) float64 {
-		s := at(u)
-		delay, sum := d.delay(s), 0.0
-		for i := range r {
-			r[i] = d.residual(s, delay, i+1)
-			sum += r[i] * r[i]
-		}
-		return sum
-	}
-	u := make([]float64, cols)
+	var u, trial, step [unknowns]float64
 	for i, s := range start {
 		u[2*i], u[2*i+1] = math.Log(s.p), math.Log(s.q)
 	}
-	r, r2, trial := make([]float64, rows), make([]float64, rows), make([]float64, cols)
-	jacobian, step := mat.NewDense(rows, cols, nil), mat.NewVecDense(cols, nil)
-	cost, damping := residuals(u, r), 1e-2
+	s, next := room[:n/2], other[:n/2]
+	at(&u, s, &tamed)
+	var r, r2 [fitPartials]float64
+	cost, damping := d.residuals(s, &r), 1e-2
 	for range steps {
-		for c := range cols {
-			const h = 1e-6
-			copy(trial, u)
-			trial[c] += h
-			residuals(trial, r2)
-			for i := range rows {
-				jacobian.Set(i, c, (r2[i]-r[i])/h)
+		var j [fitPartials][unknowns]float64
+		d.slopes(s, &tamed, &j)
+		var square [unknowns][unknowns]float64
+		var g [unknowns]float64
+		for i := 1; i < d.partials; i++ {
+			for a := range n {
+				for b := range a + 1 {
+					square[a][b] += j[i][a] * j[i][b]
+				}
+				g[a] += j[i][a] * r[i]
 			}
 		}
-		var jj mat.SymDense
-		jj.SymOuterK(1, jacobian.T())
-		var g mat.VecDense
-		g.MulVec(jacobian.T(), mat.NewVecDense(rows, r))
 		improved := false
 		for range 8 {
-			damped := mat.NewSymDense(cols, nil)
-			damped.CopySym(&jj)
-			for c := range cols {
-				damped.SetSym(c, c, jj.At(c, c)*(1+damping)+1e-12)
+			damped := square
+			for c := range n {
+				damped[c][c] = square[c][c]*(1+damping) + 1e-12
 			}
-			var chol mat.Cholesky
-			if chol.Factorize(damped) && chol.SolveVecTo(step, &g) == nil {
-				for c := range cols {
-					trial[c] = u[c] - step.AtVec(c)
+			if solve(&damped, &g, &step, n) {
+				for c := range n {
+					trial[c] = u[c] - step[c]
 				}
-				if next := residuals(trial, r2); next < cost {
-					improved = cost-next > 1e-9*cost
-					cost, damping = next, damping/5
-					copy(u, trial)
-					copy(r, r2)
+				at(&trial, next, &tamedNext)
+				if less := d.residuals(next, &r2); less < cost {
+					improved = cost-less > 1e-9*cost
+					cost, damping = less, damping/5
+					u, r = trial, r2
+					s, next, tamed = next, s, tamedNext
 					break
 				}
 			}
 			damping *= 4
 		}
-		if !improved || cost < 1e-4 {
+		if !improved || cost < enough*enough/4 {
 			break
 		}
 	}
-	return at(u)
+	return slices.Clone(s)
+}
+
+// solve finds x in m x = g, m positive definite, its lower half given, by
+// Cholesky's way; it tells whether m is.
+func solve(m *[unknowns][unknowns]float64, g, x *[unknowns]float64, n int) bool {
+	for i := range n {
+		for j := range i + 1 {
+			sum := m[i][j]
+			for k := range j {
+				sum -= m[i][k] * m[j][k]
+			}
+			switch {
+			case j < i:
+				m[i][j] = sum / m[j][j]
+			case sum <= 0:
+				return false
+			default:
+				m[i][i] = math.Sqrt(sum)
+			}
+		}
+	}
+	for i := range n {
+		sum := g[i]
+		for k := range i {
+			sum -= m[i][k] * x[k]
+		}
+		x[i] = sum / m[i][i]
+	}
+	for i := n - 1; i >= 0; i-- {
+		sum := x[i]
+		for k := i + 1; k < n; k++ {
+			sum -= m[k][i] * x[k]
+		}
+		x[i] = sum / m[i][i]
+	}
+	return true
 }
 
 // tame keeps a section's poles within a radius of 0.996, where float32 lines

@@ -286,7 +286,7 @@ func TestStrokesAreNewYetTheSame(t *testing.T) {
 
 func TestCyclesAreBandLimited(t *testing.T) {
 	for _, w := range []Wave{Triangle, Saw} {
-		c := newCycle(w, 6000)
+		c := new(cycles).of(w, 6000)
 		// three partials at most: fitted by a sum of sines, nothing is left
 		for i := range c {
 			phase := 2 * math.Pi * float64(i) / float64(len(c)-1)

@@ -218,11 +218,7 @@ func (l *loop) control() {
 }
 
 // meanKeeps is what the line's mean value keeps of itself in a frame.
-func (l *loop) meanKeeps() float64 {
-	c := &l.glide.target
-	trip := c.gain * real(c.loss.response(1))
-	return math.Pow(trip, l.glide.pitch/l.mode.rate)
-}
+func (l *loop) meanKeeps() float64 { return l.glide.target.meanKeeps(l.glide.pitch / l.mode.rate) }
 
 // atRest says that the whole line is below silence.
 func (l *loop) atRest() bool { return int(l.bank.quiet[l.lane]) > l.keep() }

@@ -23,12 +23,6 @@ func (l law) t60(f, f0 float64) float64 {
 	return l.decay * (1 + a*a) / (1 + b*b)
 }
 
-// nepers is what a partial at f loses on a trip of the given time (s).
-func (l law) nepers(f, f0, trip float64) float64 {
-	const most = 50 // beyond it, nothing is left to tell apart
-	return min(most, decayNepers*trip/l.t60(f, f0))
-}
-
 // decayNepers is 60 dB as a natural logarithm of amplitude.
 const decayNepers = 3 * math.Ln10
 
@@ -36,16 +30,110 @@ const decayNepers = 3 * math.Ln10
 // below one by more than the read's ripple and the rounding of its taps.
 const ceiling = 1 - 2e-6
 
-// lossPoints is how many frequencies, evenly apart in pitch, a loss filter is
-// fitted at.
-const lossPoints = 28
-
 // twoPole is the filter b/(1 + c1/z + c2/z^2) that stands in a loop for the
 // law; b is solved with the tuning, see mode.at.
 type twoPole struct{ c1, c2 float64 }
 
-// fitLoss fits a filter to what the partials of a fundamental f0 (Hz) are to
-// lose on a trip, nepers(f), at a rate (Hz).
+// axis is frequencies evenly apart in pitch up to almost half the rate, with what
+// a fit needs to know of each. All fits of a mode share it.
+type axis struct {
+	rate float64 // Hz
+	at   []place
+}
+
+// place is one frequency of an axis.
+type place struct {
+	f         float64 // Hz
+	x         float64 // 1 - cos w
+	v         float64 // tan(w/2)
+	tolerance float64
+}
+
+// axisSteps is how many places an octave of an axis has.
+const axisSteps = 6
+
+// newAxis begins an axis at lowest (Hz).
+func newAxis(lowest, rate float64) axis {
+	const top = 0.48 // of the rate
+	steps := max(0, int(math.Log2(top*rate/lowest)*axisSteps)) + 1
+	a := axis{rate: rate, at: make([]place, steps)}
+	var octave [axisSteps]float64
+	for i := range octave {
+		octave[i] = math.Exp2(float64(i) / axisSteps)
+	}
+	for i := range a.at {
+		a.at[i] = placeOf(math.Ldexp(lowest*octave[i%axisSteps], i/axisSteps), rate)
+	}
+	return a
+}
+
+func placeOf(f, rate float64) place {
+	s, c := math.Sincos(math.Pi * f / rate)
+	return place{f, 2 * s * s, s / c, tolerance(f)}
+}
+
+// tolerance is the relative error of T60 that is asked for at f: 3 % below
+// 3 kHz, 10 % at 8 kHz.
+func tolerance(f float64) float64 {
+	return 0.03 + 0.07*min(1, max(0, (f-3000)/3000))
+}
+
+// lossPoints is at how many places at most a loss filter is fitted.
+const lossPoints = 40
+
+// lossFit is a loss filter to be: what a string of one pitch is to lose on a trip.
+type lossFit struct {
+	f0, rate float64 // Hz
+	own      float64 // nepers that the fundamental is to lose on a trip
+	below    float64 // nepers at zero frequency
+	first    place   // of the fundamental
+	shortest float64 // s: the quickest packet's trip
+	points   int     // above the fundamental
+	at       [lossPoints]place
+	trip     [lossPoints]float64 // s
+	whole    [lossPoints]float64 // nepers
+	weight   [lossPoints]float64 // 0 to 1: how much a place counts
+}
+
+// prepare sets out what a law takes from a fundamental f0 (Hz) and from the places of an
+// axis above it, from its place number from on. trip gives the time (s) that a packet needs.
+func (q *lossFit) prepare(l law, f0 float64, a *axis, from int, trip func(p *place) float64) {
+	q.f0, q.rate, q.first = f0, a.rate, placeOf(f0, a.rate)
+	scale := decayNepers / (l.decay * (1 + f0*f0/(l.corner*l.corner)))
+	nepers := func(f, trip float64) float64 {
+		const most = 50 // beyond it, nothing is left to tell apart
+		return min(most, scale*trip*(1+f*f/(l.corner*l.corner)))
+	}
+	q.below = nepers(0, trip(&place{}))
+	q.own = nepers(f0, trip(&q.first))
+
+	top := min(9000, 0.45*q.rate)
+	const enough = 3 // octaves for each place of the axis that one step takes
+	skip := max(1, int(math.Log2(top/f0)/enough+0.5))
+	const gone = 0.4 // 3.5 dB a trip: gone at once
+	q.points = 0
+	for i := from; i < len(a.at) && q.points < lossPoints; i += skip {
+		p := &a.at[i]
+		if p.f <= f0 {
+			continue
+		}
+		t := trip(p)
+		n := nepers(p.f, t)
+		// the last places count by degrees, so that the filter follows the pitch without jumps
+		weight := min(1, max(0, (gone-n)/(gone/4))) * min(1, max(0, axisSteps*(1.5*top/p.f-1.5)))
+		if p.f <= 2.6*f0 {
+			weight = 1
+		}
+		if weight == 0 {
+			return
+		}
+		k := q.points
+		q.at[k], q.trip[k], q.whole[k], q.weight[k] = *p, t, n, weight
+		q.points++
+	}
+}
+
+// poles fits two poles to what a shelf leaves of the loss.
 //
 // The method: the inverse power response of two poles is a parabola in
 // x = 1 - cos w. It is put through the loss at f0 exactly; the two coefficients
@@ -55,52 +143,44 @@ type twoPole struct{ c1, c2 float64 }
 // filter follows the pitch without jumps, and the loop is below one at every frequency.
 //
 // It also returns the largest error, over the tolerance.
-func fitLoss(f0, rate float64, nepers func(f float64) float64) (t twoPole, worst float64) {
-	xOf := func(f float64) float64 { return 1 - math.Cos(2*math.Pi*f/rate) }
-	x0 := xOf(f0)
+func (q *lossFit) poles(s shelf) (t twoPole, worst float64) {
 	const gone = 3 // nepers more than the fundamental: what dies as fast is gone with the stroke
-	own := nepers(f0)
+	left := func(n, v float64) float64 { return max(1e-9, n-s.nepers(v)) }
+	x0, own := q.first.x, left(q.own, q.first.v)
 	p0 := math.Exp(2 * own)
-	lightest := nepers(0)
-
-	top := min(9000, 0.45*rate)
-	for top > 2*f0 && nepers(top) > 0.4 { // 3.5 dB a trip: gone at once
-		top *= 0.97
-	}
-	top = min(max(top, 2.5*f0), 0.48*rate)
+	lightest := left(q.below, 0)
 	var at [lossPoints]equation
-	f, apart := f0, math.Pow(top/f0, 1.0/lossPoints)
-	for i := range at {
-		f *= apart
-		n := min(nepers(f), own+gone)
+	for i := range q.points {
+		p := &q.at[i]
+		n := min(left(q.whole[i], p.v), own+gone)
 		lightest = min(lightest, n)
 		target := math.Exp(2 * n)
-		x := xOf(f)
-		weight := 1 / (2 * n * tolerance(f) * (1 + math.Pow(n/0.25, 4)))
-		scale := weight / target
-		at[i] = equation{scale * (x - x0), scale * (x*x - x0*x0), scale * (target - p0)}
+		steep := n / 0.25
+		steep *= steep
+		scale := q.weight[i] / (2 * n * p.tolerance * (1 + steep*steep) * target)
+		at[i] = equation{scale * (p.x - x0), scale * (p.x*p.x - x0*x0), scale * (target - p0)}
 	}
-	least := math.Exp(2 * math.Max(lightest, -math.Log(ceiling)))
-	room := math.Max(0, p0-least) // how far the parabola may fall from f0
-	bounds := make([]half, 1, 1+lossBounds)
+	least := math.Exp(2 * max(lightest, -math.Log(ceiling)))
+	room := max(0, p0-least) // how far the parabola may fall from f0
+	var bounds [1 + lossBounds]half
 	bounds[0] = half{0, -1, 0} // p2 >= 0
 	for i := range lossBounds {
-		x := 2 * math.Pow(float64(i)/(lossBounds-1), 4) // closer together near zero
-		bounds = append(bounds, half{x0 - x, x0*x0 - x*x, room})
+		x := float64(i) / (lossBounds - 1)
+		x = 2 * x * x * x * x // closer together near zero
+		bounds[1+i] = half{x0 - x, x0*x0 - x*x, room}
 	}
-	p1, p2, worst := even(at[:], bounds)
+	p1, p2, worst := even(at[:q.points], bounds[:])
 	p1, p2 = lift(p0, x0, p1, p2, least)
-	return factor(p0-p1*x0-p2*x0*x0, p1, p2), worst
+	t = factor(p0-p1*x0-p2*x0*x0, p1, p2)
+	for !t.stable() { // of what is gone within a trip, rounding may leave a pole at one
+		const inward = 1 - 1e-5
+		t = twoPole{t.c1 * inward, t.c2 * inward * inward}
+	}
+	return t, worst
 }
 
 // lossBounds is at how many places the parabola is held above its least value.
 const lossBounds = 8
-
-// tolerance is the relative error of T60 that is asked for at f: 3 % below
-// 3 kHz, 10 % at 8 kHz.
-func tolerance(f float64) float64 {
-	return 0.03 + 0.07*min(1, max(0, (f-3000)/3000))
-}
 
 // factor finds the stable two poles whose inverse power response is
 // proportional to p0 + p1 x + p2 x^2, p2 >= 0, which must be positive over 0 to 2. A
@@ -210,10 +290,6 @@ func (q *normal) add(a, b, y float64) {
 	q.by += b * y
 }
 
-func (q *normal) cost(u, v float64) float64 {
-	return q.aa*u*u + 2*q.ab*u*v + q.bb*v*v - 2*q.ay*u - 2*q.by*v
-}
-
 // half is the half plane g u + h v <= room.
 type half struct{ g, h, room float64 }
 
@@ -221,41 +297,48 @@ func (b half) holds(u, v float64) bool {
 	return b.g*u+b.h*v <= b.room+1e-12*(math.Abs(b.g*u)+math.Abs(b.h*v))
 }
 
-// solve finds the point of the least cost where all bounds hold: the free
-// optimum, else the best of those on a bound or on two. The origin is within all bounds.
+// solve finds the point of the least cost where all bounds hold. The origin is within all of them.
+//
+// The method: bound by bound. One that the best point so far breaks has the
+// best of all on its line, between where the bounds before it cut the line: Seidel,
+// "Small-Dimensional Linear Programming and Convex Hulls Made Easy", Discrete and
+// Computational Geometry 6, 1991, which holds for any convex cost.
 func (q *normal) solve(bounds []half) (u, v float64) {
-	best := q.cost(0, 0)
-	try := func(tu, tv float64) bool {
-		for _, b := range bounds {
-			if !b.holds(tu, tv) {
-				return false
-			}
-		}
-		if c := q.cost(tu, tv); c < best {
-			best, u, v = c, tu, tv
-		}
-		return true
-	}
 	if det := q.aa*q.bb - q.ab*q.ab; det > 1e-12*q.aa*q.bb {
-		if try((q.ay*q.bb-q.by*q.ab)/det, (q.by*q.aa-q.ay*q.ab)/det) {
-			return u, v
-		}
+		u, v = (q.ay*q.bb-q.by*q.ab)/det, (q.by*q.aa-q.ay*q.ab)/det
+	} else if q.aa > 0 {
+		u = q.ay / q.aa // one column tells all
 	}
 	for i, b := range bounds {
-		if n := b.g*b.g + b.h*b.h; n > 0 {
-			// along the bound, from its point nearest the origin
-			pu, pv := b.g*b.room/n, b.h*b.room/n
-			du, dv := -b.h, b.g
-			if curve := q.aa*du*du + 2*q.ab*du*dv + q.bb*dv*dv; curve > 0 {
-				slope := (q.aa*pu+q.ab*pv-q.ay)*du + (q.ab*pu+q.bb*pv-q.by)*dv
-				try(pu-slope/curve*du, pv-slope/curve*dv)
-			}
-		}
-		for _, c := range bounds[:i] {
-			if det := b.g*c.h - b.h*c.g; det != 0 {
-				try((b.room*c.h-b.h*c.room)/det, (b.g*c.room-b.room*c.g)/det)
-			}
+		if !b.holds(u, v) {
+			u, v = q.along(b, bounds[:i])
 		}
 	}
 	return u, v
+}
+
+// along finds the point of the least cost on the edge of one bound, within others.
+func (q *normal) along(b half, others []half) (u, v float64) {
+	n := b.g*b.g + b.h*b.h
+	if n == 0 {
+		return 0, 0
+	}
+	pu, pv := b.g*b.room/n, b.h*b.room/n // the edge's point nearest the origin
+	du, dv := -b.h, b.g
+	low, high := math.Inf(-1), math.Inf(1)
+	for _, o := range others {
+		rate, room := o.g*du+o.h*dv, o.room-(o.g*pu+o.h*pv)
+		switch {
+		case rate > 0:
+			high = min(high, room/rate)
+		case rate < 0:
+			low = max(low, room/rate)
+		}
+	}
+	s := 0.0
+	if curve := q.aa*du*du + 2*q.ab*du*dv + q.bb*dv*dv; curve > 0 {
+		s = -((q.aa*pu+q.ab*pv-q.ay)*du + (q.ab*pu+q.bb*pv-q.by)*dv) / curve
+	}
+	s = max(low, min(high, s))
+	return pu + s*du, pv + s*dv
 }

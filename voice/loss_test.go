@@ -81,6 +81,34 @@ func TestPartialsKeepTheLaw(t *testing.T) {
 	}
 }
 
+// TestBentPartialsKeepTheLaw: between the pitches that have been fitted, too.
+func TestBentPartialsKeepTheLaw(t *testing.T) {
+	const rate, low, upper = 48000, 0.03, 0.10 // relative error below 3 kHz, from there to 8 kHz
+	ip := newInterpolator()
+	r := rand.New(rand.NewPCG(3, 3))
+	for _, decay := range []float64{0.3, 1, 5, 30} {
+		for _, brightness := range []float64{0, 0.25, 0.5, 0.75, 1} {
+			law := newLaw(decay, brightness)
+			for key := 21; key <= 108; key += 5 {
+				m := newMode(law, law, hz(key), 0, rate)
+				for _, octaves := range []float64{0.05, 0.3, 1, 3.5} {
+					f0 := min(4000, max(20, hz(key)*math.Exp2(octaves*(2*r.Float64()-1))))
+					partialsOf(tuned(m, ip, f0, 0), law, f0, 0, 8000, func(hz, t60, want float64) {
+						limit := low
+						if hz > 3000 {
+							limit = upper
+						}
+						// the fundamental keeps the decay of the key
+						if e := math.Abs(t60/want - 1); e > limit && hz > 1.5*f0 {
+							t.Errorf("decay %g, brightness %g, key %d bent to %.1f Hz: T60 %.4f s at %.0f Hz, the law says %.4f s", decay, brightness, key, f0, t60, hz, want)
+						}
+					})
+				}
+			}
+		}
+	}
+}
+
 func TestNeighboursAreEven(t *testing.T) {
 	ip := newInterpolator()
 	for _, rate := range rates {
@@ -149,6 +177,28 @@ func TestLoopStaysBelowOne(t *testing.T) {
 							l.settle()
 							l.stand()
 							check(fmt.Sprintf("%s, at %.2f Hz, touch %.2f", what, g.pitch, g.touch), l)
+						}
+					}
+				}
+			}
+		}
+	}
+}
+
+// TestFitsAreStable looks at each filter of the tables, also where a trip takes all.
+func TestFitsAreStable(t *testing.T) {
+	for _, rate := range append([]float64{8000, 192000}, rates...) {
+		for key := range 128 {
+			for _, decay := range []float64{0.005, 0.05, 120} {
+				for _, brightness := range []float64{0, 1} {
+					for _, b := range []float64{0, 2e-3} {
+						m := newMode(newLaw(decay, brightness), newLaw(min(decay, muted), max(0, brightness-duller)), hz(key), b, rate)
+						for _, table := range []lossTable{m.open, m.dull} {
+							for i, l := range table.at {
+								if !l.stable() {
+									t.Errorf("rate %g, key %d, decay %g, brightness %g, B %g: filter %d of %d is %v", rate, key, decay, brightness, b, i, len(table.at), l)
+								}
+							}
 						}
 					}
 				}

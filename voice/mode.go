@@ -8,19 +8,30 @@ import (
 // mode is one polarization of a key's string, compiled: everything about its
 // loop as a function of the pitch, so that it can be bent without a new fit.
 type mode struct {
-	rate     float64
-	law      law
-	sections []section
-	// losses are the loss filters at pitches a step apart, the first at lowest;
-	// dulls are those of the string under a muting palm
-	losses, dulls []loss
-	dullDecay     float64 // s: T60 under the palm
-	lowest        float64 // Hz
-	shelfCorner   float64 // over the fundamental; 0 is no shelf
+	rate        float64
+	law         law
+	sections    []section
+	open, dull  lossTable // dull is of the string under a muting palm
+	dullDecay   float64   // s: T60 under the palm
+	lowest      float64   // Hz: a string bent further down sounds there
+	shelfCorner float64   // over the fundamental; 0 is no shelf
 }
 
-// lossStep is the distance between two loss filters of a mode, in octaves.
-const lossStep = 1.0 / 6
+// lossTable is the loss filters at pitches a step apart.
+type lossTable struct {
+	lowest float64 // Hz, of the first
+	step   float64 // octaves
+	at     []loss
+}
+
+const (
+	// openStep and dullStep are the distance between two loss filters, in steps of the axis.
+	openStep = 2
+	dullStep = 6
+	// bendReach is how far (octaves) from its key a string has loss filters of
+	// its own: what a pitch wheel can do. Beyond, the last one serves.
+	bendReach = 4
+)
 
 // topPitch is the highest fundamental as a part of the rate. A string bent
 // beyond it sounds there.
@@ -29,83 +40,91 @@ const topPitch = 0.4
 // newMode compiles a string of fundamental f0 (Hz) and stiffness b, with the
 // laws of the open string and of the muted one.
 func newMode(open, dull law, f0, b, rate float64) *mode {
-	m := &mode{rate: rate, law: open, dullDecay: dull.decay}
-	f0 = min(f0, topPitch*rate)
-	hard := m.fitAlone(open, f0)
-	if b > 0 {
-		m.sections = fitDispersion(f0, b, rate, hard.lag)
-		m.placeShelf(open, f0, hard)
-	}
+	return newModeLike(&mode{}, open, dull, f0, b, rate)
+}
+
+// newModeLike is newMode beside one that is compiled already and differs in nothing but
+// its laws: it need not look far.
+func newModeLike(like *mode, open, dull law, f0, b, rate float64) *mode {
 	const bottom = 1.0 // Hz
-	below := math.Floor(math.Log2(f0/bottom) / lossStep)
-	m.lowest = f0 * math.Exp2(-below*lossStep)
-	above := math.Ceil(math.Log2(topPitch*rate/f0) / lossStep)
-	steps := int(below+above) + 1
-	m.losses, m.dulls = make([]loss, steps), make([]loss, steps)
-	soft := m.fitAlone(dull, f0)
-	fill := func(i int, likeOpen, likeDull loss) {
-		f := min(m.lowest*math.Exp2(float64(i)*lossStep), topPitch*rate)
-		m.losses[i], m.dulls[i] = m.fit(open, f, likeOpen), m.fit(dull, f, likeDull)
+	m := &mode{rate: rate, law: open, dullDecay: dull.decay, lowest: bottom}
+	f0 = min(f0, topPitch*rate)
+	below := 0 // octaves
+	for below < bendReach && math.Ldexp(f0, -below-1) >= bottom {
+		below++
 	}
-	middle := int(below)
-	fill(middle, hard, soft)
-	for i := middle + 1; i < steps; i++ {
-		fill(i, m.losses[i-1], m.dulls[i-1])
+	a := newAxis(math.Ldexp(f0, -below), rate)
+	var q lossFit
+	hard := q.alone(open, f0, &a, below*axisSteps)
+	if b > 0 {
+		m.sections = fitDispersion(f0, b, rate, hard.lag, like.sections)
+		m.shelfCorner = like.shelfCorner
+		if len(like.sections) == 0 {
+			m.placeShelf(&q, open, f0, &a, below*axisSteps, hard)
+		}
 	}
-	for i := middle - 1; i >= 0; i-- {
-		fill(i, m.losses[i+1], m.dulls[i+1])
-	}
+	soft := q.alone(dull, f0, &a, below*axisSteps)
+	m.open = m.tabulate(&q, open, f0, hard, &a, below, openStep)
+	m.dull = m.tabulate(&q, dull, f0, soft, &a, below, dullStep)
 	return m
 }
 
-// fitAlone fits the loss filter as if every packet took one period.
-func (m *mode) fitAlone(l law, f0 float64) loss {
-	t, _ := fitLoss(f0, m.rate, func(f float64) float64 { return l.nepers(f, f0, 1/f0) })
+// tabulate fits a law's filters at pitches some steps of the axis apart, from below
+// octaves under f0 (Hz), where the axis begins, to where a bend can reach. like is
+// about the filter at f0.
+func (m *mode) tabulate(q *lossFit, l law, f0 float64, like loss, a *axis, below, step int) lossTable {
+	perOctave := axisSteps / step
+	above := min(bendReach*perOctave, int(math.Ceil(math.Log2(topPitch*m.rate/f0)*float64(perOctave))))
+	middle := below * perOctave
+	t := lossTable{lowest: a.at[0].f, step: 1 / float64(perOctave), at: make([]loss, middle+above+1)}
+	fill := func(i int, like loss) {
+		f := min(t.lowest*math.Exp2(float64(i)*t.step), topPitch*m.rate)
+		m.prepare(q, l, f, a, i*step, like)
+		t.at[i].shelf = q.shelf(m.shelfCorner)
+		t.at[i].twoPole, _ = q.poles(t.at[i].shelf)
+	}
+	fill(middle, like)
+	for i := middle + 1; i < len(t.at); i++ {
+		fill(i, t.at[i-1])
+	}
+	for i := middle - 1; i >= 0; i-- {
+		fill(i, t.at[i+1])
+	}
+	return t
+}
+
+// alone fits the loss filter of a fundamental f0 (Hz), place number from of the axis, as
+// if every packet took one period.
+func (q *lossFit) alone(l law, f0 float64, a *axis, from int) loss {
+	q.prepare(l, f0, a, from, func(*place) float64 { return 1 / f0 })
+	t, _ := q.poles(shelf{})
 	return loss{twoPole: t}
 }
 
-// fit fits the loss filter at a pitch, with the time that a packet takes by
+// prepare sets out a fit at a pitch (Hz), with the time that a packet takes by
 // the sections and by a filter like it: the first fit, or that of a pitch near by.
-func (m *mode) fit(l law, f0 float64, like loss) loss {
+func (m *mode) prepare(q *lossFit, l law, f0 float64, a *axis, from int, like loss) {
 	t0 := math.Tan(math.Pi * f0 / m.rate)
 	line := m.lineFor(f0, like)
-	trip := m.trip(f0, t0, line, like)
-	out, _ := m.fitBoth(l, f0, t0, m.shelfCorner, line/m.rate, trip)
-	return out
-}
-
-// fitBoth fits a shelf at a corner, a multiple of the fundamental, and two poles
-// to what it leaves.
-func (m *mode) fitBoth(l law, f0, t0, corner, shortest float64, trip func(f float64) float64) (out loss, worst float64) {
-	out.shelf = m.fitShelf(l, f0, t0, corner, shortest, trip)
-	out.twoPole, worst = fitLoss(f0, m.rate, func(f float64) float64 {
-		return max(1e-9, l.nepers(f, f0, trip(f))-out.shelf.nepers(math.Tan(math.Pi*f/m.rate)))
+	delay := like.twoPole.groupDelayer()
+	q.shortest = line / m.rate
+	q.prepare(l, f0, a, from, func(p *place) float64 {
+		sum := line + delay.at(p.x) + like.shelf.groupDelay(p.v)
+		for _, s := range m.sections {
+			sum += s.groupDelay(p.v/t0, t0)
+		}
+		return max(sum, 1) / m.rate
 	})
-	return out, worst
 }
 
 // placeShelf finds the corner that serves a stiff string best, or none.
-func (m *mode) placeShelf(l law, f0 float64, like loss) {
-	t0, line := math.Tan(math.Pi*f0/m.rate), m.lineFor(f0, like)
-	trip := m.trip(f0, t0, line, like)
-	_, least := m.fitBoth(l, f0, t0, 0, line/m.rate, trip)
-	for c := 1.5; c < 60; c *= 1.2 {
-		if _, worst := m.fitBoth(l, f0, t0, c, line/m.rate, trip); worst < least {
+func (m *mode) placeShelf(q *lossFit, l law, f0 float64, a *axis, from int, like loss) {
+	m.prepare(q, l, f0, a, from, like)
+	_, least := q.poles(q.shelf(0))
+	for c := 1.5; c < 60; c *= 1.4 {
+		if _, worst := q.poles(q.shelf(c)); worst < least {
 			least, m.shelfCorner = worst, c
 		}
-	}
-}
-
-// trip gives the time (s) that a packet at f needs, the loop's group delay.
-func (m *mode) trip(f0, t0, line float64, like loss) func(f float64) float64 {
-	return func(f float64) float64 {
-		w := 2 * math.Pi * f / m.rate
-		v := math.Tan(w / 2)
-		sum := line + like.groupDelay(w) + like.shelf.groupDelay(v)
-		for _, s := range m.sections {
-			sum += s.groupDelay(v/t0, t0)
-		}
-		return max(sum, 1) / m.rate
 	}
 }
 
@@ -117,28 +136,6 @@ func (m *mode) lineFor(f0 float64, l loss) float64 {
 		sum -= s.lag(1) / w
 	}
 	return sum
-}
-
-// fitShelf fits the shelf of a stiff string, whose quickest packet takes
-// shortest (s), at a corner that is a multiple of the fundamental; 0 is no shelf.
-func (m *mode) fitShelf(l law, f0, t0, corner, shortest float64, trip func(f float64) float64) shelf {
-	const points = 24
-	top := min(4000, 0.4*m.rate, 200*f0)
-	if corner == 0 {
-		return shelf{}
-	}
-	if top < 2*f0 {
-		return shelf{corner: corner * t0} // nothing to serve, yet it goes on with its neighbours
-	}
-	var v, extra, whole [points]float64
-	for i := range points {
-		f := f0 * math.Pow(top/f0, float64(i)/(points-1))
-		v[i] = math.Tan(math.Pi * f / m.rate)
-		t := trip(f)
-		whole[i] = l.nepers(f, f0, t)
-		extra[i] = whole[i] * max(0, 1-shortest/t)
-	}
-	return fitShelf(corner*t0, v[:], extra[:], whole[:])
 }
 
 // loss is all that takes energy from a trip, but for the gain.
@@ -170,11 +167,20 @@ func (t twoPole) denominator(z complex128) complex128 {
 	return 1 + complex(t.c1, 0)*r + complex(t.c2, 0)*r*r
 }
 
-// groupDelay is the filter's, in samples at w.
-func (t twoPole) groupDelay(w float64) float64 {
-	r := 1 / unit(w)
-	num := complex(t.c1, 0)*r + complex(2*t.c2, 0)*r*r
-	return -real(num / t.denominator(unit(w)))
+// groupDelayer is a filter's group delay as a ratio of two parabolas in 1 - cos w.
+type groupDelayer struct{ n0, n1, n2, d0, d1, d2 float64 }
+
+func (t twoPole) groupDelayer() groupDelayer {
+	one := 1 + t.c1 + t.c2
+	return groupDelayer{
+		n0: -(t.c1 + 2*t.c2) * one, n1: t.c1*(1+3*t.c2) + 8*t.c2, n2: -4 * t.c2,
+		d0: one * one, d1: -2*t.c1*(1+t.c2) - 8*t.c2, d2: 4 * t.c2,
+	}
+}
+
+// at is the group delay in samples at x = 1 - cos w.
+func (g *groupDelayer) at(x float64) float64 {
+	return (g.n0 + x*(g.n1+x*g.n2)) / (g.d0 + x*(g.d1+x*g.d2))
 }
 
 func unit(w float64) complex128 { return cmplx.Rect(1, w) }
@@ -197,10 +203,10 @@ type coefficients struct {
 // z = exp((-3 ln 10/T60 + i w0)/rate), where the loop must be exactly one.
 func (m *mode) at(f0 float64, t touch, c *coefficients) {
 	f0 = min(max(f0, m.lowest), topPitch*m.rate)
-	c.loss = m.lossAt(m.losses, f0)
+	c.loss = m.open.loss(f0)
 	slowness := 1 / m.law.decay
 	if t.dark > 0 {
-		c.loss = c.loss.mix(m.lossAt(m.dulls, f0), t.dark)
+		c.loss = c.loss.mix(m.dull.loss(f0), t.dark)
 	}
 	slowness += t.palm * (1/m.dullDecay - slowness)
 	w := 2 * math.Pi * f0 / m.rate
@@ -227,25 +233,28 @@ func (m *mode) at(f0 float64, t touch, c *coefficients) {
 	c.direct = min(1, max(0, directFrom-c.delay))
 }
 
-// lossAt is a table's loss filter at a pitch, by cubic interpolation: linear
+// loss is the filter at a pitch (Hz), by cubic interpolation: linear
 // between filters a step apart, a vibrato would cost the treble some of its decay.
-func (m *mode) lossAt(table []loss, f0 float64) loss {
-	x := math.Log2(f0/m.lowest) / lossStep
-	i := min(max(int(x), 0), len(table)-2)
+func (table *lossTable) loss(f0 float64) loss {
+	if len(table.at) == 1 {
+		return table.at[0]
+	}
+	x := math.Log2(f0/table.lowest) / table.step
+	i := min(max(int(x), 0), len(table.at)-2)
 	t := min(1, max(0, x-float64(i)))
-	if i == 0 || i == len(table)-2 {
-		return table[i].mix(table[i+1], t)
+	if i == 0 || i == len(table.at)-2 {
+		return table.at[i].mix(table.at[i+1], t)
 	}
 	var out loss
 	for j, k := range cubic(t) {
-		l := &table[i-1+j]
+		l := &table.at[i-1+j]
 		out.c1 += k * l.c1
 		out.c2 += k * l.c2
 		out.shelf.drop += k * l.shelf.drop
 		out.shelf.corner += k * l.shelf.corner
 	}
 	if !out.stable() {
-		return table[i].mix(table[i+1], t)
+		return table.at[i].mix(table.at[i+1], t)
 	}
 	return out
 }
@@ -271,6 +280,12 @@ func (t twoPole) lowest() float64 {
 		least = min(least, a0+a1*x/2)
 	}
 	return math.Sqrt(max(0, least))
+}
+
+// meanKeeps is what the line's mean value keeps of itself in a frame, at a pitch that is a
+// part of the rate.
+func (c *coefficients) meanKeeps(pitch float64) float64 {
+	return math.Pow(c.gain*real(c.loss.response(1)), pitch)
 }
 
 // rest is the response at z of the loss filter and the first n sections.

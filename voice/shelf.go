@@ -48,21 +48,33 @@ func (s shelf) groupDelay(v float64) float64 {
 	return -(at/(at*at+v*v) - t/(t*t+v*v)) * (1 + v*v) / 2
 }
 
-// fitShelf fits the drop of a shelf to what partials are to lose more than
-// those that take the shortest trip, at a corner that is a multiple of the fundamental's
-// t0 = tan(w0/2).
+// shelf fits the drop of a shelf to what partials are to lose more than
+// those that take the shortest trip, at a corner that is a multiple of the fundamental;
+// 0 is no shelf.
 //
 // The method: for small losses the shelf's are drop/(1 + (v/corner)^2), linear
 // in the drop; least squares, relative to the whole loss.
-func fitShelf(corner float64, v, extra, whole []float64) shelf {
+func (q *lossFit) shelf(corner float64) shelf {
+	if corner == 0 {
+		return shelf{}
+	}
+	corner *= q.first.v
+	top := min(4000, 0.4*q.rate, 200*q.f0)
 	var num, den float64
-	for i := range v {
-		q := v[i] / corner
-		shape := 1 / (1 + q*q)
-		w := 1 / (whole[i] * whole[i])
-		num += w * extra[i] * shape
+	for i := range q.points {
+		p := &q.at[i]
+		if p.f > top {
+			break
+		}
+		r := p.v / corner
+		shape := 1 / (1 + r*r)
+		w := 1 / (q.whole[i] * q.whole[i])
+		num += w * q.whole[i] * max(0, 1-q.shortest/q.trip[i]) * shape
 		den += w * shape * shape
 	}
-	depth := max(0, num/den)
-	return shelf{drop: 1 - math.Exp(-depth), corner: corner}
+	if den == 0 {
+		return shelf{corner: corner} // nothing to serve, yet it goes on with its neighbours
+	}
+	const deepest = 7 // nepers, 60 dB: with more, nothing is left within a trip
+	return shelf{drop: 1 - math.Exp(-min(deepest, max(0, num/den))), corner: corner}
 }

@@ -70,8 +70,7 @@ func (v *Voice) Fit(d *Design) {
 	if d.tension > 0 {
 		v.pool.tense++
 	}
-	const hear = 0.02 // s
-	leak := min(1, Grid/(v.pool.maker.rate*max(hear, 2/d.pitch)))
+	leak := leak(d.pitch, v.pool.maker.rate)
 	slot := v.size / len(d.strings)
 	for i, s := range d.strings {
 		v.loops[i] = loop{
@@ -135,18 +134,12 @@ func (v *Voice) Strike(d *Design, velocity float64, seed uint64) {
 			s.gain *= float32(gain)
 		}
 	}
-	if d.shape.kind == Noise && len(d.shape.variants) == 0 {
-		v.rehearse(velocity, seed)
-	}
 }
 
-// latest is the stroke of loop i that began last.
-func (v *Voice) latest(i int) *stroke {
-	a, b := &v.loops[i].strokes[0], &v.loops[i].strokes[1]
-	if a.shape == nil || (b.shape != nil && b.frame < a.frame) {
-		return b
-	}
-	return a
+// leak is the part of a voice's energy that a control step takes, at a pitch (Hz).
+func leak(pitch, rate float64) float64 {
+	const hear = 0.02 // s
+	return min(1, Grid/(rate*max(hear, 2/pitch)))
 }
 
 // Tune moves the strings to a pitch, cents from the design's own. A sounding
