@@ -28,7 +28,7 @@ func TestEveryThirdKeyInTuneAndTime(t *testing.T) {
 	for _, rate := range rates {
 		s := newStage(rate)
 		worst, slack := 0.0, 0.0
-		for key := 0; key <= 127; key += 3 {
+		for key := 0; key <= 127; key += 3 * stride {
 			note := s.note(s.maker.Design(plain(hz(key), decay, 0.6)), 2)
 			first := partial(t, note[:len(note)/4], rate, hz(key), hz(key))
 			last := partial(t, note[len(note)*3/4:], rate, hz(key), hz(key))
@@ -80,7 +80,7 @@ func TestRefinedPatchesKeepPitchAndDecay(t *testing.T) {
 	r := rand.New(rand.NewPCG(3, 3))
 	for _, rate := range rates {
 		s := newStage(rate)
-		for range 14 {
+		for range 14 / stride {
 			key := 21 + r.IntN(88)
 			spec := refined(r, hz(key))
 			for _, strand := range strands(spec) {
@@ -131,7 +131,7 @@ func TestStiffStringsKeepTheirPartials(t *testing.T) {
 		s := newStage(rate)
 		for _, b := range []float64{3e-5, 3e-4, 1e-3} {
 			worst := [2]float64{}
-			for key := 21; key <= 108; key += 9 {
+			for key := 21; key <= 108; key += 9 * stride {
 				f1 := hz(key)
 				spec := plain(f1, 4, 0.8)
 				spec.Inharmonicity = b

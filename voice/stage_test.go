@@ -1,8 +1,10 @@
 package voice
 
 import (
+	"flag"
 	"math"
 	"math/rand/v2"
+	"os"
 	"testing"
 
 	"tautwire/voice/lanes"
@@ -11,6 +13,18 @@ import (
 
 // rates are those at which every bound is held.
 var rates = []float64{44100, 48000, 96000}
+
+// stride is how many cases of a long sweep lie between those that are tried: with -short, as on a
+// processor that is emulated, each test tries some of each kind.
+var stride = 1
+
+func TestMain(m *testing.M) {
+	flag.Parse()
+	if testing.Short() {
+		rates, stride = rates[:1], 6
+	}
+	os.Exit(m.Run())
+}
 
 // stage is a maker and a voice for a rate.
 type stage struct {
