@@ -40,24 +40,51 @@ const (
 	maxRate = 384000 // Hz
 )
 
-// Compile computes p for a sample rate in Hz. It takes about a
-// millisecond a key on one thread, and lets others run after each, so that an audio
+// Compiler compiles patches for one sample rate, with tables that all of them share. It may be used from several
+// goroutines.
+type Compiler struct {
+	rate  int
+	maker *voice.Maker
+}
+
+// NewCompiler prepares for a sample rate in Hz.
+//
+// # Errors
+//
+// A rate outside 8000 to 384000 Hz.
+func NewCompiler(rate int) (*Compiler, error) {
+	if rate < minRate || rate > maxRate {
+		return nil, fmt.Errorf("sample rate %d Hz; allowed %d to %d", rate, minRate, maxRate)
+	}
+	return &Compiler{rate: rate, maker: voice.NewMaker(float64(rate))}, nil
+}
+
+// Compile computes one patch for a sample rate in Hz. Who compiles several makes a Compiler.
+//
+// # Errors
+//
+// Those of NewCompiler and of Compiler.Compile.
+func Compile(p *config.Patch, rate int) (*Compiled, error) {
+	compiler, err := NewCompiler(rate)
+	if err != nil {
+		return nil, fmt.Errorf("patch %s: %w", p.Path, err)
+	}
+	return compiler.Compile(p)
+}
+
+// Compile computes p. It takes some 0.3 ms a key on one thread, and lets others run after each, so that an audio
 // callback finds its processor.
 //
 // # Errors
 //
-// A rate outside 8000 to 384000 Hz, or a zone with an unknown excitation or wave
-// (config.LoadPatch gives none such).
-func Compile(p *config.Patch, rate int) (*Compiled, error) {
-	if rate < minRate || rate > maxRate {
-		return nil, fmt.Errorf("patch %s: sample rate %d Hz; allowed %d to %d", p.Path, rate, minRate, maxRate)
-	}
+// A zone with an unknown excitation or wave (config.LoadPatch gives none such).
+func (by *Compiler) Compile(p *config.Patch) (*Compiled, error) {
 	c := &Compiled{
 		title:    p.Title,
-		rate:     rate,
-		maker:    voice.NewMaker(float64(rate)),
+		rate:     by.rate,
+		maker:    by.maker,
 		controls: p.Controls,
-		body:     compileBody(p.Body, rate),
+		body:     compileBody(p.Body, by.rate),
 	}
 	if p.Resonance.On {
 		c.resonance = float32(amplitude(p.Resonance.Level))
@@ -69,7 +96,7 @@ func Compile(p *config.Patch, rate int) (*Compiled, error) {
 		z := &p.Zones[i]
 		var recorded []float32
 		if s := z.Excitation.Sample; s != nil {
-			recorded = resample(s.Data, s.Rate, rate) // once for all the zone's keys
+			recorded = resample(s.Data, s.Rate, by.rate) // once for all the zone's keys
 		}
 		for key := max(z.Low, 0); key <= min(z.High, 127); key++ {
 			if err := c.keys[key].compile(p, z.At(key), recorded, c.maker); err != nil {

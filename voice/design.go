@@ -2,6 +2,7 @@ package voice
 
 import (
 	"math"
+	"sync"
 
 	"tautwire/voice/lanes"
 )
@@ -9,11 +10,19 @@ import (
 // Maker compiles strings for one sample rate. It holds the tables that all
 // strings of the rate share and may be used from several goroutines.
 type Maker struct {
-	rate                              float64
-	ip                                *interpolator
-	curves                            *curves
-	rows                              *lanes.Rows
+	rate   float64
+	ip     *interpolator
+	curves *curves
+	rows   *lanes.Rows
+	desks  sync.Pool // of *desk
+
 	smooth, smoothLong, smoothLongest *smoothing
+}
+
+// desk is what is written on while a string is compiled, kept for the next.
+type desk struct {
+	fit       lossFit
+	rehearsal rehearsal
 }
 
 // NewMaker prepares to make strings for a sample rate in Hz.
@@ -21,6 +30,7 @@ func NewMaker(rate float64) *Maker {
 	ip := newInterpolator()
 	return &Maker{
 		rate: rate, ip: ip, curves: newCurves(), rows: newRows(ip),
+		desks:  sync.Pool{New: func() any { return new(desk) }},
 		smooth: newSmoothing(rate, 1), smoothLong: newSmoothing(rate, longSteps), smoothLongest: newSmoothing(rate, longestSteps),
 	}
 }
@@ -68,26 +78,28 @@ func (m *Maker) Design(spec Spec) *Design {
 	if spec.Release <= 0 {
 		d.release = 0
 	}
-	d.modes[0] = m.mode(spec, spec.Decay, &mode{})
+	desk := m.desks.Get().(*desk)
+	defer m.desks.Put(desk)
+	d.modes[0] = desk.fit.modeOf(spec, spec.Decay, m.rate, &mode{})
 	if spec.SecondMix > 0 {
 		ratio := spec.SecondDecay
 		if ratio == 0 {
 			ratio = 1
 		}
-		d.modes[1] = m.mode(spec, spec.Decay*ratio, d.modes[0])
+		d.modes[1] = desk.fit.modeOf(spec, spec.Decay*ratio, m.rate, d.modes[0])
 	}
 	d.strings = strands(spec)
 	d.shape = newShape(spec.Excitation, d.pitch, m.curves)
-	d.calibrate()
+	d.calibrate(&desk.rehearsal)
 	return d
 }
 
-// mode compiles one polarization of a spec, with a decay (s) of its own, beside another that is
+// modeOf compiles one polarization of a spec, with a decay (s) of its own, beside another that is
 // compiled already, or empty.
-func (m *Maker) mode(spec Spec, decay float64, like *mode) *mode {
+func (q *lossFit) modeOf(spec Spec, decay, rate float64, like *mode) *mode {
 	open := newLaw(decay, spec.Brightness)
 	dull := newLaw(min(decay, muted), max(0, spec.Brightness-duller))
-	return newModeLike(like, open, dull, spec.Frequency, spec.Inharmonicity, m.rate)
+	return q.mode(like, open, dull, spec.Frequency, spec.Inharmonicity, rate)
 }
 
 // strands lays out the loops of a spec, both planes of each string of the course.

@@ -149,10 +149,11 @@ func (c *curve) at(place float64) float64 {
 		return 0
 	}
 	i := int(place)
-	if i >= curvePoints {
+	k := uint(i)
+	if k >= curvePoints {
 		return float64(c[curvePoints])
 	}
-	a, b := float64(c[i]), float64(c[i+1])
+	a, b := float64(c[k]), float64(c[k+1])
 	return a + float64((place-float64(i))*(b-a))
 }
 
@@ -448,7 +449,7 @@ func (s *shape) tone(sec float64) float64 {
 	}
 	p := sec * s.pitch * curvePoints
 	i := int(p)
-	k := i % curvePoints
+	k := uint(i) % curvePoints
 	a, b := float64(s.cycle[k]), float64(s.cycle[k+1])
 	v := (1 - float64(sec*s.fall)) * (a + float64((p-float64(i))*(b-a)))
 	if sec < s.onset {
@@ -496,13 +497,16 @@ type noiseCursor struct {
 	first, count int
 }
 
-// sample is sample k of the burst, which fades linearly.
-func (c *noiseCursor) sample(k int) float32 {
-	x := float64(k)
-	if k < 0 || x >= c.length {
-		return 0
+// make writes samples of the burst, which fades linearly, from number k on.
+func (c *noiseCursor) make(out []float32, k int) {
+	state, x, length, fall := c.seed+uint64(k)*golden, float64(k), c.length, c.fall
+	for i := range out {
+		out[i] = 0
+		if x >= 0 && x < length {
+			out[i] = uniform(mix64(state)) * float32(1-float64(x*fall))
+		}
+		state, x = state+golden, x+1
 	}
-	return white(c.seed, k) * float32(1-float64(x*c.fall))
 }
 
 // at reads between the samples.
@@ -522,18 +526,19 @@ func (c *noiseCursor) window(from, n int) []float32 {
 	case at+n > len(c.recent):
 		c.first, c.count, at = from, copy(c.recent[:], c.recent[at:c.count]), 0
 	}
-	for k := c.count; k < at+n; k++ {
-		c.recent[k] = c.sample(c.first + k)
+	if c.count < at+n {
+		c.make(c.recent[c.count:at+n], c.first+c.count)
+		c.count = at + n
 	}
-	c.count = max(c.count, at+n)
 	return c.recent[at : at+n]
 }
 
-// white is sample k of a seed's noise, even over -1 to 1: the finalizer of
-// Steele, Lea, Flood, "Fast Splittable Pseudorandom Number Generators", OOPSLA 2014.
-func white(seed uint64, k int) float32 {
-	return float32(int64(mix64(seed+uint64(k)*0x9e3779b97f4a7c15))>>40) / (1 << 23)
-}
+// golden is the step of a generator of noise, and mix64 its finalizer: Steele, Lea,
+// Flood, "Fast Splittable Pseudorandom Number Generators", OOPSLA 2014.
+const golden = 0x9e3779b97f4a7c15
+
+// uniform is a number from -1 to 1 of the upper bits of z.
+func uniform(z uint64) float32 { return float32(int64(z)>>40) / (1 << 23) }
 
 func mix64(z uint64) uint64 {
 	z = (z ^ z>>30) * 0xbf58476d1ce4e5b9

@@ -52,19 +52,19 @@ type place struct {
 // axisSteps is how many places an octave of an axis has.
 const axisSteps = 6
 
-// newAxis begins an axis at lowest (Hz).
-func newAxis(lowest, rate float64) axis {
+// begin lays the axis from lowest (Hz) upwards.
+func (a *axis) begin(lowest, rate float64) {
 	const top = 0.48 // of the rate
+	a.rate = rate
 	steps := max(0, int(math.Log2(top*rate/lowest)*axisSteps)) + 1
-	a := axis{rate: rate, at: make([]place, steps)}
+	a.at = a.at[:0]
 	var octave [axisSteps]float64
 	for i := range octave {
 		octave[i] = math.Exp2(float64(i) / axisSteps)
 	}
-	for i := range a.at {
-		a.at[i] = placeOf(math.Ldexp(lowest*octave[i%axisSteps], i/axisSteps), rate)
+	for i := range steps {
+		a.at = append(a.at, placeOf(math.Ldexp(lowest*octave[i%axisSteps], i/axisSteps), rate))
 	}
-	return a
 }
 
 func placeOf(f, rate float64) place {
@@ -81,8 +81,10 @@ func tolerance(f float64) float64 {
 // lossPoints is at how many places at most a loss filter is fitted.
 const lossPoints = 40
 
-// lossFit is a loss filter to be: what a string of one pitch is to lose on a trip.
+// lossFit is a loss filter to be: what a string of one pitch is to lose on a trip. It is used
+// again for one filter after the other.
 type lossFit struct {
+	axis     axis
 	f0, rate float64 // Hz
 	own      float64 // nepers that the fundamental is to lose on a trip
 	below    float64 // nepers at zero frequency
@@ -95,17 +97,18 @@ type lossFit struct {
 	weight   [lossPoints]float64 // 0 to 1: how much a place counts
 }
 
-// prepare sets out what a law takes from a fundamental f0 (Hz) and from the places of an
+// prepare sets out what a law takes from a fundamental f0 (Hz) and from the places of the
 // axis above it, from its place number from on. trip gives the time (s) that a packet needs.
-func (q *lossFit) prepare(l law, f0 float64, a *axis, from int, trip func(p *place) float64) {
+func (q *lossFit) prepare(l law, f0 float64, from int, trip func(p place) float64) {
+	a := &q.axis
 	q.f0, q.rate, q.first = f0, a.rate, placeOf(f0, a.rate)
 	scale := decayNepers / (l.decay * (1 + f0*f0/(l.corner*l.corner)))
 	nepers := func(f, trip float64) float64 {
 		const most = 50 // beyond it, nothing is left to tell apart
 		return min(most, scale*trip*(1+f*f/(l.corner*l.corner)))
 	}
-	q.below = nepers(0, trip(&place{}))
-	q.own = nepers(f0, trip(&q.first))
+	q.below = nepers(0, trip(place{}))
+	q.own = nepers(f0, trip(q.first))
 
 	top := min(9000, 0.45*q.rate)
 	const enough = 3 // octaves for each place of the axis that one step takes
@@ -113,7 +116,7 @@ func (q *lossFit) prepare(l law, f0 float64, a *axis, from int, trip func(p *pla
 	const gone = 0.4 // 3.5 dB a trip: gone at once
 	q.points = 0
 	for i := from; i < len(a.at) && q.points < lossPoints; i += skip {
-		p := &a.at[i]
+		p := a.at[i]
 		if p.f <= f0 {
 			continue
 		}
@@ -128,7 +131,7 @@ func (q *lossFit) prepare(l law, f0 float64, a *axis, from int, trip func(p *pla
 			return
 		}
 		k := q.points
-		q.at[k], q.trip[k], q.whole[k], q.weight[k] = *p, t, n, weight
+		q.at[k], q.trip[k], q.whole[k], q.weight[k] = p, t, n, weight
 		q.points++
 	}
 }

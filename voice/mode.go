@@ -28,8 +28,9 @@ const (
 	// openStep and dullStep are the distance between two loss filters, in steps of the axis.
 	openStep = 2
 	dullStep = 6
-	// bendReach is how far (octaves) from its key a string has loss filters of
-	// its own: what a pitch wheel can do. Beyond, the last one serves.
+	// bendReach is how far down (octaves) from its key a string has loss filters of
+	// its own: what a pitch wheel can do. Beyond, the last one serves, which a higher
+	// string's can: it delays less.
 	bendReach = 4
 )
 
@@ -40,12 +41,12 @@ const topPitch = 0.4
 // newMode compiles a string of fundamental f0 (Hz) and stiffness b, with the
 // laws of the open string and of the muted one.
 func newMode(open, dull law, f0, b, rate float64) *mode {
-	return newModeLike(&mode{}, open, dull, f0, b, rate)
+	return new(lossFit).mode(&mode{}, open, dull, f0, b, rate)
 }
 
-// newModeLike is newMode beside one that is compiled already and differs in nothing but
-// its laws: it need not look far.
-func newModeLike(like *mode, open, dull law, f0, b, rate float64) *mode {
+// mode is newMode beside one that is compiled already and differs in nothing but
+// its laws, or an empty one: so it need not look far.
+func (q *lossFit) mode(like *mode, open, dull law, f0, b, rate float64) *mode {
 	const bottom = 1.0 // Hz
 	m := &mode{rate: rate, law: open, dullDecay: dull.decay, lowest: bottom}
 	f0 = min(f0, topPitch*rate)
@@ -53,33 +54,32 @@ func newModeLike(like *mode, open, dull law, f0, b, rate float64) *mode {
 	for below < bendReach && math.Ldexp(f0, -below-1) >= bottom {
 		below++
 	}
-	a := newAxis(math.Ldexp(f0, -below), rate)
-	var q lossFit
-	hard := q.alone(open, f0, &a, below*axisSteps)
+	q.axis.begin(math.Ldexp(f0, -below), rate)
+	hard := q.alone(open, f0, below*axisSteps)
 	if b > 0 {
 		m.sections = fitDispersion(f0, b, rate, hard.lag, like.sections)
 		m.shelfCorner = like.shelfCorner
 		if len(like.sections) == 0 {
-			m.placeShelf(&q, open, f0, &a, below*axisSteps, hard)
+			m.placeShelf(q, open, f0, below*axisSteps, hard)
 		}
 	}
-	soft := q.alone(dull, f0, &a, below*axisSteps)
-	m.open = m.tabulate(&q, open, f0, hard, &a, below, openStep)
-	m.dull = m.tabulate(&q, dull, f0, soft, &a, below, dullStep)
+	soft := q.alone(dull, f0, below*axisSteps)
+	m.open = m.tabulate(q, open, f0, hard, below, openStep)
+	m.dull = m.tabulate(q, dull, f0, soft, below, dullStep)
 	return m
 }
 
 // tabulate fits a law's filters at pitches some steps of the axis apart, from below
-// octaves under f0 (Hz), where the axis begins, to where a bend can reach. like is
+// octaves under f0 (Hz), where the axis begins, to the highest that can sound. like is
 // about the filter at f0.
-func (m *mode) tabulate(q *lossFit, l law, f0 float64, like loss, a *axis, below, step int) lossTable {
+func (m *mode) tabulate(q *lossFit, l law, f0 float64, like loss, below, step int) lossTable {
 	perOctave := axisSteps / step
-	above := min(bendReach*perOctave, int(math.Ceil(math.Log2(topPitch*m.rate/f0)*float64(perOctave))))
+	above := int(math.Ceil(math.Log2(topPitch*m.rate/f0) * float64(perOctave)))
 	middle := below * perOctave
-	t := lossTable{lowest: a.at[0].f, step: 1 / float64(perOctave), at: make([]loss, middle+above+1)}
+	t := lossTable{lowest: q.axis.at[0].f, step: 1 / float64(perOctave), at: make([]loss, middle+above+1)}
 	fill := func(i int, like loss) {
 		f := min(t.lowest*math.Exp2(float64(i)*t.step), topPitch*m.rate)
-		m.prepare(q, l, f, a, i*step, like)
+		m.prepare(q, l, f, i*step, like)
 		t.at[i].shelf = q.shelf(m.shelfCorner)
 		t.at[i].twoPole, _ = q.poles(t.at[i].shelf)
 	}
@@ -95,20 +95,20 @@ func (m *mode) tabulate(q *lossFit, l law, f0 float64, like loss, a *axis, below
 
 // alone fits the loss filter of a fundamental f0 (Hz), place number from of the axis, as
 // if every packet took one period.
-func (q *lossFit) alone(l law, f0 float64, a *axis, from int) loss {
-	q.prepare(l, f0, a, from, func(*place) float64 { return 1 / f0 })
+func (q *lossFit) alone(l law, f0 float64, from int) loss {
+	q.prepare(l, f0, from, func(place) float64 { return 1 / f0 })
 	t, _ := q.poles(shelf{})
 	return loss{twoPole: t}
 }
 
 // prepare sets out a fit at a pitch (Hz), with the time that a packet takes by
 // the sections and by a filter like it: the first fit, or that of a pitch near by.
-func (m *mode) prepare(q *lossFit, l law, f0 float64, a *axis, from int, like loss) {
+func (m *mode) prepare(q *lossFit, l law, f0 float64, from int, like loss) {
 	t0 := math.Tan(math.Pi * f0 / m.rate)
 	line := m.lineFor(f0, like)
 	delay := like.twoPole.groupDelayer()
 	q.shortest = line / m.rate
-	q.prepare(l, f0, a, from, func(p *place) float64 {
+	q.prepare(l, f0, from, func(p place) float64 {
 		sum := line + delay.at(p.x) + like.shelf.groupDelay(p.v)
 		for _, s := range m.sections {
 			sum += s.groupDelay(p.v/t0, t0)
@@ -118,8 +118,8 @@ func (m *mode) prepare(q *lossFit, l law, f0 float64, a *axis, from int, like lo
 }
 
 // placeShelf finds the corner that serves a stiff string best, or none.
-func (m *mode) placeShelf(q *lossFit, l law, f0 float64, a *axis, from int, like loss) {
-	m.prepare(q, l, f0, a, from, like)
+func (m *mode) placeShelf(q *lossFit, l law, f0 float64, from int, like loss) {
+	m.prepare(q, l, f0, from, like)
 	_, least := q.poles(q.shelf(0))
 	for c := 1.5; c < 60; c *= 1.4 {
 		if _, worst := q.poles(q.shelf(c)); worst < least {

@@ -3,6 +3,7 @@ package voice
 import (
 	"math"
 	"math/cmplx"
+	"slices"
 )
 
 // How loud a stroke comes out depends on the string, and of noise on chance, the more so
@@ -41,19 +42,19 @@ func strandSeed(seed uint64, strand int) uint64 { return seed + uint64(strand)*0
 
 // calibrate sets the gain by the peak, so that the hardest stroke is fullLevel loud, and
 // finds the energy of that stroke, which tension asks for.
-func (d *Design) calibrate() {
+func (d *Design) calibrate(r *rehearsal) {
 	hardest := variantVelocities[len(variantVelocities)-1:]
 	tense := d.tension > 0
 	gain, seed := 1.0, uint64(0)
 	if d.shape.kind == Noise {
-		d.vary()
+		d.vary(r)
 		v := &d.shape.variants[0]
 		gain, seed = v.gain(hardest[0]), v.seed
 		if !tense {
 			return
 		}
 	}
-	r := newRehearsal(d, 1, tense)
+	r.begin(d, 1, tense)
 	peak := r.play(hardest, seed)[0]
 	if peak == 0 {
 		d.shape.gain = 0 // an empty sample: a string that nothing moves
@@ -69,12 +70,12 @@ func (d *Design) calibrate() {
 }
 
 // vary makes bursts of noise and finds their gains.
-func (d *Design) vary() {
+func (d *Design) vary(r *rehearsal) {
 	velocities := variantVelocities[:]
 	if d.shape.touch == 0 {
 		velocities = velocities[len(velocities)-1:] // all others are alike
 	}
-	r := newRehearsal(d, len(velocities), false)
+	r.begin(d, len(velocities), false)
 	d.shape.variants = make([]variant, min(max(int(effort/(r.lasts*float64(len(r.parts)))), fewest), most))
 	for i := range d.shape.variants {
 		v := &d.shape.variants[i]
@@ -86,7 +87,8 @@ func (d *Design) vary() {
 	}
 }
 
-// rehearsal plays strokes on a design, without a voice.
+// rehearsal plays strokes on a design, without a voice. It is used again for one design
+// after the other.
 type rehearsal struct {
 	d      *Design
 	rate   float64 // Hz
@@ -101,15 +103,15 @@ type rehearsal struct {
 	mean   [2]float64
 }
 
-// newRehearsal prepares to play strokes of up to count velocities for as long as their force lasts. Where it
+// begin prepares to play strokes of up to count velocities for as long as their force lasts. Where it
 // meets its own return, the string goes along; where that is asked for, for some
 // periods more.
-func newRehearsal(d *Design, count int, along bool) *rehearsal {
+func (r *rehearsal) begin(d *Design, count int, along bool) {
 	const longest = 1.0 // s
 	const alike = 0.1   // periods that parts may drift apart meanwhile
 	const fewSamples = 300
 	sh, m := &d.shape, d.maker
-	r := &rehearsal{d: d, rate: m.rate, parts: d.strings}
+	r.d, r.rate, r.parts, r.before = d, m.rate, d.strings, 0
 	period := 1 / d.pitch
 	r.lasts = min(sh.length, longest) + sh.position*period
 	many := sh.kind == Noise && r.lasts*noiseRate > fewSamples // the return of its end changes its peak little
@@ -141,12 +143,11 @@ func newRehearsal(d *Design, count int, along bool) *rehearsal {
 		}
 	}
 	for i := range count {
-		r.sound[i] = make([]float32, r.before+frames)
+		r.sound[i] = slices.Grow(r.sound[i][:0], r.before+frames)[:r.before+frames]
 	}
 	if !r.joined {
-		r.alone = make([]float32, r.before+frames)
+		r.alone = slices.Grow(r.alone[:0], r.before+frames)[:r.before+frames]
 	}
-	return r
 }
 
 // play makes strokes of some velocities and one noise sound, each with a gain of one, and returns their peaks.

@@ -279,6 +279,7 @@ func (p *player) run(ctx context.Context, screen io.Writer, signals <-chan os.Si
 		if err := p.set.compileRest(listening); err != nil {
 			p.journal.tell(zerolog.ErrorLevel, "patch").Str("what", "failed").Err(err).Msg(err.Error())
 		}
+		p.process.Settle()
 	}()
 	var ended chan struct{}
 	if p.demo != nil {

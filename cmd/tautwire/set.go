@@ -17,10 +17,10 @@ import (
 // begin with is compiled before anything sounds; the others while it plays already, so that
 // taking one is an exchange of a pointer.
 type set struct {
-	patches []*config.Patch
-	rate    int // Hz
-	swap    func(*engine.Compiled)
-	tell    func(change)
+	patches  []*config.Patch
+	compiler *engine.Compiler
+	swap     func(*engine.Compiled)
+	tell     func(change)
 
 	mu       sync.Mutex // of keyboards and the compiling goroutine; no callback takes it
 	compiled map[*config.Patch]*engine.Compiled
@@ -39,8 +39,12 @@ type change struct {
 // rate in Hz. Later, swap is called with what is taken, and tell with what became
 // of each change.
 func newSet(first *config.Patch, patches []*config.Patch, rate int, tell func(change)) (*set, *engine.Compiled, error) {
-	s := &set{patches: patches, rate: rate, tell: tell, compiled: map[*config.Patch]*engine.Compiled{}}
-	c, err := engine.Compile(first, rate)
+	compiler, err := engine.NewCompiler(rate)
+	if err != nil {
+		return nil, nil, err
+	}
+	s := &set{patches: patches, compiler: compiler, tell: tell, compiled: map[*config.Patch]*engine.Compiled{}}
+	c, err := compiler.Compile(first)
 	if err != nil {
 		return nil, nil, err
 	}
@@ -61,7 +65,7 @@ func (s *set) compileRest(ctx context.Context) error {
 		if s.have(p) != nil {
 			continue
 		}
-		c, err := engine.Compile(p, s.rate)
+		c, err := s.compiler.Compile(p)
 		if err != nil {
 			return err
 		}

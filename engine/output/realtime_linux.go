@@ -23,6 +23,7 @@ import (
 	"os"
 	"runtime"
 	"runtime/debug"
+	"runtime/metrics"
 	"sync/atomic"
 
 	"golang.org/x/sys/unix"
@@ -85,6 +86,21 @@ func PrepareProcess() Process {
 	}
 	p.Locked = true
 	return p
+}
+
+// Settle gives back the memory that loading took and no longer needs, and from here on has the
+// collector come when the heap has grown by some megabytes, so that a night's
+// scraps do not pile up. Call it once all that plays is in memory.
+func (p *Process) Settle() {
+	const growth = 8 << 20 // bytes
+	debug.FreeOSMemory()
+	if p.GCPercent == 0 {
+		return
+	}
+	live := []metrics.Sample{{Name: "/gc/heap/live:bytes"}}
+	metrics.Read(live)
+	p.GCPercent = int(min(gcPercent, 1+growth*100/max(1, live[0].Value.Uint64())))
+	debug.SetGCPercent(p.GCPercent)
 }
 
 func memoryLimit() int64 {
