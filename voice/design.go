@@ -79,6 +79,12 @@ func (m *Maker) Design(spec Spec) *Design {
 		d.modes[1] = desk.fit.modeOf(spec, spec.Decay*ratio, m.rate, d.modes[0])
 	}
 	d.strings = strands(spec)
+	d.modes[d.strings[0].mode].settleAt(d.pitch) // of a single string
+	for _, s := range d.strings {
+		if s.cents != 0 {
+			d.modes[s.mode].settleAt(d.pitch * octaves(s.cents))
+		}
+	}
 	d.shape = newShape(spec.Excitation, d.pitch, m.curves)
 	d.calibrate(&desk.rehearsal)
 	return d
