@@ -100,17 +100,24 @@ func BenchmarkDesign(b *testing.B) {
 	}
 }
 
-// BenchmarkStrike reports what setting a string going costs, for each kind.
+// BenchmarkStrike reports what setting a string going costs, for each kind: one that
+// sounds already, and one that has to be strung anew.
 func BenchmarkStrike(b *testing.B) {
 	m := NewMaker(48000)
 	v := m.NewVoice(8)
 	for name, x := range kinds() {
-		b.Run(name, func(b *testing.B) {
-			spec := plain(hz(40), 4, 0.5)
-			x.Position = 0.13
-			spec.Excitation = x
-			d := m.Design(spec)
+		spec := plain(hz(60), 4, 0.5)
+		x.Position = 0.13
+		spec.Excitation = x
+		d := m.Design(spec)
+		b.Run(name+"/again", func(b *testing.B) {
 			for b.Loop() {
+				v.Strike(d, 100, uint64(b.N))
+			}
+		})
+		b.Run(name+"/anew", func(b *testing.B) {
+			for b.Loop() {
+				v.Reset()
 				v.Strike(d, 100, uint64(b.N))
 			}
 		})

@@ -15,6 +15,13 @@ type mode struct {
 	dullDecay   float64   // s: T60 under the palm
 	lowest      float64   // Hz: a string bent further down sounds there
 	shelfCorner float64   // over the fundamental; 0 is no shelf
+	homes       []home
+}
+
+// home is a loop solved in advance, at a pitch (Hz) that strings are set going at.
+type home struct {
+	pitch float64
+	coefficients
 }
 
 // lossTable is the loss filters at pitches a step apart.
@@ -203,6 +210,14 @@ type coefficients struct {
 // z = exp((-3 ln 10/T60 + i w0)/rate), where the loop must be exactly one.
 func (m *mode) at(f0 float64, t touch, c *coefficients) {
 	f0 = min(max(f0, m.lowest), topPitch*m.rate)
+	if t == (touch{}) {
+		for i := range m.homes {
+			if h := &m.homes[i]; h.pitch == f0 {
+				*c = h.coefficients
+				return
+			}
+		}
+	}
 	c.loss = m.open.loss(f0)
 	slowness := 1 / m.law.decay
 	if t.dark > 0 {
@@ -231,6 +246,13 @@ func (m *mode) at(f0 float64, t touch, c *coefficients) {
 	c.gain = math.Exp(-sigma*c.delay) / cmplx.Abs(rest)
 	c.gain = min(c.gain, ceiling*c.loss.lowest())
 	c.direct = min(1, max(0, directFrom-c.delay))
+}
+
+// settleAt solves the loop in advance for a fundamental f0 (Hz).
+func (m *mode) settleAt(f0 float64) {
+	h := home{pitch: min(max(f0, m.lowest), topPitch*m.rate)}
+	m.at(f0, touch{}, &h.coefficients)
+	m.homes = append(m.homes, h)
 }
 
 // loss is the filter at a pitch (Hz), by cubic interpolation: linear

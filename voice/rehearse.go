@@ -115,6 +115,8 @@ func (r *rehearsal) begin(d *Design, count int, along bool) {
 	period := 1 / d.pitch
 	r.lasts = min(sh.length, longest) + sh.position*period
 	many := sh.kind == Noise && r.lasts*noiseRate > fewSamples // the return of its end changes its peak little
+	// a stiff string's partials come back at different times, and may meet at a higher peak
+	along = along || len(d.modes[0].sections) > 0 && sh.kind != Noise
 	r.rings = along || sh.length > 1.001*period || r.lasts > period && !many
 	low, high := 0.0, 0.0
 	for _, s := range d.strings {
@@ -128,8 +130,11 @@ func (r *rehearsal) begin(d *Design, count int, along bool) {
 		r.rate = noiseRate // its own, which needs the least work; with few samples the peak depends on where they are
 	}
 	frames := int(r.lasts*r.rate) + 3*taps
-	if along {
+	switch {
+	case along:
 		frames = int((min(sh.length, longest) + 3*period) * r.rate)
+	case r.rings:
+		frames += int(period * r.rate)
 	}
 	for i, mode := range d.modes {
 		if mode != nil {
@@ -204,6 +209,9 @@ func (r *rehearsal) force(sounds [][]float32, velocities []float64, parts []stra
 		n := min(Grid, len(sounds[0])-at)
 		clear(sum[:n])
 		for i, part := range parts {
+			if s := &sources[i]; float64(s.frame)-s.echo > s.spent {
+				continue
+			}
 			sources[i].force(one[:n])
 			for k, v := range one[:n] {
 				sum[k] += float64(part.mix) * v
