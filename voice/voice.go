@@ -74,7 +74,7 @@ func (v *Voice) Fit(d *Design) {
 	slot := v.size / len(d.strings)
 	for i, s := range d.strings {
 		v.loops[i] = loop{
-			mode: d.modes[s.mode], voice: v, pool: v.pool, mix: s.mix, pitch: d.pitch * octaves(s.cents),
+			mode: d.modes[s.mode], voice: v, pool: v.pool, mix: s.mix, pitch: d.pitch * octaves(s.cents), own: s.own,
 			start: v.start + i*slot + lanes.History + lanes.Front, size: slot - ringRoom,
 		}
 		l := &v.loops[i]
@@ -289,15 +289,22 @@ func (v *Voice) Bridge(out []float32, at int) {
 	if v.design == nil {
 		return
 	}
-	const part = 1.0 / Grid
 	from, to := v.gains.from, v.gains.to
 	gain := float32((from.Left + from.Right) * BridgeGain)
-	slope := float32((to.Left+to.Right)*BridgeGain) - gain
+	slope := (float32((to.Left+to.Right)*BridgeGain) - gain) / Grid
 	for i := range v.design.strings {
 		l := &v.loops[i]
-		heard := l.bank.Out[at:]
+		heard, lane := l.bank.Out[at:], l.lane&(lanes.Width-1)
+		if slope == 0 {
+			g := gain * l.mix
+			for k := range out {
+				out[k] += float32(g * heard[k][lane])
+			}
+			continue
+		}
 		for k := range out {
-			out[k] += float32(float32(l.mix*heard[k][l.lane]) * (gain + float32(slope*float32(float32(at+k+1)*part))))
+			g := gain + float32(slope*float32(at+k+1))
+			out[k] += float32(float32(l.mix*heard[k][lane]) * g)
 		}
 	}
 }
