@@ -13,7 +13,7 @@ func kinds() map[string]Excitation {
 	for i := range click {
 		click[i] = float32(math.Exp(-float64(i)/60) * math.Sin(float64(i)*0.4))
 	}
-	return map[string]Excitation{
+	all := map[string]Excitation{
 		"noise":  {Kind: Noise, Hardness: 0.9, Touch: 0.4},
 		"burst":  {Kind: Noise, Hardness: 0.9, Length: 0.03},
 		"tone":   {Kind: Tone, Wave: Saw, Ratio: 3, Hardness: 0.9},
@@ -21,6 +21,12 @@ func kinds() map[string]Excitation {
 		"strike": {Kind: Strike, Hardness: 0.8, Touch: 0.4},
 		"sample": {Kind: Sample, Sample: click, SampleRate: 44100, Hardness: 1},
 	}
+	if testing.Short() {
+		for _, name := range []string{"burst", "tone", "strike", "sample"} {
+			delete(all, name)
+		}
+	}
+	return all
 }
 
 func TestPositionNulls(t *testing.T) {

@@ -80,7 +80,7 @@ func TestRefinedPatchesKeepPitchAndDecay(t *testing.T) {
 	r := rand.New(rand.NewPCG(3, 3))
 	for _, rate := range rates {
 		s := newStage(rate)
-		for range 14 / stride {
+		for range max(1, 14/stride) {
 			key := 21 + r.IntN(88)
 			spec := refined(r, hz(key))
 			for _, strand := range strands(spec) {

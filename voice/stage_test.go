@@ -21,7 +21,7 @@ var stride = 1
 func TestMain(m *testing.M) {
 	flag.Parse()
 	if testing.Short() {
-		rates, stride = rates[:1], 6
+		rates, stride = rates[:1], 12
 	}
 	os.Exit(m.Run())
 }
