@@ -14,7 +14,7 @@ RACE_FLAGS := -race -short -gcflags=github.com/gordonklaus/portaudio=-d=checkptr
 FUZZTIME ?= 10s
 GO ?= go
 
-.PHONY: help run build test race bench fuzz stage arm64
+.PHONY: help run build test race bench speed fuzz stage arm64
 
 help:
 	@echo 'make run    install what is missing, build, and play (the demo where there is no sound device)'
@@ -24,6 +24,7 @@ help:
 	@echo 'make race   only the tests under the race detector'
 	@echo 'make arm64  build ./tautwire-arm64 for a small board, and run the tests of strings and engine on it, emulated'
 	@echo 'make bench  benchmarks'
+	@echo 'make speed  the bounds of speed, against a control in C: prints a table, and fails where one does not hold'
 	@echo 'make fuzz   every fuzz target for FUZZTIME=$(FUZZTIME)'
 
 build:
@@ -52,6 +53,10 @@ race:
 bench:
 	@.ci/needs build
 	$(GO) test -run '^$$' -bench . ./...
+
+speed:
+	@.ci/needs build
+	$(GO) run ./.ci/speed
 
 fuzz:
 	@.ci/needs build

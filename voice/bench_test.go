@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"math"
 	"testing"
+
+	"tautwire/voice/lanes"
 )
 
 const (
@@ -12,11 +14,14 @@ const (
 )
 
 // bed is a pool of sounding voices of a spec, on keys evenly spread.
-func bed(m *Maker, spec Spec, voices int) *Pool {
+func bed(m *Maker, spec Spec, voices int) *Pool { return bedOn(m, spec, voices, 28, 64) }
+
+// bedOn is a bed on some keys from a lowest on.
+func bedOn(m *Maker, spec Spec, voices, lowest, keys int) *Pool {
 	p := m.NewPool(voices, 8)
 	designs := map[int]*Design{}
 	for i := range voices {
-		key := 28 + i%64
+		key := lowest + i%keys
 		if designs[key] == nil {
 			spec.Frequency = hz(key)
 			designs[key] = m.Design(spec)
@@ -67,6 +72,26 @@ func BenchmarkPlainString(b *testing.B) {
 	bed(NewMaker(48000), lasting(), benchStrings).measure(b, 1, nil)
 }
 
+// BenchmarkPortableString is BenchmarkPlainString in Go alone.
+func BenchmarkPortableString(b *testing.B) {
+	p := bed(NewMaker(48000), lasting(), benchStrings)
+	p.kernel = lanes.Portable()
+	p.measure(b, 1, nil)
+}
+
+// BenchmarkLowStrings is 512 plain strings whose lines are long, the lowest octave of a piano.
+func BenchmarkLowStrings(b *testing.B) {
+	bedOn(NewMaker(48000), lasting(), 512, 21, 12).measure(b, 1, nil)
+}
+
+// BenchmarkDyingString is BenchmarkPlainString of strings that have long fallen silent, and would compute
+// with subnormal numbers by now.
+func BenchmarkDyingString(b *testing.B) {
+	spec := lasting()
+	spec.Decay = 0.05
+	bed(NewMaker(48000), spec, benchStrings).measure(b, 1, nil)
+}
+
 // BenchmarkBendingString is BenchmarkPlainString with a vibrato of 50 cents on every string.
 func BenchmarkBendingString(b *testing.B) {
 	bed(NewMaker(48000), lasting(), benchStrings).measure(b, 1, func(p *Pool, step int) {
@@ -82,8 +107,7 @@ func BenchmarkFullString(b *testing.B) {
 	bed(NewMaker(48000), full(), benchStrings).measure(b, 4, nil)
 }
 
-// BenchmarkStrings reports how the cost of plain strings grows with their number, low
-// ones at last, whose lines are long.
+// BenchmarkStrings reports what a plain string costs by their number.
 func BenchmarkStrings(b *testing.B) {
 	m := NewMaker(48000)
 	for _, n := range []int{1, 8, 32, 64, 128, 256, 512} {
