@@ -54,9 +54,8 @@ type Design struct {
 // strand is one loop of a design: a string of the course in one polarization.
 type strand struct {
 	mode  int
-	cents float64       // from the design's pitch
-	mix   float32       // of the stroke and of the output
-	own   *coefficients // at its pitch, so that a stroke need not solve them
+	cents float64 // from the design's pitch
+	mix   float32 // of the stroke and of the output
 }
 
 // A muting palm leaves a string this T60 (s), and this much less brightness.
@@ -90,11 +89,6 @@ func (m *Maker) Design(spec Spec) *Design {
 		d.modes[1] = desk.fit.modeOf(spec, spec.Decay*ratio, m.rate, d.modes[0])
 	}
 	d.strings = strands(spec)
-	for i := range d.strings {
-		s := &d.strings[i]
-		s.own = new(coefficients)
-		d.modes[s.mode].at(d.pitch*octaves(s.cents), touch{}, s.own)
-	}
 	d.modes[d.strings[0].mode].settleAt(d.pitch) // of a single string
 	for _, s := range d.strings {
 		if s.cents != 0 {

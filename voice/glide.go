@@ -106,11 +106,7 @@ func (l *loop) hold(f0 float64) float64 {
 // settle puts everything where the pitch asks for it, at once.
 func (l *loop) settle() {
 	g := &l.glide
-	if l.own != nil && g.pitch == l.pitch && g.touch == (touch{}) {
-		g.target = *l.own
-	} else {
-		l.mode.at(g.pitch, g.touch, &g.target)
-	}
+	l.mode.at(g.pitch, g.touch, &g.target)
 	g.from, g.slope, g.speed, g.rough, g.swift = g.target.delay, 0, 0, false, false
 	g.smooth = l.pool.maker.smooth
 	for i := range g.s {

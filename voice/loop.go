@@ -53,11 +53,10 @@ type loop struct {
 	sections int
 	mix      float32 // of the stroke and of the output
 
-	pitch        float64       // Hz: the design's
-	own          *coefficients // at that pitch; nil when not known
-	asked, cents float64       // from there: asked for, and already heard of
-	place        float64       // of the pitch, in parts of an octave above the mode's lowest
-	low, high    float64       // how far from there a cell serves
+	pitch        float64 // Hz: the design's
+	asked, cents float64 // from there: asked for, and already heard of
+	place        float64 // of the pitch, in parts of an octave above the mode's lowest
+	low, high    float64 // how far from there a cell serves
 
 	start, size int // the ring's first sample in the pool's line, and the most that it can hold
 	bank        *bank

@@ -74,7 +74,7 @@ func (v *Voice) Fit(d *Design) {
 	slot := v.size / len(d.strings)
 	for i, s := range d.strings {
 		v.loops[i] = loop{
-			mode: d.modes[s.mode], voice: v, pool: v.pool, mix: s.mix, pitch: d.pitch * octaves(s.cents), own: s.own,
+			mode: d.modes[s.mode], voice: v, pool: v.pool, mix: s.mix, pitch: d.pitch * octaves(s.cents),
 			start: v.start + i*slot + lanes.History + lanes.Front, size: slot - ringRoom,
 		}
 		l := &v.loops[i]

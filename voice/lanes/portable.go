@@ -104,12 +104,19 @@ func each(do func(*Bank, pass)) run {
 func (b *Bank) plain(p pass) {
 	l := p.lane & (Width - 1)
 	h := b.taps(l)
+	h0, h1, h2, h3, h4, h5 := h[0], h[1], h[2], h[3], h[4], h[5]
+	h6, h7, h8, h9, h10, h11 := h[6], h[7], h[8], h[9], h[10], h[11]
 	c1, c2, v1, v2, power := b.C1[l], b.C2[l], b.V1[l], b.V2[l], b.Power[l]
 	n := len(p.target)
-	source, target, force, out := p.source[:n+Taps-1], p.target, p.force[:n], p.out[:n]
+	source, target, force, out := p.source, p.target, p.force[:n], p.out[:n]
 	for i := range target {
-		x := float64(read(source[i:i+Taps:i+Taps], &h)) - float64(c2*v2)
-		v2, v1 = v1, x-float64(c1*v1)
+		s := (*[Taps]float32)(source)
+		x := bias + float32(s[0]*h11) + float32(s[1]*h10) + float32(s[2]*h9) + float32(s[3]*h8)
+		x = x + float32(s[4]*h7) + float32(s[5]*h6) + float32(s[6]*h5) + float32(s[7]*h4)
+		x = x + float32(s[8]*h3) + float32(s[9]*h2) + float32(s[10]*h1) + float32(s[11]*h0)
+		source = source[1:]
+		v := float64(x) - float64(c2*v2)
+		v2, v1 = v1, v-float64(c1*v1)
 		y := float32(v1) + force[i][l]
 		target[i] = y
 		out[i][l] = y
