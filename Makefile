@@ -55,7 +55,7 @@ bench:
 	$(GO) test -run '^$$' -bench . ./...
 
 speed:
-	@.ci/needs build
+	@.ci/needs test
 	$(GO) run ./.ci/speed
 
 fuzz:

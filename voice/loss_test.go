@@ -216,7 +216,7 @@ func TestLoopStaysBelowOneOnTheWay(t *testing.T) {
 	r := rand.New(rand.NewPCG(2, 2))
 	ip := newInterpolator()
 	for range 150 / stride {
-		rate := rates[r.IntN(3)]
+		rate := rates[r.IntN(len(rates))]
 		f0 := hz(r.IntN(128))
 		law := newLaw(0.05*math.Pow(2400, r.Float64()), r.Float64())
 		m := newMode(law, newLaw(muted, 0), f0, float64(r.IntN(2))*1e-3*r.Float64(), rate)
