@@ -110,10 +110,11 @@ func start(t testing.TB, env []string, name string, args ...string) *process {
 	return p
 }
 
+// tail is the end of what was written, and the beginning: there a crash says what it is.
 func tail(s string) string {
-	const most = 4000
-	if len(s) > most {
-		return "...\n" + s[len(s)-most:]
+	const first, last = 1500, 4000
+	if len(s) > first+last {
+		return s[:first] + "\n...\n" + s[len(s)-last:]
 	}
 	return s
 }
