@@ -64,10 +64,24 @@ func startUntil(t testing.TB, text string, args ...string) float64 {
 	return 1e3 * took.Seconds()
 }
 
-// TestResidentMemory plays all keys of all built-in patches, so that every string there
-// is has sounded low, and looks at how much memory has ever been resident.
+// TestResidentMemory bounds how much memory has ever been resident.
 func TestResidentMemory(t *testing.T) {
 	const bound = 64 << 10 // kB
+	if most := mostResident(t); most >= bound {
+		t.Errorf("%d kB were resident, allowed %d", most, bound)
+	}
+}
+
+// BenchmarkResidentMemory reports how much memory has ever been resident.
+func BenchmarkResidentMemory(b *testing.B) {
+	b.ReportMetric(float64(mostResident(b))/1024, "MB")
+	b.ReportMetric(0, "ns/op")
+}
+
+// mostResident plays all keys of all built-in patches, so that every string there
+// is has sounded low, and gives how much memory has ever been resident.
+func mostResident(t testing.TB) (kB int) {
+	t.Helper()
 	keys, log := newKeyboard(t), filepath.Join(t.TempDir(), "log")
 	daemon := start(t, nil, tautwire(), "play", "--device", "null", "--midi", keys.path, "--log", log)
 	daemon.says(t, keys.path+" plays", 20*time.Second)
@@ -90,10 +104,8 @@ func TestResidentMemory(t *testing.T) {
 	}, daemon)
 	most := status(t, daemon, "VmHWM")
 	t.Logf("%d kB resident now, %d kB at most; %d kB of it files", status(t, daemon, "VmRSS"), most, status(t, daemon, "RssFile"))
-	if most >= bound {
-		t.Errorf("%d kB were resident, allowed %d", most, bound)
-	}
 	daemon.stops(t)
+	return most
 }
 
 // status is a line of what the kernel says of a process, in kB.
