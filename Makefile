@@ -24,7 +24,7 @@ help:
 	@echo 'make race   only the tests under the race detector'
 	@echo 'make arm64  build ./tautwire-arm64 for a small board, and run the tests of strings and engine on it, emulated'
 	@echo 'make bench  benchmarks'
-	@echo 'make speed  the bounds of speed, against a control in C: prints a table, and fails where one does not hold'
+	@echo 'make speed  install what is missing, then the bounds of speed against a control in C: prints a table, and fails where one does not hold'
 	@echo 'make fuzz   every fuzz target for FUZZTIME=$(FUZZTIME)'
 
 build:

@@ -11,6 +11,7 @@ import (
 	"io"
 	"os"
 	"slices"
+	"strings"
 	"text/tabwriter"
 
 	"tautwire/voice/lanes"
@@ -18,6 +19,7 @@ import (
 
 func main() {
 	rounds := flag.Int("rounds", 11, "how many times each figure is measured")
+	only := flag.String("only", "", "measure only the rows whose names have this `text`")
 	flag.Parse()
 	if *rounds < 1 {
 		fmt.Fprintln(os.Stderr, "speed: -rounds must be 1 or more")
@@ -25,7 +27,7 @@ func main() {
 	}
 	dir, err := os.MkdirTemp("", "speed")
 	if err == nil {
-		err = run(dir, *rounds)
+		err = run(dir, *rounds, *only)
 		os.RemoveAll(dir)
 	}
 	if err != nil {
@@ -34,9 +36,9 @@ func main() {
 	}
 }
 
-// run measures all rows. A row that cannot be measured does not hold, and the others are measured
+// run measures the rows whose names have a text. A row that cannot be measured does not hold, and the others are measured
 // all the same.
-func run(dir string, rounds int) error {
+func run(dir string, rounds int, only string) error {
 	b := bench{dir: dir}
 	if err := b.build(); err != nil {
 		return err
@@ -45,8 +47,14 @@ func run(dir string, rounds int) error {
 	fmt.Printf("kernel: %s; control: gcc %s\n\n", kernel, b.tuning)
 	var results []result
 	for _, r := range rows {
+		if !strings.Contains(r.name, only) {
+			continue
+		}
 		fmt.Fprintln(os.Stderr, r.name)
 		results = append(results, r.measure(&b, rounds, kernel))
+	}
+	if len(results) == 0 {
+		return fmt.Errorf("no row's name has %q", only)
 	}
 	return report(os.Stdout, results)
 }
