@@ -278,8 +278,8 @@ func (s *bodyState) ring(in frame) frame {
 	rings := s.rings[:len(s.c.modes)]
 	for k := range s.c.modes {
 		m, r := &s.c.modes[k], &rings[k]
-		l := m.gain*dl + m.a1*r.last.left - m.a2*r.before.left
-		right := m.gain*dr + m.a1*r.last.right - m.a2*r.before.right
+		l := float64(m.gain*dl) + float64(m.a1*r.last.left) - float64(m.a2*r.before.left)
+		right := float64(m.gain*dr) + float64(m.a1*r.last.right) - float64(m.a2*r.before.right)
 		r.before, r.last = r.last, frame{l, right}
 		out.left += l
 		out.right += right

@@ -183,9 +183,9 @@ func (c *channel) damping(key uint8) float64 {
 
 // cents is the pitch of a key from the patch's own, without vibrato.
 func (c *channel) cents(key uint8, own float64) float64 {
-	cents := 100 * (c.bend + c.shift)
+	cents := float64(100 * (c.bend + c.shift))
 	if c.tuning[key] >= 0 {
-		cents += 100 * (float64(c.tuning[key]) - own)
+		cents += float64(100 * (float64(c.tuning[key]) - own))
 	}
 	return cents
 }

@@ -146,7 +146,7 @@ func (e *Engine) noteOn(c *channel, number, key uint8, ev Event) {
 	}
 	s := &e.strings.slots[index]
 	s.born, s.soft = e.frame, c.soft
-	velocity := min(float64(ev.Value), fullValue) * (1 - softVelocity*c.soft)
+	velocity := min(float64(ev.Value), fullValue) * (1 - float64(softVelocity*c.soft))
 	s.voice.Strike(design, velocity, seed(e.struck))
 	s.tell(&e.channels, e.wave)
 	if fresh {

@@ -312,7 +312,7 @@ func (e *Engine) stepStrings() {
 		s.from = s.to
 		s.to = s.aim(&e.channels, e.pan)
 		s.voice.Mix(s.from, s.to)
-		s.energy = energy * float64(s.to.Left*s.to.Left+s.to.Right*s.to.Right)
+		s.energy = energy * float64(float32(s.to.Left*s.to.Left)+float32(s.to.Right*s.to.Right))
 	}
 	e.strings.live = kept
 }

@@ -123,7 +123,7 @@ func (s *sympathetic) step(key uint8, lifted float64, moving bool, patch *Compil
 	}
 	// A string that fades is driven on as it was: to stop that would click.
 	if !s.fading {
-		s.to += sympathySoftening * (own.coupling*float32(lifted) - s.to)
+		s.to += float32(sympathySoftening * (float32(own.coupling*float32(lifted)) - s.to))
 		if damp := (1 - lifted) * (1 - lifted); damp != s.damp {
 			s.damp = damp
 			s.voice.Damp(damp)

@@ -23,7 +23,7 @@ func (d *damping) step() bool {
 }
 
 func toward(x, aim, part, near float64) float64 {
-	if x += (aim - x) * part; math.Abs(x-aim) < near {
+	if x += float64((aim - x) * part); math.Abs(x-aim) < near {
 		return aim
 	}
 	return x

@@ -154,7 +154,7 @@ func (c *curve) at(place float64) float64 {
 		return float64(c[curvePoints])
 	}
 	a, b := float64(c[k]), float64(c[k+1])
-	return a + float64((place-float64(i))*(b-a))
+	return a + float64((float64(place)-float64(i))*(b-a))
 }
 
 // curves are the forces that have one form for all strings.
@@ -240,7 +240,7 @@ func (s *stroke) start(sh *shape, ip *interpolator, f0, mean, rate, velocity flo
 		}
 		s.speed = curvePoints / (length * rate)
 	}
-	s.spent = length*rate + reach
+	s.spent = float64(length*rate) + reach
 	s.openLow(f0, hard)
 	const below = 0.2 // of the fundamental
 	pole := math.Exp(-2 * math.Pi * below * f0 / rate)
@@ -271,7 +271,7 @@ func (s *stroke) openLow(f0, hard float64) {
 	xa, xb := xOf(fa), xOf(fb)
 	ya, yb := fa*fa/(corner*corner), fb*fb/(corner*corner)
 	p2 := max(0, (yb/xb-ya/xa)/(xb-xa))
-	p1 := ya/xa - p2*xa
+	p1 := ya/xa - float64(p2*xa)
 	if p1 < 0 {
 		p1, p2 = ya/xa, 0
 	}
@@ -439,7 +439,7 @@ func swell(x float64) float64 {
 	if x >= 1 {
 		return 1
 	}
-	return 0.5 - 0.5*math.Cos(math.Pi*x)
+	return 0.5 - float64(0.5*math.Cos(math.Pi*x))
 }
 
 // tone is a fading tone's value, a time (s) after its start.
@@ -447,7 +447,7 @@ func (s *shape) tone(sec float64) float64 {
 	if sec < 0 || sec >= s.length {
 		return 0
 	}
-	p := sec * s.pitch * curvePoints
+	p := float64(sec * s.pitch * curvePoints)
 	i := int(p)
 	k := uint(i) % curvePoints
 	a, b := float64(s.cycle[k]), float64(s.cycle[k+1])

@@ -54,7 +54,7 @@ const (
 // come to rest, for a change between them is a change of its lag.
 func (l *loop) stride() *smoothing {
 	g, m := &l.glide, l.pool.maker
-	ahead := (max(g.aim/g.pitch, g.pitch/g.aim)-1)*g.target.delay + math.Abs(g.target.delay-g.s[2])
+	ahead := float64((max(g.aim/g.pitch, g.pitch/g.aim)-1)*g.target.delay) + math.Abs(g.target.delay-g.s[2])
 	touched := l.damped.touched() || g.touch != touch{g.palmAim, g.darkAim}
 	g.swift = g.swift || touched || g.short || g.target.direct > 0 || ahead > far*m.rate || math.Abs(g.speed) > slow
 	if g.swift || l.damped.rate != l.damped.aim {
@@ -70,7 +70,7 @@ func (l *loop) coast() bool {
 	if g.swift || g.short || g.touch != (touch{g.palmAim, g.darkAim}) || l.damped.rate != l.damped.aim || l.damped.touched() {
 		return false
 	}
-	x := l.place + l.asked*(cellsInOctave/1200.0)
+	x := l.place + float64(l.asked*(cellsInOctave/1200.0))
 	if x < l.low || x > l.high {
 		return false
 	}
@@ -136,7 +136,7 @@ func (l *loop) glideStep() bool {
 	if g.short {
 		in := g.pitch
 		for i := range g.direct {
-			g.direct[i] += (in - g.direct[i]) * g.smooth.step
+			g.direct[i] += float64((in - g.direct[i]) * g.smooth.step)
 			in = g.direct[i]
 		}
 		if g.arrived() && math.Abs(g.direct[2]-g.pitch) < settled*g.pitch/100 {
@@ -222,11 +222,11 @@ func (l *loop) pitchOf(delay float64) float64 {
 
 // approach moves coefficients a part of the way to others.
 func (c *coefficients) approach(to *coefficients, part float64, sections int) {
-	c.gain += (to.gain - c.gain) * part
+	c.gain += float64((to.gain - c.gain) * part)
 	c.loss = c.loss.mix(to.loss, part)
 	for i := range sections {
-		c.sections[i][0] += (to.sections[i][0] - c.sections[i][0]) * part
-		c.sections[i][1] += (to.sections[i][1] - c.sections[i][1]) * part
+		c.sections[i][0] += float64((to.sections[i][0] - c.sections[i][0]) * part)
+		c.sections[i][1] += float64((to.sections[i][1] - c.sections[i][1]) * part)
 	}
 }
 
@@ -240,7 +240,7 @@ func (l *loop) safeGain() float64 {
 		return 0
 	}
 	d := math.Abs(c.loss.c1-l.bank.C1[l.lane]) + math.Abs(c.loss.c2-l.bank.C2[l.lane])
-	return min(c.gain, ceiling*max(0, low-d*d/(2*low)))
+	return min(c.gain, ceiling*max(0, low-float64(d*d)/(2*low)))
 }
 
 // directNow writes the taps of a direct read at the smoothed pitch, with all gains in them, mixed with
@@ -256,7 +256,7 @@ func (l *loop) directNow(out *[taps]float64) {
 		var h [taps]float64
 		l.ip().at(min(1, c.delay-shortest), &h)
 		for i := range out {
-			out[i] = c.direct*out[i] + (1-c.direct)*c.gain*h[i]
+			out[i] = float64(c.direct*out[i]) + float64((1-c.direct)*c.gain*h[i])
 		}
 	}
 	c.delay = g.stage[2].delay

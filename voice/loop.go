@@ -98,7 +98,7 @@ func (l *loop) house() {
 	g := &l.glide
 	least := g.s[2]
 	if l.motion == gliding {
-		least = min(least, g.path[0]) - g.fast*g.smooth.frames/8
+		least = min(least, g.path[0]) - float64(g.fast*g.smooth.frames/8)
 	}
 	solo := g.short || l.damped.touched() || int(least) < shortestLane
 	if l.bank != nil && l.bank.solo == solo && int(l.bank.Sections) == l.sections {

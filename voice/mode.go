@@ -158,7 +158,7 @@ func (l loss) response(z complex128) complex128 {
 
 // mix goes a part of the way to another filter; stable where both are.
 func (l loss) mix(to loss, part float64) loss {
-	toward := func(a, b float64) float64 { return a + part*(b-a) }
+	toward := func(a, b float64) float64 { return a + float64(part*(b-a)) }
 	return loss{
 		twoPole: twoPole{toward(l.c1, to.c1), toward(l.c2, to.c2)},
 		shelf:   shelf{toward(l.shelf.drop, to.shelf.drop), toward(l.shelf.corner, to.shelf.corner)},
@@ -296,10 +296,10 @@ func (t twoPole) stable() bool {
 // up to it keeps a loop below one. Its square is a parabola in 1 - cos w.
 func (t twoPole) lowest() float64 {
 	a0 := (1 + t.c1 + t.c2) * (1 + t.c1 + t.c2)
-	a1, a2 := -2*t.c1*(1+t.c2)-8*t.c2, 4*t.c2
+	a1, a2 := float64(-2*t.c1*(1+t.c2))-8*t.c2, 4*t.c2
 	least := min(a0, a0+2*a1+4*a2)
 	if x := -a1 / (2 * a2); a2 > 0 && x > 0 && x < 2 {
-		least = min(least, a0+a1*x/2)
+		least = min(least, a0+float64(a1*x/2))
 	}
 	return math.Sqrt(max(0, least))
 }

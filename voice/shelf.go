@@ -16,8 +16,8 @@ func (s shelf) filter() (k, zero, pole float64) {
 	if s.drop == 0 {
 		return 1, 0, 0
 	}
-	a, t := 1-s.drop, s.corner
-	return (1 + a*t) / (1 + t), (1 - a*t) / (1 + a*t), (1 - t) / (1 + t)
+	t, at := s.corner, float64((1-s.drop)*s.corner)
+	return (1 + at) / (1 + t), (1 - at) / (1 + at), (1 - t) / (1 + t)
 }
 
 // response is the shelf's at z.

@@ -29,9 +29,9 @@ func newSmoothing(rate float64, steps int) *smoothing {
 // beside that lag falls as the poles' free motion does.
 func (m *smoothing) follow(s *[3]float64, from, slope float64) (speed float64) {
 	lag := slope / m.rate
-	d0, d1, d2 := s[0]-(from-lag), s[1]-(from-2*lag), s[2]-(from-3*lag)
+	d0, d1, d2 := s[0]-(from-lag), s[1]-(from-2*lag), s[2]-(from-float64(3*lag))
 	to := from + float64(slope*m.frames)
-	s[2] = to - 3*lag + float64(m.fall*(d2+float64(m.turn*(d1+float64(m.turn*d0/2)))))
+	s[2] = to - float64(3*lag) + float64(m.fall*(d2+float64(m.turn*(d1+float64(m.turn*d0/2)))))
 	s[1] = to - 2*lag + float64(m.fall*(d1+float64(m.turn*d0)))
 	s[0] = to - lag + float64(m.fall*d0)
 	return m.rate * (s[1] - s[2])
@@ -46,7 +46,7 @@ func newPath(from, to, speed, speedAfter, n float64) path {
 	return path{
 		from,
 		speed,
-		(3*rise - 2*speed - speedAfter) / n,
+		(float64(3*rise) - 2*speed - speedAfter) / n,
 		(speed + speedAfter - 2*rise) / (n * n),
 	}
 }

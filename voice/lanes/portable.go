@@ -201,7 +201,7 @@ func (b *Bank) readGliding(l int, s []float32, h *[Taps]float32) float32 {
 		x += float32(b.Slope[t][l] * s[Taps-1-firstSlope-t])
 	}
 	x *= b.Offset[l]
-	return readOn(x+bias, s, h)
+	return readOn(float32(x)+bias, s, h)
 }
 
 // bend takes a lane's delay a frame on.
