@@ -32,9 +32,13 @@ func rms(x []float32) float64 {
 }
 
 func TestResampledSineIsTheSineAtTheOtherRate(t *testing.T) {
+	parts := []float64{0.001, 0.01, 0.1, 0.2, 0.3, 0.4, 0.44, 0.45}
+	if testing.Short() {
+		parts = []float64{0.01, 0.3, 0.45}
+	}
 	for _, r := range ratePairs {
 		worst, worstLevel := math.Inf(-1), 0.0
-		for _, part := range []float64{0.001, 0.01, 0.1, 0.2, 0.3, 0.4, 0.44, 0.45} {
+		for _, part := range parts {
 			f := part * float64(min(r.from, r.to))
 			got := resample(sine(r.from/4, f, r.from), r.from, r.to)
 			want := sine(len(got), f, r.to)

@@ -98,7 +98,7 @@ func TestHeldBendsAreInTune(t *testing.T) {
 	const bound = 0.01 // cents
 	for _, rate := range rates {
 		s := newStage(rate)
-		for _, key := range []int{21, 33, 48, 60, 75, 90, 108} {
+		for _, key := range few([]int{60, 21, 33, 48, 75, 90, 108}) {
 			for _, cents := range []float64{-4800, -2400, -1234.5, -200, -50, -3, 7, 63, 100, 777, 2400, 4800} {
 				s.voice.Reset()
 				s.voice.Strike(s.maker.Design(plain(hz(key), 5, 0.6)), 127, 7)
@@ -189,7 +189,7 @@ func TestLongVibratoKeepsTheDecay(t *testing.T) {
 func TestOddBends(t *testing.T) {
 	for _, rate := range []float64{8000, 44100, 192000} {
 		s := newStage(rate)
-		for key := 0; key < 128; key += 9 {
+		for key := 0; key < 128; key += 9 * stride {
 			spec := plain(hz(key), 0.5, 0.9)
 			spec.Inharmonicity = 5e-4
 			s.voice.Reset()

@@ -161,10 +161,7 @@ func TestRatesSoundAlike(t *testing.T) {
 	const bound = 1.5 // dB
 	low, high := newStage(44100), newStage(96000)
 	for name, x := range kinds() {
-		for i, key := range []int{33, 57, 81, 100} {
-			if i%stride != 0 {
-				continue
-			}
+		for _, key := range few([]int{57, 33, 81, 100}) {
 			for _, velocity := range []float64{50, 127} {
 				x.Position = 0.11
 				f0 := hz(key)

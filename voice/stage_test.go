@@ -26,6 +26,9 @@ func TestMain(m *testing.M) {
 	os.Exit(m.Run())
 }
 
+// few are the first of every stride cases.
+func few[T any](cases []T) []T { return cases[:(len(cases)+stride-1)/stride] }
+
 // stage is a maker and a voice for a rate.
 type stage struct {
 	rate  float64
