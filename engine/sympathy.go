@@ -79,7 +79,6 @@ func (s *sympathy) needed(patch *Compiled) bool { return patch.resonance > 0 || 
 
 // step wakes, damps and retires strings, on a multiple of voice.Grid.
 func (s *sympathy) step(channels *[16]channel, patch *Compiled, pan *panTable) {
-	defer s.pool.Step()
 	if !s.needed(patch) {
 		return
 	}
@@ -107,6 +106,7 @@ func (s *sympathy) step(channels *[16]channel, patch *Compiled, pan *panTable) {
 			s.live++
 		}
 	}
+	s.pool.Step()
 }
 
 func (s *sympathetic) step(key uint8, lifted float64, moving bool, patch *Compiled, pan *panTable) {

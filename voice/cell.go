@@ -31,7 +31,7 @@ func (c *cell) approximate(m *mode, x float64, t touch, out *coefficients) (f0 f
 				return 0, false
 			}
 		}
-		if c.nodes[i].direct > 0 {
+		if n := &c.nodes[i]; n.direct > 0 || m.clamp(c.pitches[i]) != c.pitches[i] {
 			return 0, false
 		}
 	}

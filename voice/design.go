@@ -16,7 +16,7 @@ type Maker struct {
 	rows   *lanes.Rows
 	desks  sync.Pool // of *desk
 
-	smooth, smoothLong, smoothLongest *smoothing
+	smooth, smoothLong *smoothing
 }
 
 // desk is what is written on while a string is compiled, kept for the next.
@@ -31,7 +31,7 @@ func NewMaker(rate float64) *Maker {
 	return &Maker{
 		rate: rate, ip: ip, curves: newCurves(), rows: newRows(ip),
 		desks:  sync.Pool{New: func() any { return new(desk) }},
-		smooth: newSmoothing(rate, 1), smoothLong: newSmoothing(rate, longSteps), smoothLongest: newSmoothing(rate, longestSteps),
+		smooth: newSmoothing(rate, 1), smoothLong: newSmoothing(rate, longSteps),
 	}
 }
 

@@ -40,9 +40,8 @@ type glide struct {
 	fresh  bool       // the lane is not on it yet
 }
 
-// longSteps is over how many control steps a string glides at once that does so slowly, and
-// longestSteps very slowly.
-const longSteps, longestSteps = 4, 8
+// longSteps is over how many control steps a string glides at once that does so slowly.
+const longSteps = 4
 
 const (
 	slow = 0.03   // samples a frame: the fastest of long ways
@@ -70,37 +69,21 @@ func (l *loop) coast() bool {
 	if g.swift || g.short || g.touch != (touch{g.palmAim, g.darkAim}) || l.damped.rate != l.damped.aim || l.damped.touched() {
 		return false
 	}
-	x := l.place + float64(l.asked*(cellsInOctave/1200.0))
-	if x < l.low || x > l.high {
-		return false
-	}
 	var c coefficients
-	f0, ok := g.cell.approximate(l.mode, x, g.touch, &c)
+	f0, ok := g.cell.approximate(l.mode, l.place+float64(l.asked*(cellsInOctave/1200.0)), g.touch, &c)
 	ahead := math.Abs(c.delay-g.target.delay) + math.Abs(g.target.delay-g.s[2])
-	if !ok || ahead > far*m.rate || math.Abs(g.speed) > slow {
+	if !ok || l.hold(f0) != f0 || ahead > far*m.rate || math.Abs(g.speed) > slow {
 		return false
 	}
-	g.target, g.pitch, g.aim, g.rough = c, f0, f0, true
-	const verySlow = 1.0 / 6
-	if g.smooth == m.smoothLong || ahead > verySlow*far*m.rate || math.Abs(g.speed) > verySlow*slow {
-		g.smooth = m.smoothLong
-	} else {
-		g.smooth = m.smoothLongest
-	}
+	g.target, g.pitch, g.aim, g.rough, g.smooth = c, f0, f0, true, m.smoothLong
 	l.followTarget()
 	return true
-}
-
-// bounds sets how far, in parts of an octave, a pitch may be bent by approximation.
-func (l *loop) bounds() {
-	place := func(f0 float64) float64 { return cellsInOctave * math.Log2(f0/l.mode.lowest) }
-	l.place, l.low, l.high = place(l.pitch), place(l.hold(0))+2, place(l.hold(math.Inf(1)))-3
 }
 
 // hold clamps a pitch to what the line and the rate can sound.
 func (l *loop) hold(f0 float64) float64 {
 	longest := float64(l.size-4*Grid) / lineTurns
-	return min(max(f0, l.mode.rate/longest, l.mode.lowest), topPitch*l.mode.rate)
+	return l.mode.clamp(max(f0, l.mode.rate/longest))
 }
 
 // settle puts everything where the pitch asks for it, at once.

@@ -56,7 +56,6 @@ type loop struct {
 	pitch        float64 // Hz: the design's
 	asked, cents float64 // from there: asked for, and already heard of
 	place        float64 // of the pitch, in parts of an octave above the mode's lowest
-	low, high    float64 // how far from there a cell serves
 
 	start, size int // the ring's first sample in the pool's line, and the most that it can hold
 	bank        *bank

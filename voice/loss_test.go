@@ -17,7 +17,7 @@ var sharedRows = sync.OnceValue(func() *lanes.Rows { return newRows(newInterpola
 // tuned puts a string of a mode on a voice of its own, with room to be bent by some octaves.
 func tuned(m *mode, ip *interpolator, f0, octaves float64) *loop {
 	maker := &Maker{rate: m.rate, ip: ip, rows: sharedRows()}
-	maker.smooth, maker.smoothLong, maker.smoothLongest = newSmoothing(m.rate, 1), newSmoothing(m.rate, longSteps), newSmoothing(m.rate, longestSteps)
+	maker.smooth, maker.smoothLong = newSmoothing(m.rate, 1), newSmoothing(m.rate, longSteps)
 	v := newVoice(maker, linesFor(f0*math.Exp2(-octaves)/1.2, m.rate)+1024)
 	v.Fit(&Design{maker: maker, pitch: f0, modes: [2]*mode{m}, strings: []strand{{mix: 1}}})
 	return &v.loops[0]

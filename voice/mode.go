@@ -205,11 +205,14 @@ type coefficients struct {
 	direct   float64                 // 0 to 1: how far the read is a direct one, see directTaps
 }
 
+// clamp keeps a pitch (Hz) to those that are compiled.
+func (m *mode) clamp(f0 float64) float64 { return min(max(f0, m.lowest), topPitch*m.rate) }
+
 // at solves the loop for a fundamental f0 (Hz), under a touch: the delay from the phase and
 // the gain from the magnitude, both at the damped frequency
 // z = exp((-3 ln 10/T60 + i w0)/rate), where the loop must be exactly one.
 func (m *mode) at(f0 float64, t touch, c *coefficients) {
-	f0 = min(max(f0, m.lowest), topPitch*m.rate)
+	f0 = m.clamp(f0)
 	if t == (touch{}) {
 		for i := range m.homes {
 			if h := &m.homes[i]; h.pitch == f0 {
@@ -250,7 +253,7 @@ func (m *mode) at(f0 float64, t touch, c *coefficients) {
 
 // settleAt solves the loop in advance for a fundamental f0 (Hz).
 func (m *mode) settleAt(f0 float64) {
-	h := home{pitch: min(max(f0, m.lowest), topPitch*m.rate)}
+	h := home{pitch: m.clamp(f0)}
 	m.at(f0, touch{}, &h.coefficients)
 	m.homes = append(m.homes, h)
 }

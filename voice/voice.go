@@ -78,7 +78,7 @@ func (v *Voice) Fit(d *Design) {
 			start: v.start + i*slot + lanes.History + lanes.Front, size: slot - ringRoom,
 		}
 		l := &v.loops[i]
-		l.bounds()
+		l.place = cellsInOctave * math.Log2(l.pitch/l.mode.lowest)
 		l.tune(l.pitch)
 		l.bank.leak[l.lane] = leak
 	}

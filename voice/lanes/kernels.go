@@ -72,12 +72,8 @@ func onLines(do kernel) run {
 		last := int64(len(w.Line)) - int64(frames) - Spill
 		for i, at := range b.At {
 			at += int64(ahead)
-			back := b.Back[i]
-			first := at - back
-			if first < b.Floor[i] {
-				first += b.Ring[i]
-			}
-			if back < Taps-1+Shortest || first < History || first > last-Taps || at < 0 || at > last {
+			first := b.oldest(i, int64(ahead))
+			if b.Back[i] < Taps-1+Shortest || first < History || first > last-Taps || at < 0 || at > last {
 				panic("lanes: a lane reaches outside its line")
 			}
 			w.source[i] = base + 4*uintptr(first+Taps-1)

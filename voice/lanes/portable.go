@@ -29,14 +29,18 @@ func mixLanes(m *Mix, from, frames int, b, c *Bank) {
 }
 
 func (b *Bank) mixInto(m *Mix, from, frames int) {
-	for f := from; f < from+frames; f++ {
-		left, right, out := &m.Left[f], &m.Right[f], &b.Out[f]
-		for l, y := range out {
-			b.Left[l] += b.DLeft[l]
-			b.Right[l] += b.DRight[l]
-			left[l] += float32(y * b.Left[l])
-			right[l] += float32(y * b.Right[l])
+	outs := b.Out[from : from+frames]
+	lefts, rights := m.Left[from:from+frames], m.Right[from:from+frames]
+	for l := range Width {
+		left, right, dl, dr := b.Left[l], b.Right[l], b.DLeft[l], b.DRight[l]
+		for f := range outs {
+			y := outs[f][l]
+			left += dl
+			right += dr
+			lefts[f][l] += float32(y * left)
+			rights[f][l] += float32(y * right)
 		}
+		b.Left[l], b.Right[l] = left, right
 	}
 }
 
@@ -100,7 +104,7 @@ func each(do func(*Bank, pass)) run {
 	}
 }
 
-// plain renders a still lane without stiffness.
+// plain renders a still lane without stiffness: as read does, with the taps in registers.
 func (b *Bank) plain(p pass) {
 	l := p.lane & (Width - 1)
 	h := b.taps(l)
