@@ -213,6 +213,8 @@ func TestFitsAreStable(t *testing.T) {
 // over a control step counts: it is what makes a partial grow.
 func TestLoopStaysBelowOneOnTheWay(t *testing.T) {
 	const points, places = 100, 8
+	const overshoot = 1 + 3e-4 // at any one frame of a glide
+	worst := 0.0
 	r := rand.New(rand.NewPCG(2, 2))
 	ip := newInterpolator()
 	for range 150 / stride {
@@ -233,7 +235,12 @@ func TestLoopStaysBelowOneOnTheWay(t *testing.T) {
 					w := math.Pi * float64(i*i) / (points * points)
 					gain, _ := l.response(w)
 					nepers[i] += math.Log(cmplx.Abs(gain))
-					if l.motion != gliding && cmplx.Abs(gain) >= 1 {
+					bound := 1.0
+					if l.motion == gliding {
+						bound = overshoot
+						worst = max(worst, cmplx.Abs(gain)-1)
+					}
+					if cmplx.Abs(gain) >= bound {
 						t.Fatalf("rate %g, from %.2f to %.2f Hz, step %d: gain %.9f at w = %.4f", rate, f0, l.glide.aim, step, cmplx.Abs(gain), w)
 					}
 				}
@@ -246,4 +253,5 @@ func TestLoopStaysBelowOneOnTheWay(t *testing.T) {
 			}
 		}
 	}
+	t.Logf("at most 1 %+.1e for a frame of a glide", worst)
 }
