@@ -64,7 +64,7 @@ func PatchKeys() []Key {
 		{Name: "zone.tension", Form: Pair, Low: 0, High: 100, Unit: "cents", Default: "0", Hears: "how sharp the hardest stroke begins before it settles: 0 is steady, 100 begins a semitone high and twangs"},
 
 		{Name: "zone.excitation", Form: Table, Hears: "how the strings are set going"},
-		{Name: "zone.excitation.kind", Form: Choice, Words: []string{"noise", "tone", "pluck", "strike", "sample"}, Default: `"pluck"`, Hears: "noise is a burst, new at each stroke; tone colours the attack with a pitch; pluck lets go a pulled string; strike is a hammer; sample is a recording of yours"},
+		{Name: "zone.excitation.kind", Form: Choice, Words: []string{"noise", "tone", "pluck", "strike", "sample"}, Default: `"pluck"`, Hears: "noise is a burst, one of a few at each stroke; tone colours the attack with a pitch; pluck lets go a pulled string; strike is a hammer; sample is a recording of yours"},
 		{Name: "zone.excitation.position", Form: Pair, Low: 0, High: 0.5, Default: "0.13", Hears: "where on the string, from the bridge: 0 leaves every partial in, 0.05 is thin and nasal, 0.5 the hollow middle"},
 		{Name: "zone.excitation.hardness", Form: Pair, Low: 0, High: 1, Default: "0.5", Hears: "0 is soft felt or flesh, 1 a hard pick or bare wood"},
 		{Name: "zone.excitation.length", Form: Pair, Low: 0, High: 500, Unit: "ms", Default: "0", Hears: "of a noise or a tone: 0 is one period of the string, a clean attack; 500 breathes and scrapes"},
